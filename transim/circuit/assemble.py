@@ -1,0 +1,216 @@
+"""The netlist that all decks of one driver share: parts, instances, supplies, ports.
+
+PySpice writes the netlist's lines; nothing else of it is used, and no other module imports it.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+from PySpice.Spice.Netlist import Circuit as SpiceCircuit
+
+from transim.design.model import Design, Driver, Junction
+from transim.errors import TopologyError
+from transim.parts.part import Part, Slot
+from transim.quantities import deck_number
+
+__all__ = ["JunctionProbe", "Netlist", "RfPort", "assemble"]
+
+_VECTOR = re.compile(r"(?P<kind>[vi])\((?P<inside>[^()]*)\)|@(?P<device>[^\[]+)\[(?P<parameter>[^\]]+)\]")
+
+
+@dataclass(frozen=True)
+class RfPort:
+    """An RF port: its node, and the source behind its impedance [ohm]."""
+
+    node: str
+    source: str
+    impedance: float
+
+
+@dataclass(frozen=True)
+class JunctionProbe:
+    """A quantity of one junction in the flattened circuit, as a sum of vectors that ngspice saves.
+
+    Attributes
+    ----------
+    junction : str
+        Instance in the path, for example ``xj1``.
+    quantity : str
+        ``charge`` [C], ``current`` [A] or ``reverse`` [V].
+    terms : tuple of (float, str)
+        Factor and vector.
+    """
+
+    junction: str
+    quantity: str
+    terms: tuple[tuple[float, str], ...]
+
+
+@dataclass(frozen=True)
+class Netlist:
+    """Everything of a circuit that does not depend on the analysis.
+
+    Attributes
+    ----------
+    text : str
+        SPICE lines: subcircuits and instances, without control and RF sources.
+    ports : tuple of RfPort
+        In the order of the path.
+    through : tuple of int
+        Places of the two ports whose transmission is judged (from, to).
+    probes : tuple of JunctionProbe
+        What to look at inside the junctions.
+    supplies : tuple of str
+        Names of the supply sources.
+    """
+
+    text: str
+    ports: tuple[RfPort, ...]
+    through: tuple[int, int]
+    probes: tuple[JunctionProbe, ...]
+    supplies: tuple[str, ...]
+
+    @property
+    def saved(self) -> tuple[str, ...]:
+        """Device vectors that the probes need on a ``.save`` card."""
+        vectors = {vector: None for probe in self.probes for _, vector in probe.terms if vector.startswith("@")}
+        return tuple(vectors)
+
+
+def assemble(design: Design, driver: Driver) -> Netlist:
+    """Put path, junctions and one driver together.
+
+    Parameters
+    ----------
+    design : Design
+        Read and checked.
+    driver : Driver
+        One of its drivers.
+
+    Returns
+    -------
+    Netlist
+
+    Raises
+    ------
+    TopologyError
+        If a path has no bias entry, or more than the one that a driver feeds.
+    """
+    path = design.switch.path
+    if len(path.bias) != 1:
+        raise TopologyError(
+            f"path {path.name} has {len(path.bias)} bias entries, and a driver feeds one", key="switch.path"
+        )
+    circuit = SpiceCircuit("transim")
+    circuit.raw_spice = _subcircuits(design, driver)
+    supplies = []
+    for supply in driver.part.supplies:
+        circuit.V(f"supply_{supply.name}", supply.name, circuit.gnd, deck_number(driver.values[supply.name]))
+        supplies.append(f"vsupply_{supply.name}".lower())
+    arguments = {p.name: driver.values[p.name] for p in driver.part.parameters}
+    command = {"control_low": design.control.low, "control_high": design.control.high}
+    arguments |= {name: command[name] for name in driver.part.reserved}
+    wires = [_terminal(name, {"out": "drive"}) for name in driver.part.terminals]
+    circuit.X("driver", driver.part.name, *wires, **_texts(arguments))
+    # an ammeter: its current is what the driver delivers
+    circuit.V("drive", "drive", path.bias[0], "0")
+    circuit.X("path", path.name, *path.terminals, **_texts(design.switch.values))
+    ports = []
+    for port in path.ports:
+        source = f"e{port}"
+        circuit.R(f"port_{port}", source, port, deck_number(design.carrier.impedance))
+        ports.append(RfPort(port.lower(), f"vport_{port}".lower(), design.carrier.impedance))
+    lines = str(circuit).splitlines()
+    body = "\n".join(line for line in lines if line and not line.startswith(".title"))
+    through = (path.ports.index(path.through[0]), path.ports.index(path.through[1]))
+    return Netlist(body + "\n", tuple(ports), through, tuple(_probes(design)), tuple(supplies))
+
+
+def _terminal(name: str, renamed: Mapping[str, str]) -> str:
+    return renamed.get(name, name)
+
+
+def _texts(values: Mapping[str, float]) -> dict[str, str]:
+    return {name: deck_number(value) for name, value in values.items()}
+
+
+def _subcircuits(design: Design, driver: Driver) -> str:
+    """Return the text of every part once, and a subcircuit for each slot that holds the chosen junction."""
+    parts: dict[str, str] = {}
+    for part, card in ((design.switch.path, None), (driver.part, driver.model)):
+        parts[part.name] = _body(part, card)
+    for slot in design.switch.path.slots:
+        junction = design.switch.junctions[slot.name]
+        name = _junction_name(junction)
+        parts.setdefault(name, _body(junction.part, junction.model, name))
+        parts[f"slot {slot.name}"] = _slot(slot, junction)
+    return "".join(parts.values())
+
+
+def _junction_name(junction: Junction) -> str:
+    """Return the subcircuit's name; one with a model card of its own gets a name of its own."""
+    return junction.part.name if junction.model is None else f"{junction.part.name}_{junction.name}"
+
+
+def _body(part: Part, card: str | None, name: str | None = None) -> str:
+    text = part.body.rstrip() + "\n"
+    if name is not None and name != part.name:
+        text = re.sub(rf"(?im)^(\.subckt\s+){re.escape(part.name)}\b", rf"\g<1>{name}", text, count=1)
+    if card is None or part.model is None:
+        return text
+    own = re.compile(rf"(?im)^\.model\s+{re.escape(part.model.name)}\b.*(?:\n\+.*)*\n")
+    return own.sub(lambda _match: card.rstrip() + "\n", text, count=1)
+
+
+def _slot(slot: Slot, junction: Junction) -> str:
+    used = {p.name for p in junction.part.parameters}
+    if junction.model is not None and junction.part.model is not None:
+        used -= set(junction.part.model.parameters)
+    values = " ".join(f"{name}={deck_number(junction.values[name])}" for name in junction.values if name in used)
+    wires = " ".join(slot.terminals)
+    call = f"X1 {' '.join(junction.part.terminals)} {_junction_name(junction)} {values}".rstrip()
+    return f"* junction {junction.name}\n.subckt {slot.name} {wires}\n{call}\n.ends\n"
+
+
+def _probes(design: Design) -> list[JunctionProbe]:
+    """Translate the probes of each junction part to the names of the flattened circuit."""
+    path = design.switch.path
+    slots = {slot.name.lower(): slot for slot in path.slots}
+    found = []
+    for line in path.body.splitlines():
+        words = line.split()
+        if not words or words[0][0].lower() != "x" or words[-1].lower() not in slots:
+            continue
+        slot = slots[words[-1].lower()]
+        part = design.switch.junctions[slot.name].part
+        instance = words[0].lower()
+        wires = {inner.lower(): _path_node(path, node) for inner, node in zip(part.terminals, words[1:-1], strict=True)}
+        for probe in part.probes:
+            terms = tuple((scale, _flattened(vector, f"xpath.{instance}.x1", wires)) for scale, vector in probe.terms)
+            # ngspice does not save the voltage of ground
+            terms = tuple(term for term in terms if term[1] != "v(0)")
+            found.append(JunctionProbe(instance, probe.quantity, terms))
+    return found
+
+
+def _path_node(path: Part, node: str) -> str:
+    lower = node.lower()
+    if lower in ("0", "gnd"):
+        return "0"
+    return lower if lower in {name.lower() for name in path.terminals} else f"xpath.{lower}"
+
+
+def _flattened(vector: str, prefix: str, wires: Mapping[str, str]) -> str:
+    match = _VECTOR.fullmatch(vector.replace(" ", "").lower())
+    if match is None:
+        raise TopologyError(f"probe vector {vector!r} is not understood")
+    if match["device"]:
+        device = match["device"]
+        return f"@{device[0]}.{prefix}.{device}[{match['parameter']}]"
+    inside = match["inside"]
+    if match["kind"] == "i":
+        return f"i({inside[0]}.{prefix}.{inside})"
+    return f"v({wires.get(inside, f'{prefix}.{inside}')})"

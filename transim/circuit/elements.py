@@ -1,0 +1,285 @@
+"""The flattened circuit: what ngspice prints for ``listing expand``, read into elements.
+
+ngspice has by then expanded every subcircuit and evaluated every ``{expression}``, so each line is one
+primitive element with plain numbers, whoever wrote the netlist.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+from transim.errors import LinearisationError, NetlistError
+from transim.circuit.expression import Expression, ExpressionError, parse_expression, spice_number
+
+__all__ = ["Behavioural", "Circuit", "Coupling", "Device", "Element", "Model", "read_listing"]
+
+_LISTED = re.compile(r"^\s*(\d+) : (.*)$")
+_ASSIGNMENT = re.compile(r"([a-z_]\w*)\s*=\s*", re.IGNORECASE)
+
+#: Why an element letter stops the envelope solver, and what the user can do.
+_REFUSED = {
+    "m": "MOSFET",
+    "j": "JFET",
+    "z": "MESFET",
+    "t": "transmission line",
+    "o": "lossy transmission line",
+    "u": "RC line",
+    "y": "lossy transmission line",
+    "p": "coupled lines",
+    "s": "voltage-controlled switch",
+    "w": "current-controlled switch",
+    "a": "code model",
+    "n": "compiled model",
+}
+
+
+@dataclass(frozen=True)
+class Model:
+    """A ``.model`` card: lower-case kind and parameters."""
+
+    name: str
+    kind: str
+    parameters: Mapping[str, float]
+
+
+@dataclass(frozen=True)
+class Element:
+    """R, L, C, V, I, E, G, F or H with constant value.
+
+    Attributes
+    ----------
+    name : str
+        Flattened name; its first letter is its kind.
+    nodes : tuple of str
+        Output nodes, plus node first; for E and G the two controlling nodes follow.
+    value : float
+        Ohm, henry, farad, or gain; 0 for V and I, whose value the envelope does not need.
+    source : str or None
+        Controlling source of F and H.
+    """
+
+    name: str
+    nodes: tuple[str, ...]
+    value: float
+    source: str | None = None
+
+
+@dataclass(frozen=True)
+class Coupling:
+    """K: two inductors and their coupling factor."""
+
+    name: str
+    inductors: tuple[str, str]
+    factor: float
+
+
+@dataclass(frozen=True)
+class Device:
+    """D or Q with its model and instance parameters (``area``, ``m``)."""
+
+    name: str
+    nodes: tuple[str, ...]
+    model: Model
+    parameters: Mapping[str, float]
+
+
+@dataclass(frozen=True)
+class Behavioural:
+    """B: current or voltage source given by an expression; ``quantity`` is ``i`` or ``v``."""
+
+    name: str
+    nodes: tuple[str, str]
+    quantity: str
+    law: Expression
+
+
+@dataclass(frozen=True)
+class Circuit:
+    """All elements of a flattened netlist.
+
+    Attributes
+    ----------
+    elements, couplings, devices, behaviourals : tuple
+        In the order of the listing.
+    refused : tuple of LinearisationError
+        Elements that have no small-signal form here, each with its reason; not raised yet, so that decks
+        of such circuits still run.
+    lines : tuple of str
+        The listing without line numbers.
+    """
+
+    elements: tuple[Element, ...]
+    couplings: tuple[Coupling, ...]
+    devices: tuple[Device, ...]
+    behaviourals: tuple[Behavioural, ...]
+    refused: tuple[LinearisationError, ...]
+    lines: tuple[str, ...]
+
+    @property
+    def nodes(self) -> tuple[str, ...]:
+        """Every node except ground, in order of appearance."""
+        seen: dict[str, None] = {}
+        for part in (*self.elements, *self.devices, *self.behaviourals):
+            for node in part.nodes:
+                seen.setdefault(node)
+        seen.pop("0", None)
+        return tuple(seen)
+
+
+def listing_lines(log: str) -> tuple[str, ...]:
+    """Cut the numbered listing out of what ngspice printed, without title and line numbers."""
+    return tuple(match[2].strip() for match in map(_LISTED.match, log.splitlines()) if match)
+
+
+def read_listing(log: str) -> Circuit:
+    """Read the output of ``listing expand``.
+
+    Parameters
+    ----------
+    log : str
+        Standard output of ngspice, the listing somewhere in it.
+
+    Returns
+    -------
+    Circuit
+
+    Raises
+    ------
+    NetlistError
+        If there is no listing or a line of it cannot be read.
+    """
+    lines = listing_lines(log)
+    if not lines:
+        raise NetlistError("ngspice printed no expanded listing of the netlist")
+    models = {model.name: model for model in map(_read_model, lines) if model is not None}
+    elements: list[Element] = []
+    couplings: list[Coupling] = []
+    devices: list[Device] = []
+    behaviourals: list[Behavioural] = []
+    refused: list[LinearisationError] = []
+    for line in lines:
+        if not line[:1].isalpha():
+            continue
+        try:
+            part = _read_element(line, models)
+        except LinearisationError as error:
+            refused.append(error)
+            continue
+        except (ValueError, IndexError, KeyError) as error:
+            refused.append(LinearisationError(line.split()[0], f"cannot read its line {line!r} ({error})"))
+            continue
+        for kind, home in ((Element, elements), (Coupling, couplings), (Device, devices), (Behavioural, behaviourals)):
+            if isinstance(part, kind):
+                home.append(part)  # type: ignore[arg-type]
+    return Circuit(tuple(elements), tuple(couplings), tuple(devices), tuple(behaviourals), tuple(refused), lines)
+
+
+def _read_model(line: str) -> Model | None:
+    if not line.lower().startswith(".model"):
+        return None
+    text = line.lower().replace("(", " ").replace(")", " ").replace(",", " ")
+    words = text.split(None, 3)
+    if len(words) < 3:
+        return None
+    return Model(words[1], words[2], _assignments(words[3] if len(words) > 3 else "", words[1]))
+
+
+def _assignments(text: str, owner: str) -> dict[str, float]:
+    pieces = _ASSIGNMENT.split(text)
+    if pieces[0].strip():
+        raise LinearisationError(owner, f"cannot read {pieces[0].strip()!r}")
+    found: dict[str, float] = {}
+    for name, value in zip(pieces[1::2], pieces[2::2], strict=True):
+        words = value.split()
+        try:
+            found[name.lower()] = spice_number(words[0]) if words else 1.0
+        except ValueError:
+            found[name.lower()] = float("nan")
+    return found
+
+
+def _split(words: list[str]) -> tuple[list[str], dict[str, float]]:
+    """Divide words into plain ones and ``name=value`` ones (blanks around ``=`` allowed)."""
+    text = " ".join(words)
+    match = re.search(r"[A-Za-z_]\w*\s*=", text)
+    if match is None:
+        return words, {}
+    return text[: match.start()].split(), _assignments(text[match.start() :], words[0])
+
+
+def _node(name: str) -> str:
+    lower = name.lower()
+    return "0" if lower == "gnd" else lower
+
+
+def _read_element(line: str, models: Mapping[str, Model]) -> Element | Coupling | Device | Behavioural:
+    words = line.split()
+    name = words[0].lower()
+    letter = name[0]
+    if letter in _REFUSED:
+        raise LinearisationError(name.upper(), f"{_REFUSED[letter]} in the circuit; use the carrier analysis")
+    if letter == "b":
+        return _read_behavioural(name, line)
+    if letter == "k":
+        return Coupling(name, (words[1].lower(), words[2].lower()), spice_number(words[3]))
+    if letter in "dq":
+        return _read_device(name, words, models)
+    if letter in "vi":
+        return Element(name, (_node(words[1]), _node(words[2])), 0.0)
+    if letter in "fh":
+        return Element(name, (_node(words[1]), _node(words[2])), spice_number(words[4]), words[3].lower())
+    if letter in "eg":
+        plain, _ = _split(words)
+        if len(plain) != 6:
+            raise LinearisationError(name.upper(), f"cannot read this form of controlled source: {line!r}")
+        return Element(name, tuple(map(_node, plain[1:5])), spice_number(plain[5]))
+    if letter in "rlc":
+        return _read_passive(name, words)
+    raise LinearisationError(name.upper(), f"element letter {letter.upper()!r} is not known to the envelope solver")
+
+
+def _read_passive(name: str, words: list[str]) -> Element:
+    plain, extra = _split(words)
+    value = extra.pop({"r": "r", "l": "l", "c": "c"}[name[0]], None)
+    if value is None:
+        value = spice_number(plain[3])
+    multiplier = extra.pop("m", 1.0)
+    extra.pop("ic", None)
+    unknown = {key for key, number in extra.items() if number != 0.0}
+    if unknown or len(plain) > 4:
+        what = ", ".join(sorted(unknown)) or plain[4]
+        raise LinearisationError(name.upper(), f"its parameter {what} is not known to the envelope solver")
+    if name[0] == "r":
+        # ngspice 39 itself replaces a resistance of exactly zero by 1 mohm
+        value = (value or 1e-3) / multiplier
+    else:
+        value = value * multiplier if name[0] == "c" else value / multiplier
+    return Element(name, (_node(words[1]), _node(words[2])), value)
+
+
+def _read_device(name: str, words: list[str], models: Mapping[str, Model]) -> Device:
+    place = next((k for k in range(3, len(words)) if words[k].lower() in models), None)
+    if place is None:
+        raise LinearisationError(name.upper(), "its model is not in the listing")
+    model = models[words[place].lower()]
+    rest, parameters = _split([name, *words[place + 1 :]])
+    numbers = [word for word in rest[1:] if word.lower() != "off"]
+    if numbers:
+        parameters = {"area": spice_number(numbers[0]), **parameters}
+    return Device(name, tuple(_node(word) for word in words[1:place]), model, parameters)
+
+
+def _read_behavioural(name: str, line: str) -> Behavioural:
+    words = line.split(None, 3)
+    match = re.match(r"([iv])\s*=\s*(.*)$", words[3], re.IGNORECASE)
+    if match is None:
+        raise LinearisationError(name.upper(), f"cannot read its line {line!r}")
+    # ngspice appends options of its own to the sources that it makes of behavioural resistors and capacitors
+    text = re.split(r"\s(?:reciproctc|reciprocm|tc1|tc2|m|temp|dtemp)\s*=", match[2], maxsplit=1)[0]
+    try:
+        law = parse_expression(text)
+    except ExpressionError as error:
+        raise LinearisationError(name.upper(), str(error)) from error
+    return Behavioural(name, (_node(words[1]), _node(words[2])), match[1].lower(), law)

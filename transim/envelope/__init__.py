@@ -1,0 +1,1 @@
+"""The RF envelope: solved from the flattened circuit around the video run, or extracted from carrier-resolved runs."""

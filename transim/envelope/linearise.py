@@ -1,0 +1,326 @@
+"""The flattened circuit as a time-varying linear network around its bias.
+
+Unknowns are node voltages and branch currents, as in modified nodal analysis (C. W. Ho, A. E. Ruehli, P. A. Brennan, IEEE Trans.
+Circuits Syst. 22(6), 1975). With x the complex envelope at the carrier w, the network is::
+
+    d/dt(C(t) x) + (G(t) + j w C(t)) x = s
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from transim.circuit.elements import Behavioural, Circuit, Coupling, Device, Element
+from transim.errors import LinearisationError, RawFileError
+from transim.envelope.diode import DiodeLaw
+from transim.envelope.junction import Array
+from transim.envelope.transistor import TransistorLaw
+
+__all__ = ["Bias", "Network", "linearise", "saved_vectors"]
+
+#: What ngspice has to save of each device, beside all node voltages and branch currents.
+_DEVICE_VECTORS = {"d": ("vd",), "q": ("vbe", "vbc")}
+
+
+def saved_vectors(circuit: Circuit) -> tuple[str, ...]:
+    """Return the device vectors that the linearisation needs in the video run, as on a ``.save`` card."""
+    return tuple(f"@{device.name}[{name}]" for device in circuit.devices for name in _DEVICE_VECTORS[device.name[0]])
+
+
+class Bias:
+    """Bias waveforms of one run, by node, source and device.
+
+    Parameters
+    ----------
+    vectors : mapping
+        Name as ngspice prints it (``v(a)``, ``i(v1)``, ``v(@d1[vd])`` ...) to an array of shape (n,).
+    time : ndarray, shape (n,)
+        Time of the samples [s].
+    """
+
+    def __init__(self, vectors: Mapping[str, Array], time: Array) -> None:
+        self._vectors = vectors
+        self.time = time
+
+    @property
+    def points(self) -> int:
+        """Number of samples."""
+        return int(self.time.size)
+
+    def voltage(self, node: str) -> Array:
+        """Return the voltage of a node to ground [V], shape (n,)."""
+        if node == "0":
+            return np.zeros(self.points)
+        return self._find(f"v({node})", node)
+
+    def current(self, source: str) -> Array:
+        """Return the current through a source from its plus to its minus node [A], shape (n,)."""
+        return self._find(f"i({source})", f"{source}#branch")
+
+    def device(self, name: str, quantity: str) -> Array:
+        """Return an internal quantity of a device, such as ``vbe`` [V], shape (n,)."""
+        vector = f"@{name}[{quantity}]"
+        return self._find(vector, f"v({vector})", f"i({vector})")
+
+    def _find(self, *names: str) -> Array:
+        for name in names:
+            if name in self._vectors:
+                return np.broadcast_to(self._vectors[name], self.time.shape)
+        raise RawFileError(f"the run did not save {names[0]}, which the envelope solver needs")
+
+    def probes(self, nodes: Iterable[str], sources: Iterable[str]) -> dict[str, Array]:
+        """Return the bias that an expression depends on, keyed as `Expression.evaluate` wants it."""
+        found = {f"v:{node}": self.voltage(node) for node in nodes}
+        found.update({f"i:{source}": self.current(source) for source in sources})
+        found["time"] = self.time
+        return found
+
+
+@dataclass(frozen=True)
+class Network:
+    """Matrices of the linear time-varying network.
+
+    Attributes
+    ----------
+    unknowns : mapping of str to int
+        ``v:node`` and ``i:source`` to the place in x.
+    constant_g, constant_c : ndarray, shape (m, m)
+        Parts of G and C that do not change with time.
+    rows, columns : ndarray of int, shape (k,)
+        Places that change with time.
+    varying_g, varying_c : ndarray, shape (n, k)
+        What is added there, for each time point.
+    time : ndarray, shape (n,)
+        Time of the points [s].
+    """
+
+    unknowns: Mapping[str, int]
+    constant_g: Array
+    constant_c: Array
+    rows: npt.NDArray[np.intp]
+    columns: npt.NDArray[np.intp]
+    varying_g: Array
+    varying_c: Array
+    time: Array
+
+    @property
+    def size(self) -> int:
+        """Number of unknowns."""
+        return self.constant_g.shape[0]
+
+    def at(self, points: npt.NDArray[np.intp]) -> Network:
+        """Return the same network at some of its time points only."""
+        return Network(
+            self.unknowns, self.constant_g, self.constant_c, self.rows, self.columns,
+            self.varying_g[points], self.varying_c[points], self.time[points],
+        )  # fmt: skip
+
+
+class _Stamps:
+    """Collects the entries of G and C."""
+
+    def __init__(self, points: int) -> None:
+        self.points = points
+        self.unknowns: dict[str, int] = {}
+        self.constant: dict[str, dict[tuple[int, int], float]] = {"g": {}, "c": {}}
+        self.varying: dict[str, dict[tuple[int, int], Array]] = {"g": {}, "c": {}}
+
+    def place(self, key: str) -> int:
+        return self.unknowns.setdefault(key, len(self.unknowns))
+
+    def node(self, name: str) -> int:
+        return -1 if name == "0" else self.place(f"v:{name}")
+
+    def add(self, row: int, column: int, value: float | Array, kind: str = "g") -> None:
+        if row < 0 or column < 0:
+            return
+        if isinstance(value, np.ndarray) and value.size > 1:
+            table = self.varying[kind]
+            table[row, column] = table.get((row, column), 0.0) + np.asarray(value)
+        else:
+            fixed = self.constant[kind]
+            fixed[row, column] = fixed.get((row, column), 0.0) + float(value)
+
+    def transfer(
+        self, out: tuple[str, str], control: tuple[str, str], value: float | Array, kind: str = "g"
+    ) -> None:
+        """Add a current value * v(control) that flows from out[0] through the element to out[1]."""
+        for row, row_sign in ((self.node(out[0]), 1.0), (self.node(out[1]), -1.0)):
+            for column, sign in ((self.node(control[0]), 1.0), (self.node(control[1]), -1.0)):
+                self.add(row, column, row_sign * sign * value, kind)
+
+    def admittance(self, plus: str, minus: str, value: float | Array, kind: str = "g") -> None:
+        self.transfer((plus, minus), (plus, minus), value, kind)
+
+    def branch(self, name: str, plus: str, minus: str) -> int:
+        """Add the unknown current of a branch and the voltage across it to the branch's own row."""
+        row = self.place(f"i:{name}")
+        for node, sign in ((self.node(plus), 1.0), (self.node(minus), -1.0)):
+            self.add(node, row, sign)
+            self.add(row, node, sign)
+        return row
+
+    def network(self, time: Array) -> Network:
+        size = len(self.unknowns)
+        fixed = {kind: np.zeros((size, size)) for kind in "gc"}
+        for kind, entries in self.constant.items():
+            for (row, column), value in entries.items():
+                fixed[kind][row, column] += value
+        places = sorted({*self.varying["g"], *self.varying["c"]})
+        varying = {kind: np.zeros((self.points, len(places))) for kind in "gc"}
+        for kind, table in self.varying.items():
+            for k, place in enumerate(places):
+                if place in table:
+                    varying[kind][:, k] = table[place]
+        index = np.array(places, dtype=np.intp).reshape(-1, 2)
+        return Network(
+            dict(self.unknowns), fixed["g"], fixed["c"], index[:, 0], index[:, 1], varying["g"], varying["c"], time
+        )
+
+
+def linearise(circuit: Circuit, bias: Bias, temperature: float) -> Network:
+    """Linearise a flattened circuit along its bias.
+
+    Parameters
+    ----------
+    circuit : Circuit
+        Flattened elements.
+    bias : Bias
+        Waveforms of the run around which to linearise, n points.
+    temperature : float
+        Circuit temperature [degC].
+
+    Returns
+    -------
+    Network
+
+    Raises
+    ------
+    LinearisationError
+        Naming the first element that has no small-signal form here.
+    """
+    if circuit.refused:
+        raise circuit.refused[0]
+    stamps = _Stamps(bias.points)
+    # bias is a real part of every matrix entry only where a device needs it; ground has no unknown
+    for node in circuit.nodes:
+        stamps.node(node)
+    inductance: dict[str, float] = {}
+    for element in circuit.elements:
+        _stamp_element(stamps, element, inductance)
+    for coupling in circuit.couplings:
+        _stamp_coupling(stamps, coupling, inductance)
+    for device in circuit.devices:
+        (_stamp_diode if device.name[0] == "d" else _stamp_transistor)(stamps, device, bias, temperature)
+    for source in circuit.behaviourals:
+        _stamp_behavioural(stamps, source, bias, temperature)
+    for element in circuit.elements:
+        _stamp_current_control(stamps, element)
+    return stamps.network(bias.time)
+
+
+def _stamp_element(stamps: _Stamps, element: Element, inductance: dict[str, float]) -> None:
+    plus, minus = element.nodes[0], element.nodes[1]
+    letter = element.name[0]
+    if letter == "r":
+        stamps.admittance(plus, minus, 1.0 / element.value)
+    elif letter == "c":
+        stamps.admittance(plus, minus, element.value, "c")
+    elif letter == "g":
+        stamps.transfer((plus, minus), (element.nodes[2], element.nodes[3]), element.value)
+    elif letter in "vehl":
+        row = stamps.branch(element.name, plus, minus)
+        if letter == "l":
+            inductance[element.name] = element.value
+            stamps.add(row, row, -element.value, "c")
+        if letter == "e":
+            for node, sign in ((element.nodes[2], -1.0), (element.nodes[3], 1.0)):
+                stamps.add(row, stamps.node(node), sign * element.value)
+
+
+def _stamp_current_control(stamps: _Stamps, element: Element) -> None:
+    if element.source is None:
+        return
+    key = f"i:{element.source}"
+    if key not in stamps.unknowns:
+        raise LinearisationError(element.name.upper(), f"its controlling source {element.source} has no current")
+    column = stamps.unknowns[key]
+    if element.name[0] == "f":
+        stamps.add(stamps.node(element.nodes[0]), column, element.value)
+        stamps.add(stamps.node(element.nodes[1]), column, -element.value)
+    else:
+        stamps.add(stamps.unknowns[f"i:{element.name}"], column, -element.value)
+
+
+def _stamp_coupling(stamps: _Stamps, coupling: Coupling, inductance: Mapping[str, float]) -> None:
+    try:
+        first, second = (inductance[name] for name in coupling.inductors)
+    except KeyError as error:
+        raise LinearisationError(coupling.name.upper(), f"there is no inductor {error}") from error
+    mutual = coupling.factor * float(np.sqrt(first * second))
+    rows = [stamps.unknowns[f"i:{name}"] for name in coupling.inductors]
+    stamps.add(rows[0], rows[1], -mutual, "c")
+    stamps.add(rows[1], rows[0], -mutual, "c")
+
+
+def _stamp_diode(stamps: _Stamps, device: Device, bias: Bias, temperature: float) -> None:
+    law = DiodeLaw(device, temperature)
+    anode, cathode = device.nodes[:2]
+    conductance, capacitance = law.small_signal(bias.device(device.name, "vd"))
+    inner = anode
+    if law.resistance > 0.0:
+        inner = f"{device.name}#anode"
+        stamps.admittance(anode, inner, 1.0 / law.resistance)
+    stamps.admittance(inner, cathode, conductance)
+    stamps.admittance(inner, cathode, capacitance, "c")
+
+
+def _stamp_transistor(stamps: _Stamps, device: Device, bias: Bias, temperature: float) -> None:
+    law = TransistorLaw(device, temperature)
+    collector, base, emitter = device.nodes[:3]
+    vbe, vbc = bias.device(device.name, "vbe"), bias.device(device.name, "vbc")
+    inner = {}
+    for name, node, resistance in (
+        ("collector", collector, law.collector_resistance),
+        ("emitter", emitter, law.emitter_resistance),
+    ):
+        inner[name] = f"{device.name}#{name}" if resistance > 0.0 else node
+        if resistance > 0.0:
+            stamps.admittance(node, inner[name], 1.0 / resistance)
+    # the drop in the collector resistance is small against the potential that shapes the outer capacitance
+    polarity = -1.0 if device.model.kind == "pnp" else 1.0
+    signal = law.small_signal(vbe, vbc, polarity * (bias.voltage(base) - bias.voltage(collector)))
+    inner["base"] = f"{device.name}#base" if law.has_base_resistance else base
+    if law.has_base_resistance:
+        stamps.admittance(base, inner["base"], signal.base)
+    b, c, e = inner["base"], inner["collector"], inner["emitter"]
+    stamps.admittance(b, e, signal.pi)
+    stamps.admittance(b, e, signal.c_be, "c")
+    stamps.admittance(b, c, signal.mu)
+    stamps.admittance(b, c, signal.c_bc, "c")
+    stamps.admittance(base, c, signal.c_bx, "c")
+    stamps.transfer((c, e), (b, e), signal.m)
+    stamps.admittance(c, e, signal.o)
+    stamps.transfer((b, e), (b, c), signal.c_cross, "c")
+
+
+def _stamp_behavioural(stamps: _Stamps, source: Behavioural, bias: Bias, temperature: float) -> None:
+    law = source.law
+    try:
+        dual = law.evaluate(bias.probes(law.nodes, law.sources), {"temper": temperature})
+    except RawFileError as error:
+        raise LinearisationError(source.name.upper(), f"its control is not known ({error.message})") from error
+    plus, minus = source.nodes
+    row = stamps.branch(source.name, plus, minus) if source.quantity == "v" else -1
+    for key, slope in dual.partial.items():
+        slope = np.where(np.isfinite(slope), slope, 0.0) + np.zeros(bias.points)
+        column = stamps.place(key)
+        if source.quantity == "v":
+            stamps.add(row, column, -slope)
+        else:
+            stamps.add(stamps.node(plus), column, slope)
+            stamps.add(stamps.node(minus), column, -slope)

@@ -1,0 +1,139 @@
+"""Limits on metrics, and the verdict on figures held against them."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass
+from difflib import get_close_matches
+from typing import Literal
+
+from transim.errors import DesignError
+from transim.measure.metrics import METRICS, Figure
+from transim.quantities import format_quantity
+
+__all__ = ["Judgement", "Limit", "Verdict", "judge", "verdict"]
+
+Verdict = Literal["pass", "fail", "undefined"]
+
+
+@dataclass(frozen=True)
+class Limit:
+    """What a metric must not pass; a value on a bound meets it.
+
+    Parameters
+    ----------
+    metric : str
+        Name of the metric.
+    min, max : float or None
+        Bounds in the metric's unit, at least one.
+
+    Raises
+    ------
+    DesignError
+        If the metric is unknown, no bound is given, a bound is not finite or they exclude each other;
+        `key` is the key in the design file.
+    """
+
+    metric: str
+    min: float | None = None
+    max: float | None = None
+
+    def __post_init__(self) -> None:
+        key = f"limits.{self.metric}"
+        if self.metric not in METRICS:
+            nearest = get_close_matches(self.metric, METRICS, n=1)
+            raise DesignError(
+                "unknown metric",
+                key=key,
+                expected=f"one of {', '.join(METRICS)}",
+                found=self.metric,
+                nearest=nearest[0] if nearest else None,
+            )
+        bounds = [bound for bound in (self.min, self.max) if bound is not None]
+        if not bounds:
+            raise DesignError("a limit needs min, max or both", key=key)
+        if not all(math.isfinite(bound) for bound in bounds):
+            raise DesignError("a bound is not a finite number", key=key, found=str(bounds))
+        if self.min is not None and self.max is not None and self.min > self.max:
+            unit = METRICS[self.metric].unit
+            low, high = format_quantity(self.min, unit), format_quantity(self.max, unit)
+            raise DesignError("min is above max", key=key, found=f"min {low}, max {high}")
+
+
+@dataclass(frozen=True)
+class Judgement:
+    """One limit, the figure that was held against it, and the outcome.
+
+    Parameters
+    ----------
+    metric : str
+        Name of the metric.
+    min, max : float or None
+        Bounds of the limit, in the metric's unit.
+    value : float or None
+        The figure; None if it is undefined.
+    margin : float or None
+        Distance to the nearer bound, negative where that is missed, in the metric's unit.
+    verdict : {"pass", "fail", "undefined"}
+        The outcome.
+    """
+
+    metric: str
+    min: float | None
+    max: float | None
+    value: float | None
+    margin: float | None
+    verdict: Verdict
+
+
+def judge(figures: Mapping[str, Figure], limits: Sequence[Limit]) -> tuple[Judgement, ...]:
+    """Hold figures against limits.
+
+    Parameters
+    ----------
+    figures : mapping of str to Figure
+        Figures by metric, as `extract` gives them.
+    limits : sequence of Limit
+        The limits.
+
+    Returns
+    -------
+    tuple of Judgement
+        One for each limit, in their order. A figure that is missing, undefined or not finite gives the
+        verdict "undefined".
+    """
+    return tuple(_judge(figures.get(limit.metric), limit) for limit in limits)
+
+
+def verdict(judgements: Iterable[Judgement]) -> Verdict:
+    """Join verdicts into one.
+
+    Parameters
+    ----------
+    judgements : iterable of Judgement
+        What was judged.
+
+    Returns
+    -------
+    {"pass", "fail", "undefined"}
+        "fail" if any limit is missed, else "undefined" if any could not be judged, else "pass".
+    """
+    found = {judgement.verdict for judgement in judgements}
+    if "fail" in found:
+        return "fail"
+    return "undefined" if "undefined" in found else "pass"
+
+
+def _judge(figure: Figure | None, limit: Limit) -> Judgement:
+    value = None if figure is None else figure.value
+    if value is None or not math.isfinite(value):
+        return Judgement(limit.metric, limit.min, limit.max, None, None, "undefined")
+    margins = []
+    if limit.min is not None:
+        margins.append(value - limit.min)
+    if limit.max is not None:
+        margins.append(limit.max - value)
+    margin = min(margins)
+    outcome: Verdict = "pass" if margin >= 0.0 else "fail"
+    return Judgement(limit.metric, limit.min, limit.max, value, margin, outcome)

@@ -1,0 +1,80 @@
+"""One judged switching cycle as waveforms, whether simulated or measured."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from types import MappingProxyType
+
+from transim.errors import MeasurementError
+from transim.measure.definitions import Definitions, Timing
+from transim.measure.waveform import Waveform
+
+__all__ = ["Record"]
+
+
+@dataclass(frozen=True, eq=False, kw_only=True)
+class Record:
+    """Everything that the figures of one cycle are taken from.
+
+    What is None or empty was not recorded: the figures that need it are undefined.
+
+    Parameters
+    ----------
+    timing : Timing
+        Instants of the command, on the time axis of every waveform.
+    definitions : Definitions
+        What the figures are counted from.
+    carrier : float
+        Carrier frequency [Hz].
+    impedance : float
+        Impedance that every RF port is terminated with [ohm].
+    biased_passes : bool
+        True if the RF passes while the junctions are forward biased, False if it passes while they are not.
+    envelope : Waveform or None
+        Complex S21 of the judged port pair against time [1]; its magnitude alone where no phase is known.
+    static_on, static_off : complex or None
+        S21 of the settled states [1].
+    match_on, match_off : complex or None
+        S11 of the settled states [1].
+    video : mapping of str to Waveform
+        Voltage at each RF port with the RF off [V].
+    drive_current : Waveform or None
+        Current out of the driver, positive when it sources [A].
+    supply_power : Waveform or None
+        Power that all supplies together deliver [W].
+    junction_charge : mapping of str to Waveform
+        Stored charge of each junction, positive when forward biased [C].
+    junction_reverse : mapping of str to Waveform
+        Voltage across each junction, positive when reverse biased [V].
+
+    Raises
+    ------
+    MeasurementError
+        If carrier or impedance is not a finite positive number.
+    """
+
+    timing: Timing
+    definitions: Definitions
+    carrier: float
+    impedance: float
+    biased_passes: bool
+    envelope: Waveform | None = None
+    static_on: complex | None = None
+    static_off: complex | None = None
+    match_on: complex | None = None
+    match_off: complex | None = None
+    video: Mapping[str, Waveform] = field(default_factory=dict)
+    drive_current: Waveform | None = None
+    supply_power: Waveform | None = None
+    junction_charge: Mapping[str, Waveform] = field(default_factory=dict)
+    junction_reverse: Mapping[str, Waveform] = field(default_factory=dict)
+
+    def __post_init__(self) -> None:
+        for name in ("carrier", "impedance"):
+            value = getattr(self, name)
+            if not (math.isfinite(value) and value > 0.0):
+                raise MeasurementError(f"{name} must be a finite positive number, found {value}")
+        for name in ("video", "junction_charge", "junction_reverse"):
+            object.__setattr__(self, name, MappingProxyType(dict(getattr(self, name))))
