@@ -146,8 +146,8 @@ def test_transient_agrees_with_its_closed_form(engine: Engine) -> None:
 
 def test_deck_that_writes_several_plots(engine: Engine, tmp_path: Path) -> None:
     deck = (
-        "* several plots\nv1 in 0 dc 1 ac 1 pulse(1 0 0 1e-9 1e-9 1 2)\nr1 in out 1e3\nc1 out 0 1e-9\n.control\n"
-        "listing expand\nset appendwrite\nop\nwrite three.raw\nac lin 1 1e6 1e6\nwrite three.raw\n"
+        "* several plots\nv1 in 0 dc 1 ac 1 pulse(1 0 0 1e-9 1e-9 1 2)\nr1 in out 1e3\nc1 out 0 1e-9\n"
+        ".control\nlisting expand\nset appendwrite\nop\nwrite three.raw\nac lin 1 1e6 1e6\nwrite three.raw\n"
         "tran 1e-9 1e-6\nwrite three.raw\nquit 0\n.endc\n.end\n"
     )
     engine.run(deck, folder=tmp_path, name="three", writes_raw=True)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
@@ -253,8 +254,8 @@ def bias_check_deck(
 ) -> Deck:
     """Write a deck in which ngspice itself linearises the circuit at a given bias.
 
-    Every node that a nonlinear element touches or is controlled by gets a twin: coupled to it by 1 F, held at its
-    bias through 1e9 H, so that each nonlinear element sees the bias at DC and the circuit at the carrier. All
+    Every node that a nonlinear element touches or is controlled by gets a twin: coupled to it by a capacitor of
+    1e-5 ohm, held at its bias through an inductor of 1e12 ohm (both at the lowest carrier), so that each nonlinear element sees the bias at DC and the circuit at the carrier. All
     independent sources are zero. This reproduces the bias of any instant of a transient, which an operating
     point does not.
 
@@ -276,7 +277,7 @@ def bias_check_deck(
     Deck
         Its raw file holds one AC plot for each port and frequency.
     """
-    twins = _Twins(bias)
+    twins = _Twins(bias, min(frequencies))
     body = [twins.rewrite(line, circuit) for line in circuit.lines]
     nodes = " ".join(f"v({port.node})" for port in ports)
     steps = []
@@ -302,8 +303,11 @@ def bias_check_deck(
 class _Twins:
     """Rewrites listing lines so that nonlinear elements hang on twins of their nodes."""
 
-    def __init__(self, bias: Mapping[str, float]) -> None:
+    def __init__(self, bias: Mapping[str, float], lowest: float) -> None:
         self.bias = bias
+        # a coupling much better than 1e-5 ohm costs ngspice's matrix the digits of small conductances
+        self.capacitance = deck_number(1e5 / (2.0 * math.pi * lowest))
+        self.inductance = deck_number(1e12 / (2.0 * math.pi * lowest))
         self.held: dict[str, None] = {}
 
     def twin(self, node: str) -> str:
@@ -316,7 +320,11 @@ class _Twins:
         lines = []
         for k, node in enumerate(self.held):
             value = deck_number(self.bias[f"v({node})"])
-            lines += [f"Cheld{k} {node} {node}_held 1", f"Lheld{k} {node}_held held{k} 1e9", f"Vheld{k} held{k} 0 DC {value}"]
+            lines += [
+                f"Cheld{k} {node} {node}_held {self.capacitance}",
+                f"Lheld{k} {node}_held held{k} {self.inductance}",
+                f"Vheld{k} held{k} 0 DC {value}",
+            ]
         return "\n".join(lines) + "\n"
 
     def rewrite(self, line: str, circuit: Circuit) -> str:

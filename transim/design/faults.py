@@ -16,6 +16,7 @@ from transim.parts.nearest import nearest_name
 __all__ = ["Faults"]
 
 T = TypeVar("T", bound=BaseModel)
+V = TypeVar("V")
 
 
 class Faults:
@@ -73,11 +74,10 @@ class Faults:
         names = tuple(known)
         name = str(path[-1])
         expected = f"one of {', '.join(names)}" if names else "no keys here"
-        self.adopt(
-            path, DesignError(message, expected=expected, found=shown(name), nearest=nearest_name(name, names))
-        )
+        nearest = nearest_name(name, names)
+        self.adopt(path, DesignError(message, expected=expected, found=shown(name), nearest=nearest))
 
-    def missing(self, path: KeyPath, expected: str) -> None:
+    def missing(self, path: KeyPath, expected: str, what: str = "key") -> None:
         """Add an error about a key that is missing; its place is that of its table.
 
         Parameters
@@ -86,8 +86,10 @@ class Faults:
             The key.
         expected : str
             What its value would be.
+        what : str
+            "key" or "table".
         """
-        self.adopt(path, DesignError("this required key is missing", expected=expected))
+        self.adopt(path, DesignError(f"this required {what} is missing", expected=expected))
 
     def table(self, path: KeyPath, raw: object) -> dict[str, object] | None:
         """Return a value that should be a table.
@@ -111,7 +113,7 @@ class Faults:
         )
         return None
 
-    def value(self, path: KeyPath, raw: object, kind: Kind, default: T | float | str | None = None) -> object:
+    def value(self, path: KeyPath, raw: object, kind: Kind[V]) -> V | None:
         """Check one value.
 
         Parameters
@@ -122,19 +124,17 @@ class Faults:
             The value.
         kind : Kind
             What it should be.
-        default : object
-            What is returned for a wrong value.
 
         Returns
         -------
         object
-            The value in the program's own form; `default`, with an error added, if it is wrong.
+            The value in the program's own form; None, with an error added, if it is wrong.
         """
         try:
             return kind.read(raw, from_file=True)
         except DesignError as exc:
             self.adopt(path, exc)
-            return default
+            return None
 
     def model(self, model: type[T], path: KeyPath, raw: Mapping[str, object]) -> T | None:
         """Check a table that has a model.
@@ -157,7 +157,8 @@ class Faults:
             return model.model_validate(raw, context=FROM_FILE)
         except ValidationError as exc:
             for detail in exc.errors(include_url=False):
-                self._explain(model, (*path, *detail["loc"]), detail["type"], detail.get("ctx", {}).get("error"))
+                cause = detail.get("ctx", {}).get("error")
+                self._explain(model, (*path, *detail["loc"]), detail["type"], cause)
             return None
 
     def _explain(self, model: type[BaseModel], path: KeyPath, kind: str, cause: object) -> None:

@@ -7,8 +7,9 @@ file must write units; in Python a float in the SI unit serves as well.
 from __future__ import annotations
 
 import math
+import re
 from dataclasses import dataclass
-from typing import Any, Protocol
+from typing import Any, Protocol, TypeVar
 
 from pydantic import GetCoreSchemaHandler, ValidationInfo
 from pydantic_core import CoreSchema, core_schema
@@ -19,6 +20,8 @@ from transim.parts.part import Parameter
 from transim.quantities import UNITS, format_quantity, format_range, parse_quantity
 
 __all__ = ["FROM_FILE", "Choice", "Count", "ElementErrors", "Kind", "Line", "Quantity", "Series", "shown"]
+
+_CONTROL = re.compile("[\\x00-\\x1f\\x7f-\\x9f\\u2028\\u2029]")
 
 #: Validation context that says that the values come from a design file.
 FROM_FILE = {"from_file": True}
@@ -53,14 +56,17 @@ def shown(raw: object) -> str:
     return "a date or time"
 
 
-class Kind(Protocol):
+T_co = TypeVar("T_co", covariant=True)
+
+
+class Kind(Protocol[T_co]):
     """What the kinds of value have in common."""
 
     @property
     def expected(self) -> str:
         """What an error says was expected."""
 
-    def read(self, raw: object, *, from_file: bool) -> Any:
+    def read(self, raw: object, *, from_file: bool) -> T_co:
         """Check a value and return it in the program's own form."""
 
 
@@ -85,7 +91,7 @@ class _Checked:
         del source, handler
 
         def check(raw: Any, info: ValidationInfo) -> Any:
-            kind: Kind = self  # type: ignore[assignment]
+            kind: Kind[Any] = self  # type: ignore[assignment]
             return kind.read(raw, from_file=bool(info.context and info.context.get("from_file")))
 
         return core_schema.with_info_plain_validator_function(check)
@@ -157,7 +163,9 @@ class Quantity(_Checked):
             If it is no such quantity or out of range.
         """
         if isinstance(raw, bool) or not isinstance(raw, str | int | float):
-            raise DesignError(f"this is not {UNITS[self.unit].quantity}", expected=self.expected, found=shown(raw))
+            raise DesignError(
+                f"this is not {UNITS[self.unit].quantity}", expected=self.expected, found=shown(raw)
+            )
         if isinstance(raw, str):
             if self.unit == "1" and from_file:
                 raise DesignError(
@@ -381,8 +389,10 @@ class Line(_Checked):
             raise DesignError("the text is empty", expected=self.expected, found=shown(raw))
         if len(raw) > self.longest:
             raise DesignError("the text is too long", expected=self.expected, found=f"{len(raw)} characters")
-        if any(ord(character) < 32 or 127 <= ord(character) < 160 or character in "\u2028\u2029" for character in raw):
+        if _CONTROL.search(raw):
             raise DesignError(
-                "the text has a line break or another control character", expected=self.expected, found=shown(raw)
+                "the text has a line break or another control character",
+                expected=self.expected,
+                found=shown(raw),
             )
         return raw

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import re
 import tomllib
 from bisect import bisect_right
@@ -75,7 +76,7 @@ class _Scanner:
             return True
         return False
 
-    def keys(self) -> list[tuple[str, int]]:
+    def dotted_key(self) -> list[tuple[str, int]]:
         found = []
         while True:
             self.take(_SPACE)
@@ -96,7 +97,7 @@ class _Scanner:
         self.position += 1
         is_array = self.literally("[")
         path: KeyPath = ()
-        keys = self.keys()
+        keys = self.dotted_key()
         for index, (name, start) in enumerate(keys):
             path = (*path, name)
             self.starts.setdefault(path, start)
@@ -111,7 +112,7 @@ class _Scanner:
 
     def assignment(self, table: KeyPath) -> None:
         path = table
-        for name, start in self.keys():
+        for name, start in self.dotted_key():
             path = (*path, name)
             self.starts.setdefault(path, start)
         if not self.literally("="):
@@ -159,7 +160,7 @@ class _Scanner:
 
 
 class Locations:
-    """Line and column of every key and array element of a TOML text.
+    r"""Line and column of every key and array element of a TOML text.
 
     Parameters
     ----------
@@ -168,17 +169,15 @@ class Locations:
 
     Examples
     --------
-    >>> Locations('[driver.fast]\\nspeedup_cap = "470 pF"').find("driver.fast.speedup_cap")
+    >>> Locations('[driver.fast]\nspeedup_cap = "470 pF"').find("driver.fast.speedup_cap")
     Place(line=2, column=1)
     """
 
     def __init__(self, text: str) -> None:
         plain = text.replace("\r\n", "\n")
         scanner = _Scanner(plain)
-        try:
+        with contextlib.suppress(_Lost, RecursionError):
             scanner.scan()
-        except (_Lost, RecursionError):
-            pass
         self._starts = scanner.starts
         self._lines = [0, *(match.end() for match in re.finditer("\n", plain))]
 
@@ -276,7 +275,7 @@ def split_dotted(text: str) -> KeyPath:
                 pieces.append(int(scanner.take(_INDEX)[1:-1]))
                 scanner.literally(".")
             else:
-                pieces.extend(name for name, _ in scanner.keys())
+                pieces.extend(name for name, _ in scanner.dotted_key())
     except _Lost:
         return ()
     return tuple(pieces)

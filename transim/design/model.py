@@ -57,16 +57,16 @@ class Control(_Table):
     high: Annotated[float, Quantity("V", -1e3, 1e3)] = Field(
         description="level of the command that is on, above low"
     )
-    period: Annotated[float, Quantity("s", 0.0, 1e3, True)] = Field(
-        description="from one pulse to the next"
-    )
+    period: Annotated[float, Quantity("s", 0.0, 1e3, True)] = Field(description="from one pulse to the next")
     on_for: Annotated[float, Quantity("s", 0.0, 1e3, True)] = Field(
         description="high time, from 50 % to 50 % of the edges"
     )
     edge: Annotated[float, Quantity("s", 0.0, 1e3, True)] = Field(
         description="duration of each edge, 0 to 100 %"
     )
-    pulses: Annotated[int, Count(1, 1000)] = Field(1, description="pulses in the train; the last is judged")
+    pulses: Annotated[int, Count(1, 1000)] = Field(
+        default=1, description="pulses in the train; the last is judged"
+    )
 
     @field_validator("high")
     @classmethod
@@ -102,7 +102,7 @@ class Control(_Table):
                 expected=f"no more than on_for, {format_quantity(on_for, 's')}",
                 found=format_quantity(edge, "s"),
             )
-        if on_for is not None and period is not None and edge > period - on_for:
+        if on_for is not None and period is not None and edge > (period - on_for) * (1.0 + 1e-9):
             raise DesignError(
                 "the edge is longer than the pause between two pulses",
                 expected=f"no more than period - on_for, {format_quantity(period - on_for, 's')}",
@@ -128,10 +128,10 @@ class Carrier(_Table):
         description="one frequency or an array of them"
     )
     level: Annotated[float, Quantity("dBm", -200.0, 80.0)] = Field(
-        -10.0, description="available power of the RF source"
+        default=-10.0, description="available power of the RF source"
     )
     impedance: Annotated[float, Quantity("ohm", 0.0, 1e5, True)] = Field(
-        50.0, description="of the RF source and of every load"
+        default=50.0, description="of the RF source and of every load"
     )
 
 
@@ -221,25 +221,25 @@ class Measure(_Table):
     """
 
     basis: Annotated[Literal["voltage", "power"], Choice(("voltage", "power"))] = Field(
-        _STANDARD.basis, description="10 and 90 % of the RF voltage, or of its power"
+        default=_STANDARD.basis, description="10 and 90 % of the RF voltage, or of its power"
     )
     reference: Annotated[Literal["static", "end_of_pulse"], Choice(("static", "end_of_pulse"))] = Field(
-        _STANDARD.reference, description="full level: the static on state, or the end of the pulse"
+        default=_STANDARD.reference, description="full level: the static on state, or the end of the pulse"
     )
     settle_band: Annotated[float, Quantity("dB", 0.0, 20.0, True)] = Field(
-        _STANDARD.settle_band, description="half width of the band in which the level has settled"
+        default=_STANDARD.settle_band, description="half width of the band in which the level has settled"
     )
     phase_band: Annotated[float, Quantity("deg", 0.0, 90.0, True)] = Field(
-        _STANDARD.phase_band, description="half width of the band in which the phase has settled"
+        default=_STANDARD.phase_band, description="half width of the band in which the phase has settled"
     )
     video_bandwidth: Annotated[float | None, Quantity("Hz", 0.0, 1e12, True)] = Field(
-        _STANDARD.video_bandwidth, description="of the instrument that sees the video leakage"
+        default=_STANDARD.video_bandwidth, description="of the instrument that sees the video leakage"
     )
     resolution_bandwidth: Annotated[float, Quantity("Hz", 0.0, 1e12, True)] = Field(
-        _STANDARD.resolution_bandwidth, description="for video_inband"
+        default=_STANDARD.resolution_bandwidth, description="for video_inband"
     )
     isolation_level: Annotated[float, Quantity("dB", 0.0, 300.0, True)] = Field(
-        _STANDARD.isolation_level, description="what counts as off where isolation has no limit"
+        default=_STANDARD.isolation_level, description="what counts as off where isolation has no limit"
     )
 
     def definitions(self) -> Definitions:
@@ -263,7 +263,7 @@ class Environment(_Table):
     """
 
     temperature: Annotated[tuple[float, ...], Series(Quantity("degC", -273.15, 500.0, True))] = Field(
-        (25.0,), description="one temperature or an array of them"
+        default=(25.0,), description="one temperature or an array of them"
     )
 
 
@@ -285,20 +285,20 @@ class Numerics(_Table):
     """
 
     reltol: Annotated[float, Quantity("1", 1e-8, 1e-2)] = Field(
-        1e-4, description="relative tolerance of ngspice"
+        default=1e-4, description="relative tolerance of ngspice"
     )
     steps: Annotated[int, Count(20, 1_000_000)] = Field(
-        400, description="the longest time step is on_for / steps"
+        default=400, description="the longest time step is on_for / steps"
     )
     carrier_points: Annotated[int, Count(8, 10_000)] = Field(
-        40, description="time steps in a carrier period, where the carrier is resolved"
+        default=40, description="time steps in a carrier period, where the carrier is resolved"
     )
     timeout: Annotated[float, Quantity("s", 0.0, 1e6, True)] = Field(
-        60.0, description="longest duration of one run of ngspice"
+        default=60.0, description="longest duration of one run of ngspice"
     )
-    solution: Annotated[
-        Literal["auto", "frozen", "ringing"], Choice(("auto", "frozen", "ringing"))
-    ] = Field("auto", description="envelope without or with the network's ringing at the carrier")
+    solution: Annotated[Literal["auto", "frozen", "ringing"], Choice(("auto", "frozen", "ringing"))] = Field(
+        default="auto", description="envelope without or with the network's ringing at the carrier"
+    )
 
 
 class Source(_Table):

@@ -96,8 +96,8 @@ def _no_solution(analysis: str | None, detail: str, errors: str) -> str:
     if analysis == "DC" and sweep is not None:
         what += f" at {sweep[1]}"
     # In a transient that went on for a while the warning is of the start, and was overcome.
-    singular = re.search(r"singular matrix:\s+check node (\S+)", errors)
-    if singular is not None and ("; time =" not in detail):
+    singular = re.search(r"singular matrix:\s+check nodes? (\S+)", errors)
+    if singular is not None and "; time =" not in detail:
         return f"{what}: the matrix is singular at {_singular_at(singular[1])}"
     if "; time =" in detail:
         return (

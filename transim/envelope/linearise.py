@@ -8,7 +8,7 @@ Circuits Syst. 22(6), 1975). With x the complex envelope at the carrier w, the n
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Collection, Iterable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -24,6 +24,10 @@ __all__ = ["Bias", "Network", "linearise", "saved_vectors"]
 
 #: What ngspice has to save of each device, beside all node voltages and branch currents.
 _DEVICE_VECTORS = {"d": ("vd",), "q": ("vbe", "vbc")}
+
+#: Entries far below these are no load to a 50 ohm line at any carrier [S, F].
+_SMALL_G = 1e-8
+_SMALL_C = 1e-17
 
 
 def saved_vectors(circuit: Circuit) -> tuple[str, ...]:
@@ -120,11 +124,47 @@ class Network:
         )  # fmt: skip
 
 
+    def scaled_changes(self) -> Array:
+        """Return every entry that changes on a scale where equal distances are equal shares, shape (n, k or less).
+
+        Entries too small to load a 50 ohm line at any carrier are linear on it, so that their shares do not count.
+        """
+        total_g = self.constant_g[self.rows, self.columns] + self.varying_g
+        total_c = self.constant_c[self.rows, self.columns] + self.varying_c
+        scaled = np.arcsinh(np.concatenate([total_g / _SMALL_G, total_c / _SMALL_C], axis=1))
+        return np.asarray(scaled[:, np.ptp(scaled, axis=0) > 0.0])
+
+    def refined(self, share: float) -> Network:
+        """Return the network with points added wherever an entry changes by more than a share from one to the next.
+
+        Parameters
+        ----------
+        share : float
+            Largest relative change between neighbours.
+        """
+        jumps = np.abs(np.diff(self.scaled_changes(), axis=0)).max(axis=1, initial=0.0)
+        parts = np.maximum(1, np.ceil(jumps / share)).astype(int)
+        position = np.concatenate(
+            [[0.0], *(k + np.arange(1, part + 1) / part for k, part in enumerate(parts.tolist()))]
+        )
+        place = np.arange(self.time.size)
+        varying = []
+        for values, small in ((self.varying_g, _SMALL_G), (self.varying_c, _SMALL_C)):
+            scaled = np.arcsinh(values / small)
+            between = [np.interp(position, place, column) for column in scaled.T]
+            varying.append(small * np.sinh(np.stack(between, axis=1)) if between else values[:0])
+        time = np.interp(position, place, self.time)
+        return Network(
+            self.unknowns, self.constant_g, self.constant_c, self.rows, self.columns, varying[0], varying[1], time
+        )
+
+
 class _Stamps:
     """Collects the entries of G and C."""
 
-    def __init__(self, points: int) -> None:
+    def __init__(self, points: int, quiet: frozenset[str]) -> None:
         self.points = points
+        self.quiet = quiet
         self.unknowns: dict[str, int] = {}
         self.constant: dict[str, dict[tuple[int, int], float]] = {"g": {}, "c": {}}
         self.varying: dict[str, dict[tuple[int, int], Array]] = {"g": {}, "c": {}}
@@ -133,7 +173,7 @@ class _Stamps:
         return self.unknowns.setdefault(key, len(self.unknowns))
 
     def node(self, name: str) -> int:
-        return -1 if name == "0" else self.place(f"v:{name}")
+        return -1 if name == "0" or name in self.quiet else self.place(f"v:{name}")
 
     def add(self, row: int, column: int, value: float | Array, kind: str = "g") -> None:
         if row < 0 or column < 0:
@@ -182,7 +222,7 @@ class _Stamps:
         )
 
 
-def linearise(circuit: Circuit, bias: Bias, temperature: float) -> Network:
+def linearise(circuit: Circuit, bias: Bias, temperature: float, ports: Collection[str]) -> Network:
     """Linearise a flattened circuit along its bias.
 
     Parameters
@@ -193,6 +233,8 @@ def linearise(circuit: Circuit, bias: Bias, temperature: float) -> Network:
         Waveforms of the run around which to linearise, n points.
     temperature : float
         Circuit temperature [degC].
+    ports : collection of str
+        Names of the sources behind the RF ports.
 
     Returns
     -------
@@ -205,13 +247,14 @@ def linearise(circuit: Circuit, bias: Bias, temperature: float) -> Network:
     """
     if circuit.refused:
         raise circuit.refused[0]
-    stamps = _Stamps(bias.points)
-    # bias is a real part of every matrix entry only where a device needs it; ground has no unknown
+    supplies = _supplies(circuit, ports)
+    stamps = _Stamps(bias.points, frozenset(supplies.values()))
     for node in circuit.nodes:
         stamps.node(node)
     inductance: dict[str, float] = {}
     for element in circuit.elements:
-        _stamp_element(stamps, element, inductance)
+        if element.name not in supplies:
+            _stamp_element(stamps, element, inductance)
     for coupling in circuit.couplings:
         _stamp_coupling(stamps, coupling, inductance)
     for device in circuit.devices:
@@ -221,6 +264,19 @@ def linearise(circuit: Circuit, bias: Bias, temperature: float) -> Network:
     for element in circuit.elements:
         _stamp_current_control(stamps, element)
     return stamps.network(bias.time)
+
+
+def _supplies(circuit: Circuit, ports: Collection[str]) -> dict[str, str]:
+    """Return the voltage sources from a node to ground, with the node: it has no RF voltage, so needs no unknown."""
+    used = {element.source for element in circuit.elements} | set(ports)
+    used |= {name for source in circuit.behaviourals for name in source.law.sources}
+    found: dict[str, str] = {}
+    for element in circuit.elements:
+        if element.name[0] == "v" and element.name not in used and "0" in element.nodes:
+            node = element.nodes[0] if element.nodes[1] == "0" else element.nodes[1]
+            if node != "0" and node not in found.values():
+                found[element.name] = node
+    return found
 
 
 def _stamp_element(stamps: _Stamps, element: Element, inductance: dict[str, float]) -> None:
@@ -318,7 +374,8 @@ def _stamp_behavioural(stamps: _Stamps, source: Behavioural, bias: Bias, tempera
     row = stamps.branch(source.name, plus, minus) if source.quantity == "v" else -1
     for key, slope in dual.partial.items():
         slope = np.where(np.isfinite(slope), slope, 0.0) + np.zeros(bias.points)
-        column = stamps.place(key)
+        kind, name = key.split(":", 1)
+        column = stamps.node(name) if kind == "v" else stamps.place(key)
         if source.quantity == "v":
             stamps.add(row, column, -slope)
         else:

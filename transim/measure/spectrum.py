@@ -48,7 +48,6 @@ def _spherical_j1(x: Real) -> Real:
     square = x * x
     small = np.abs(x) < 0.3
     away = np.where(small, 1.0, x)
-    near = x / 3.0 * (
-        1.0 + square * (-1.0 / 10.0 + square * (1.0 / 280.0 + square * (-1.0 / 15120.0 + square / 1330560.0)))
-    )
+    tail = square * (1.0 / 280.0 + square * (-1.0 / 15120.0 + square / 1330560.0))
+    near = x / 3.0 * (1.0 + square * (-1.0 / 10.0 + tail))
     return np.where(small, near, (np.sin(away) - away * np.cos(away)) / (away * away))

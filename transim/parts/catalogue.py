@@ -136,9 +136,7 @@ def _files_of(folder: Path) -> dict[tuple[str, str], Path]:
             found=str(folder),
         )
     found: dict[tuple[str, str], Path] = {}
-    entries = [
-        (role, file) for role, name in ROLES.items() for file in sorted((folder / name).glob("*.cir"))
-    ]
+    entries = [(role, file) for role, name in ROLES.items() for file in sorted((folder / name).glob("*.cir"))]
     for file in sorted(folder.glob("*.cir")):
         role = read_role(file)
         if role is not None:

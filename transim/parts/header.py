@@ -46,7 +46,7 @@ _OF_ROLE = {
 _REPEATED = ("source", "note", "parameter", "probe", "slot", "supply")
 _FACT = re.compile(r"\*\s*([a-z]+)\s*:\s*(.*)")
 _NAME = re.compile(r"[a-z][a-z0-9_]*")
-_VECTOR = r"v\([\w.#]+(?:\s*,\s*[\w.#]+)?\)|i\([\w.#]+\)|@[\w.#]+\[\w+\]"
+_VECTOR = r"v\(\s*[\w.#]+(?:\s*,\s*[\w.#]+)?\s*\)|i\(\s*[\w.#]+\s*\)|@[\w.#]+\[\w+\]"
 _NUMBER = r"(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?"
 _TERM = re.compile(rf"\s*(?P<sign>[+-])?\s*(?:(?P<scale>{_NUMBER})\s*\*\s*)?(?P<vector>{_VECTOR})\s*")
 _KEYS_OF_DESIGN = {"junction": ("part", "model"), "path": ("path", "junction"), "driver": ("part", "model")}
@@ -221,8 +221,11 @@ def _read_probe(header: _Header, fact: _Fact) -> Probe:
                 f' or without "number *" before it; not understood: "{expression[position:]}"',
                 fact.line,
             )
-        scale = float(match["scale"] or 1.0)
-        terms.append((-scale if match["sign"] == "-" else scale, re.sub(r"\s", "", match["vector"]).lower()))
+        scale = float(match["scale"] or 1.0) * (-1.0 if match["sign"] == "-" else 1.0)
+        vector = re.sub(r"\s", "", match["vector"]).lower()
+        # ngspice saves node voltages, not differences: v(a,b) becomes v(a) - v(b).
+        nodes = vector[2:-1].split(",") if vector.startswith("v(") else []
+        terms += [(scale, f"v({nodes[0]})"), (-scale, f"v({nodes[1]})")] if nodes[1:] else [(scale, vector)]
         position = match.end()
     return Probe(quantity, unit, tuple(terms))
 

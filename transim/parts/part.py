@@ -96,8 +96,8 @@ class Probe:
     unit : str
         Unit of the sum.
     terms : tuple of (float, str)
-        Factor and vector: ``v(node)``, ``v(node,node)``, ``i(source)`` or ``@device[parameter]``, with
-        the names of the part's own subcircuit.
+        Factor and vector: ``v(node)``, ``i(source)`` or ``@device[parameter]``, with the names of the
+        part's own subcircuit, in lower case.
     """
 
     quantity: str

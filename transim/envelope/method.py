@@ -1,0 +1,134 @@
+"""Which solution a circuit needs: frozen where its RF network is fast against the switching, ringing where it is not."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from transim.circuit.assemble import RfPort
+from transim.envelope.frozen import solve_frozen
+from transim.envelope.junction import Array
+from transim.envelope.linearise import Network
+from transim.envelope.ringing import solve_ringing
+from transim.envelope.scatter import Scattering
+
+__all__ = ["Envelope", "Transition", "solve_envelope"]
+
+#: Frozen is left where the group delay exceeds this share of the fastest RF transition.
+_SLOW = 0.02
+#: The delay counts where the transmission is at least this share of its largest value.
+_PASSING = 0.3
+
+
+@dataclass(frozen=True)
+class Transition:
+    """Group delay of the RF network against the fastest 10 to 90 % change of its transmission [s]."""
+
+    group_delay: float
+    fastest: float
+
+    @property
+    def slow_network(self) -> bool:
+        """Whether the network itself takes part in the transition."""
+        return self.group_delay > _SLOW * self.fastest
+
+
+@dataclass(frozen=True)
+class Envelope:
+    """S against time with the method used for each carrier, and why.
+
+    Attributes
+    ----------
+    time : ndarray, shape (n,)
+        Time [s].
+    s : ndarray, shape (f, n, p, p)
+        S-parameters of each carrier.
+    methods, reasons : tuple of str
+        ``frozen`` or ``ringing`` for each carrier, and the ground for it.
+    """
+
+    time: Array
+    s: npt.NDArray[np.complex128]
+    methods: tuple[str, ...]
+    reasons: tuple[str, ...]
+
+
+def solve_envelope(
+    network: Network, ports: Sequence[RfPort], frequency: Sequence[float], pair: tuple[int, int], wanted: str = "auto"
+) -> Envelope:
+    """Solve a network for all carriers, each by the method that it needs.
+
+    Parameters
+    ----------
+    network : Network
+        Linearised along the video run, n points.
+    ports : sequence of RfPort
+        p ports.
+    frequency : sequence of float
+        f carriers [Hz].
+    pair : tuple of int
+        Place of the port that RF enters and of the one that it leaves.
+    wanted : {"auto", "frozen", "ringing"}
+        Method, or the choice by group delay.
+
+    Returns
+    -------
+    Envelope
+
+    Raises
+    ------
+    LinearisationError
+        If the network is singular.
+    """
+    frozen = solve_frozen(network, ports, frequency)
+    methods, reasons = [], []
+    for k, carrier in enumerate(frequency):
+        transition = _transition(network, ports, carrier, pair, frozen.s[k])
+        methods.append(wanted if wanted != "auto" else ("ringing" if transition.slow_network else "frozen"))
+        share = transition.group_delay / transition.fastest if np.isfinite(transition.fastest) else 0.0
+        reason = f"group delay is {100.0 * share:.2g} % of the fastest RF transition"
+        reasons.append(reason if wanted == "auto" else f"as requested; {reason}")
+    s = frozen.s
+    slow = [k for k, method in enumerate(methods) if method == "ringing"]
+    if slow:
+        ringing: Scattering = solve_ringing(network, ports, [frequency[k] for k in slow])
+        s = s.copy()
+        s[slow] = ringing.s
+    return Envelope(network.time, s, tuple(methods), tuple(reasons))
+
+
+def _transition(
+    network: Network, ports: Sequence[RfPort], carrier: float, pair: tuple[int, int], s: npt.NDArray[np.complex128]
+) -> Transition:
+    level = np.abs(s[:, pair[1], pair[0]])
+    top = float(level.max())
+    fastest = min(_shortest(network.time, level / top), _shortest(network.time, 1.0 - level / top))
+    passing = np.flatnonzero(level >= _PASSING * top)
+    sample = passing[np.unique(np.linspace(0, passing.size - 1, 32).astype(int))]
+    delay = float(_group_delay(network.at(sample), ports, carrier, pair).max())
+    return Transition(delay, fastest)
+
+
+def _shortest(time: Array, level: Array) -> float:
+    """Return the shortest time from below 0.1 to above 0.9 of a level [s]; infinite without such a change."""
+    shortest = np.inf
+    low = -1
+    for k in np.flatnonzero((level <= 0.1) | (level >= 0.9)):
+        if level[k] <= 0.1:
+            low = int(k)
+        elif low >= 0:
+            shortest = min(shortest, float(time[k] - time[low]))
+            low = -1
+    return shortest
+
+
+def _group_delay(network: Network, ports: Sequence[RfPort], carrier: float, pair: tuple[int, int]) -> Array:
+    """Return |d ln S / dw| at every time point [s]: group delay, amplitude slope included."""
+    spread = 1e-4
+    both = solve_frozen(network, ports, [carrier * (1.0 - spread), carrier * (1.0 + spread)])
+    through = both.s[:, :, pair[1], pair[0]]
+    middle = 0.5 * (through[0] + through[1])
+    return np.asarray(np.abs((through[1] - through[0]) / middle) / (2.0 * np.pi * carrier * 2.0 * spread))

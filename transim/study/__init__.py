@@ -1,0 +1,1 @@
+"""Runs of a design: one driver, carrier and temperature after the other, measured and judged."""
