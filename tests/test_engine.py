@@ -397,6 +397,13 @@ def test_failure_in_the_log_counts_beside_exit_status_0(tmp_path: Path) -> None:
     assert "at 5e-07 s of 1e-06 s" in error.message
 
 
+def test_time_reached_is_not_that_of_an_earlier_transient(tmp_path: Path) -> None:
+    text = "doAnalyses: TRAN:  Timestep too small; initial timepoint: cause unrecorded."
+    error = verdict(tmp_path, f"echo {shlex.quote(text)} >&2", plots=(transient(),))
+    assert isinstance(error, ConvergenceError)
+    assert error.time_reached is None
+
+
 def test_words_of_a_title_are_no_failure(tmp_path: Path) -> None:
     line = "echo 'Circuit: * doAnalyses: timestep too small, simulation(s) aborted'"
     assert stand_in(tmp_path, 'cp "$RAW" "$4"', line).run(DECK, stop_time=1e-6).plots
@@ -490,11 +497,12 @@ def test_warnings_are_no_failure() -> None:
 
 def test_tail_has_what_matters() -> None:
     text = (
-        "first\n" + "Error: 1 out of range\n" * 50 + "".join(f"line {n}\n" for n in range(11))
+        "first\n" + "".join(f"line {n}\n" for n in range(11)) + "Error: 1 out of range\n" * 50
         + "Trying gmin =   1.0000E-03 Note: One successful gmin step\n\n"
-        "Total elapsed time (seconds) = 0.005 \nTotal DRAM available = 24105.062 MB.\nDRAM currently available = 23795.336 MB.\n"
+        "Total elapsed time (seconds) = 0.005 \nTotal DRAM available = 24105.062 MB.\n"
+        "DRAM currently available = 23795.336 MB.\n"
         "Maximum ngspice program size =   21.859 MB.\nCurrent ngspice program size =   12.164 MB.\n"
         "Shared ngspice pages =   10.473 MB.\nText (code) pages =    5.430 MB.\nStack = 0 bytes.\n"
         "Library pages =    2.117 MB.\n"
     )
-    assert log_tail(text).splitlines() == ["Error: 1 out of range", *(f"line {n}" for n in range(11))]
+    assert log_tail(text).splitlines() == [*(f"line {n}" for n in range(11)), "Error: 1 out of range"]

@@ -4,7 +4,7 @@ import itertools
 import tomllib
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from transim.design.locate import Locations, Place, dotted, split_dotted
@@ -72,7 +72,7 @@ PLACES = {
 
 
 def all_paths(value, path=()):
-    """Every key path of a document that the standard library has read."""
+    """Go through every key path of a document that the standard library has read."""
     if path:
         yield path
     if isinstance(value, dict):
@@ -105,7 +105,9 @@ def test_missing_key_is_found_at_its_innermost_table():
     assert locations.find("nothing") is None
 
 
-@pytest.mark.parametrize("text", ["a = 1\nb = [1, \nc = ]", "a = 1\nb 2", 'a = 1\nb = "open', "a = 1\n[x\ny = 3"])
+@pytest.mark.parametrize(
+    "text", ["a = 1\nb = [1, \nc = ]", "a = 1\nb 2", 'a = 1\nb = "open', "a = 1\n[x\ny = 3"]
+)
 def test_invalid_text_gives_what_stands_before_the_fault(text):
     assert Locations(text).exactly("a") == Place(1, 1)
 
@@ -123,53 +125,65 @@ def test_dotted_key_reads_back(path):
     assert split_dotted(dotted(path)) == tuple(path)
 
 
-@st.composite
-def documents(draw):
-    """Draw a TOML text in which every number is different."""
-    counter = itertools.count(1000)
+class Writer:
+    """Writes a drawn TOML text in which every number is different."""
 
-    def quote(key):
-        plain = dotted((key,))
-        if draw(st.booleans()) and "'" not in key and key.isprintable():
-            return f"'{key}'"
-        return plain
+    def __init__(self, draw):
+        self.draw = draw
+        self.counter = itertools.count(1000)
 
-    def blank():
-        return draw(st.sampled_from(["", " ", "\n", " # ] } [x]\n", "\n\t"]))
+    def key(self, key):
+        literal = self.draw(st.booleans()) and "'" not in key and key.isprintable()
+        return f"'{key}'" if literal else dotted((key,))
 
-    def value(depth):
-        kind = draw(st.integers(0, 5 if depth else 3))
-        if kind <= 2:
-            return str(next(counter))
-        if kind == 3:
-            return draw(st.sampled_from(ODD_TEXTS))
+    def blank(self):
+        return self.draw(st.sampled_from(["", " ", "\n", " # ] } [x]\n", "\n\t"]))
+
+    def array(self, depth):
+        items = [
+            self.blank() + self.value(depth - 1) + self.blank() for _ in range(self.draw(st.integers(0, 3)))
+        ]
+        return "[" + ",".join(items) + self.blank() + "]"
+
+    def inline_table(self, depth):
+        names = self.draw(st.lists(keys, max_size=3, unique=True))
+        return "{ " + ", ".join(f"{self.key(name)} = {self.value(depth - 1)}" for name in names) + " }"
+
+    def value(self, depth):
+        kind = self.draw(st.integers(0, 5 if depth else 3))
+        if kind == 5:
+            return self.inline_table(depth)
         if kind == 4:
-            items = [f"{blank()}{value(depth - 1)}{blank()}" for _ in range(draw(st.integers(0, 3)))]
-            return "[" + ",".join(items) + blank() + "]"
-        names = draw(st.lists(keys, max_size=3, unique=True))
-        return "{ " + ", ".join(f"{quote(name)} = {value(depth - 1)}" for name in names) + " }"
+            return self.array(depth)
+        return self.draw(st.sampled_from(ODD_TEXTS)) if kind == 3 else str(next(self.counter))
 
-    def body(indent):
+    def body(self, indent):
         lines = []
-        for name in draw(st.lists(keys, max_size=4, unique=True)):
-            left = quote(name)
-            if draw(st.booleans()):
-                left += draw(st.sampled_from([".", " . "])) + quote(draw(keys))
-            lines.append(f"{indent}{left}{draw(st.sampled_from(['=', ' = ']))}{value(2)}")
-            lines.append(draw(st.sampled_from(["", "# comment = 1", "\t"])))
+        for name in self.draw(st.lists(keys, max_size=4, unique=True)):
+            left = self.key(name)
+            if self.draw(st.booleans()):
+                left += self.draw(st.sampled_from([".", " . "])) + self.key(self.draw(keys))
+            lines.append(f"{indent}{left}{self.draw(st.sampled_from(['=', ' = ']))}{self.value(2)}")
+            lines.append(self.draw(st.sampled_from(["", "# comment = 1", "\t"])))
         return lines
 
-    lines = body("")
+
+@st.composite
+def documents(draw):
+    """Draw a TOML text with tables, arrays of tables and tables inside these."""
+    writer = Writer(draw)
+    lines = writer.body("")
     for number in range(draw(st.integers(0, 4))):
-        name = f"table{number}.{quote(draw(keys))}"
+        name = f"table{number}.{writer.key(draw(keys))}"
         if draw(st.booleans()):
-            lines += [f"[ {name} ]", *body("  ")]
+            lines += [f"[ {name} ]", *writer.body("  ")]
             continue
         for _ in range(draw(st.integers(1, 3))):
-            lines += [f"[[{name}]]", *body(""), f"[{name}.inner-of-array]", *body("")]
+            lines += [f"[[{name}]]", *writer.body(""), f"[{name}.inner-of-array]", *writer.body("")]
     return "\n".join(lines)
 
 
+@settings(max_examples=50)
 @given(documents())
 def test_place_of_every_value_is_where_the_text_has_it(text):
     document = tomllib.loads(text)
@@ -193,7 +207,7 @@ def test_place_of_every_value_is_where_the_text_has_it(text):
 
 
 def key_at(text):
-    """The key at the start of a text, as it is written there."""
+    """Return the key at the start of a text, as it is written there."""
     for end in range(1, len(text) + 1):
         if end < len(text) and text[end] not in " =.]\t":
             continue

@@ -140,6 +140,8 @@ def test_time_reached_is_that_of_the_last_transient(tmp_path: Path) -> None:
     assert time_reached(stored(tmp_path, header() + samples() + spectrum)) == 2e-9
     assert time_reached(stored(tmp_path, spectrum)) is None
     assert time_reached(stored(tmp_path, header(0))) is None
+    assert time_reached(stored(tmp_path, header() + samples() + header(0))) is None
+    assert time_reached(stored(tmp_path, header(0, kind="Values:") + b" 0\t0.0\n\t1.5\n")) is None
     assert time_reached(stored(tmp_path, b"no raw file")) is None
     assert time_reached(tmp_path / "missing.raw") is None
 

@@ -5,7 +5,7 @@ from itertools import pairwise
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import example, given
 from hypothesis import strategies as st
 from scipy.integrate import quad
 from scipy.signal import lsim
@@ -64,16 +64,22 @@ def test_crossing_of_a_level_that_samples_meet(value, rising, falling):
     assert wave.crossings(1.0, "falling").tolist() == falling
 
 
+def interleave(first, second):
+    """Tell whether instants of the two come in turn; rounding may put neighbours on one instant."""
+    if first.size - second.size not in (0, 1):
+        return False
+    both = np.empty(first.size + second.size)
+    both[::2], both[1::2] = first, second
+    return bool(np.all(np.diff(both) >= 0.0))
+
+
 @given(waveforms(), st.floats(-5.5, 5.5))
+@example(Waveform([1.0, 2.0, 3.0, 4.0], [0.0, -1.0, 0.0, -1.0], "V"), -3.8e-178)
 def test_crossings_are_ordered_and_alternate(wave, level):
     rising, falling = wave.crossings(level, "rising"), wave.crossings(level, "falling")
-    both = sorted([(t, 1) for t in rising] + [(t, -1) for t in falling])
     assert all(np.diff(rising) > 0.0)
     assert all(np.diff(falling) > 0.0)
-    assert all(a[0] <= b[0] for a, b in pairwise(both))
-    assert abs(len(rising) - len(falling)) <= 1
-    for a, b in pairwise(both):
-        assert a[1] != b[1] or a[0] == b[0]
+    assert interleave(rising, falling) or interleave(falling, rising)
 
 
 @given(waveforms(), st.floats(-5.5, 5.5))

@@ -76,7 +76,9 @@ class Netlist:
     @property
     def saved(self) -> tuple[str, ...]:
         """Device vectors that the probes need on a ``.save`` card."""
-        vectors = {vector: None for probe in self.probes for _, vector in probe.terms if vector.startswith("@")}
+        vectors = {
+            vector: None for probe in self.probes for _, vector in probe.terms if vector.startswith("@")
+        }
         return tuple(vectors)
 
 
@@ -169,7 +171,9 @@ def _slot(slot: Slot, junction: Junction) -> str:
     used = {p.name for p in junction.part.parameters}
     if junction.model is not None and junction.part.model is not None:
         used -= set(junction.part.model.parameters)
-    values = " ".join(f"{name}={deck_number(junction.values[name])}" for name in junction.values if name in used)
+    values = " ".join(
+        f"{name}={deck_number(junction.values[name])}" for name in junction.values if name in used
+    )
     wires = " ".join(slot.terminals)
     call = f"X1 {' '.join(junction.part.terminals)} {_junction_name(junction)} {values}".rstrip()
     return f"* junction {junction.name}\n.subckt {slot.name} {wires}\n{call}\n.ends\n"
@@ -187,9 +191,14 @@ def _probes(design: Design) -> list[JunctionProbe]:
         slot = slots[words[-1].lower()]
         part = design.switch.junctions[slot.name].part
         instance = words[0].lower()
-        wires = {inner.lower(): _path_node(path, node) for inner, node in zip(part.terminals, words[1:-1], strict=True)}
+        wires = {
+            inner.lower(): _path_node(path, node)
+            for inner, node in zip(part.terminals, words[1:-1], strict=True)
+        }
         for probe in part.probes:
-            terms = tuple((scale, _flattened(vector, f"xpath.{instance}.x1", wires)) for scale, vector in probe.terms)
+            terms = tuple(
+                (scale, _flattened(vector, f"xpath.{instance}.x1", wires)) for scale, vector in probe.terms
+            )
             # ngspice does not save the voltage of ground
             terms = tuple(term for term in terms if term[1] != "v(0)")
             found.append(JunctionProbe(instance, probe.quantity, terms))

@@ -86,7 +86,9 @@ def _quiet_ports(ports: Sequence[RfPort]) -> str:
     return "".join(f"{port.source} e{port.node} 0 DC 0 AC 0\n" for port in ports)
 
 
-def static_deck(netlist: Netlist, control: Control, frequencies: Sequence[float], numerics: Numerics, origin: Origin) -> Deck:
+def static_deck(
+    netlist: Netlist, control: Control, frequencies: Sequence[float], numerics: Numerics, origin: Origin
+) -> Deck:
     """Write the deck of both control states: operating point and S-parameters.
 
     Its raw file holds, for the command low and then high, one operating point and then one AC plot for each
@@ -150,7 +152,12 @@ def static_deck(netlist: Netlist, control: Control, frequencies: Sequence[float]
 
 
 def video_deck(
-    netlist: Netlist, control: Control, timeline: Timeline, numerics: Numerics, origin: Origin, saved: Sequence[str] = ()
+    netlist: Netlist,
+    control: Control,
+    timeline: Timeline,
+    numerics: Numerics,
+    origin: Origin,
+    saved: Sequence[str] = (),
 ) -> Deck:
     """Write the deck of the control pulse without RF.
 
@@ -250,7 +257,11 @@ def carrier_deck(
 
 
 def bias_check_deck(
-    circuit: Circuit, bias: Mapping[str, float], ports: Sequence[RfPort], frequencies: Sequence[float], origin: Origin
+    circuit: Circuit,
+    bias: Mapping[str, float],
+    ports: Sequence[RfPort],
+    frequencies: Sequence[float],
+    origin: Origin,
 ) -> Deck:
     """Write a deck in which ngspice itself linearises the circuit at a given bias.
 
@@ -287,7 +298,9 @@ def bias_check_deck(
             number = deck_number(frequency)
             steps += [f"ac lin 1 {number} {number}", f"write check.raw {nodes}"]
         steps.append(f"alter {port.source} acmag = 0")
-    what = ["Check: the flattened circuit at the bias of one instant of the video run, every junction held at it; AC at each port."]
+    what = [
+        "Check: the flattened circuit at the bias of one instant of the video run, every junction held at it; AC at each port."
+    ]
     text = (
         _head("check", origin, what, True)
         + "\n".join(line for line in body if line)
@@ -338,7 +351,13 @@ class _Twins:
             if device.name == name:
                 words = line.split()
                 count = len(device.nodes)
-                return " ".join([words[0], *(self.twin(word.lower()) for word in words[1 : count + 1]), *words[count + 1 :]])
+                return " ".join(
+                    [
+                        words[0],
+                        *(self.twin(word.lower()) for word in words[1 : count + 1]),
+                        *words[count + 1 :],
+                    ]
+                )
         for source in circuit.behaviourals:
             if source.name == name:
                 return self._behavioural(source)
@@ -347,11 +366,14 @@ class _Twins:
     def _behavioural(self, source: Behavioural) -> str:
         law = source.law
         held = law.with_probes(
-            lambda node: f"v({self.twin(node)})", lambda name: f"(i({name}) + {deck_number(self.bias[f'i({name})'])})"
+            lambda node: f"v({self.twin(node)})",
+            lambda name: f"(i({name}) + {deck_number(self.bias[f'i({name})'])})",
         )
         plus, minus = source.nodes
         if source.quantity == "i":
             return f"{source.name} {self.twin(plus)} {self.twin(minus)} i = {held}"
         # the output of a voltage source stays in the circuit, less its bias, so that the circuit itself has none
-        offset = (0.0 if plus == "0" else self.bias[f"v({plus})"]) - (0.0 if minus == "0" else self.bias[f"v({minus})"])
+        offset = (0.0 if plus == "0" else self.bias[f"v({plus})"]) - (
+            0.0 if minus == "0" else self.bias[f"v({minus})"]
+        )
         return f"{source.name} {plus} {minus} v = ({held}) - ({deck_number(offset)})"

@@ -10,8 +10,8 @@ import re
 from collections.abc import Mapping
 from dataclasses import dataclass
 
-from transim.errors import LinearisationError, NetlistError
 from transim.circuit.expression import Expression, ExpressionError, parse_expression, spice_number
+from transim.errors import LinearisationError, NetlistError
 
 __all__ = ["Behavioural", "Circuit", "Coupling", "Device", "Element", "Model", "read_listing"]
 
@@ -121,7 +121,8 @@ class Circuit:
     def nodes(self) -> tuple[str, ...]:
         """Every node except ground, in order of appearance."""
         seen: dict[str, None] = {}
-        for part in (*self.elements, *self.devices, *self.behaviourals):
+        parts: tuple[Element | Device | Behavioural, ...] = (*self.elements, *self.devices, *self.behaviourals)
+        for part in parts:
             for node in part.nodes:
                 seen.setdefault(node)
         seen.pop("0", None)
@@ -170,10 +171,17 @@ def read_listing(log: str) -> Circuit:
         except (ValueError, IndexError, KeyError) as error:
             refused.append(LinearisationError(line.split()[0], f"cannot read its line {line!r} ({error})"))
             continue
-        for kind, home in ((Element, elements), (Coupling, couplings), (Device, devices), (Behavioural, behaviourals)):
+        for kind, home in (
+            (Element, elements),
+            (Coupling, couplings),
+            (Device, devices),
+            (Behavioural, behaviourals),
+        ):
             if isinstance(part, kind):
                 home.append(part)  # type: ignore[arg-type]
-    return Circuit(tuple(elements), tuple(couplings), tuple(devices), tuple(behaviourals), tuple(refused), lines)
+    return Circuit(
+        tuple(elements), tuple(couplings), tuple(devices), tuple(behaviourals), tuple(refused), lines
+    )
 
 
 def _read_model(line: str) -> Model | None:
@@ -237,7 +245,9 @@ def _read_element(line: str, models: Mapping[str, Model]) -> Element | Coupling 
         return Element(name, tuple(map(_node, plain[1:5])), spice_number(plain[5]))
     if letter in "rlc":
         return _read_passive(name, words)
-    raise LinearisationError(name.upper(), f"element letter {letter.upper()!r} is not known to the envelope solver")
+    raise LinearisationError(
+        name.upper(), f"element letter {letter.upper()!r} is not known to the envelope solver"
+    )
 
 
 def _read_passive(name: str, words: list[str]) -> Element:

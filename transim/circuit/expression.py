@@ -18,7 +18,19 @@ __all__ = ["Dual", "Expression", "ExpressionError", "parse_expression", "spice_n
 
 Array = npt.NDArray[np.float64]
 
-_SUFFIX = {"t": 1e12, "g": 1e9, "meg": 1e6, "k": 1e3, "mil": 25.4e-6, "m": 1e-3, "u": 1e-6, "n": 1e-9, "p": 1e-12, "f": 1e-15, "a": 1e-18}
+_SUFFIX = {
+    "t": 1e12,
+    "g": 1e9,
+    "meg": 1e6,
+    "k": 1e3,
+    "mil": 25.4e-6,
+    "m": 1e-3,
+    "u": 1e-6,
+    "n": 1e-9,
+    "p": 1e-12,
+    "f": 1e-15,
+    "a": 1e-18,
+}
 _NUMBER = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)([a-zA-Z]*)$")
 _TOKEN = re.compile(
     r"\s*(?:(?P<probe>[vi]\s*\([^()]*\))|(?P<number>(?:\d+\.?\d*|\.\d+)(?:e[+-]?\d+)?[a-z]*)"
@@ -215,7 +227,7 @@ def _signed_power(x: Dual, y: Dual) -> Dual:
     return _linear([(by_base, x), (sign, plain)], sign * plain.value)
 
 
-def _choose(condition: Array, x: Dual, y: Dual) -> Dual:
+def _choose(condition: npt.NDArray[np.bool_], x: Dual, y: Dual) -> Dual:
     first = np.where(condition, 1.0, 0.0)
     return _linear([(first, x), (1 - first, y)], np.where(condition, x.value, y.value))
 

@@ -69,7 +69,7 @@ class Timeline:
         )
 
 
-def timeline_of(design: Design, *, settle: float = 0.0) -> Timeline:
+def timeline_of(design: Design, *, settle: float = 0.0, overrun: float = 0.0) -> Timeline:
     """Lay out a design's command in time.
 
     Parameters
@@ -78,6 +78,8 @@ def timeline_of(design: Design, *, settle: float = 0.0) -> Timeline:
         With its control table.
     settle : float
         Shortest time before the first edge [s], for carriers that have to settle first.
+    overrun : float
+        Time to run on after the judged cycle [s].
 
     Returns
     -------
@@ -87,5 +89,5 @@ def timeline_of(design: Design, *, settle: float = 0.0) -> Timeline:
     control = design.control
     lead = max(control.on_for / 50.0 + control.edge, settle)
     last = min(control.period, _LONGEST * control.on_for)
-    stop = lead + (control.pulses - 1) * control.period + last - control.edge
-    return Timeline(lead, control.edge, control.on_for, control.period, control.pulses, stop)
+    stop = lead + (control.pulses - 1) * control.period + last - control.edge / 2.0
+    return Timeline(lead, control.edge, control.on_for, control.period, control.pulses, stop + overrun)

@@ -31,10 +31,13 @@ class Failure:
         What happened and what to change.
     converged : bool
         False where there was no solution; True where the deck itself was refused.
+    time : float or None
+        Time at which a transient was given up [s], to the six digits that are printed.
     """
 
     message: str
     converged: bool
+    time: float | None = None
 
 
 def log_tail(log: str) -> str:
@@ -69,7 +72,9 @@ def find_failure(errors: str) -> Failure | None:
     # A missing vector is often only what an aborted analysis leaves, so convergence comes first.
     abort = _NO_SOLUTION.search(errors)
     if abort is not None:
-        return Failure(_no_solution(abort["analysis"], abort["detail"], errors), converged=False)
+        message = _no_solution(abort["analysis"], abort["detail"], errors)
+        given_up = re.search(r"; time = ([-+.\deE]+)", abort["detail"])
+        return Failure(message, converged=False, time=float(given_up[1]) if given_up else None)
     for pattern, message in _REJECTIONS:
         match = pattern.search(errors)
         if match is not None:

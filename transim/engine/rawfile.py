@@ -168,12 +168,13 @@ def time_reached(path: Path) -> float | None:
     """
     try:
         with _open(path) as stream:
-            found = [s for s in _scan(stream, path) if s.points and s.names[0] == "time"]
-            if not found:
+            found = [section for section in _scan(stream, path) if section.names[0] == "time"]
+            if not found or not found[-1].points:
                 return None
             last = found[-1]
             if not last.binary:
-                return float(_load(stream, last, path)["time"][-1].real)
+                times = _load(stream, last, path)["time"]
+                return float(times[-1].real) if len(times) else None
             stream.seek(last.start + (last.points - 1) * last.row_bytes)
             return float(np.fromfile(stream, np.float64, 1)[0])
     except RawFileError:
@@ -290,10 +291,8 @@ def _placed(section: _Section, stream: BinaryIO, path: Path) -> _Section:
             raise _cut_short(path, section, (section.end - section.start) // section.row_bytes)
         return replace(section, end=end)
     end = _next_plot(stream, section)
-    # Every text sample takes at least two characters a value, so an absurd count is caught here.
+    # Text rows are counted when they are read; until then this is only an upper limit of them.
     rows = (end - section.start) // (section.row_bytes if section.binary else 2 * len(section.names))
-    if section.complete and section.points > rows:
-        raise _cut_short(path, section, rows)
     return replace(section, end=end, points=section.points or rows)
 
 

@@ -95,10 +95,10 @@ def check_end(attempt: Attempt, errors: str, timeout: float) -> None:
     if failure is not None and failure.converged:
         raise DeckRejected(f"ngspice refused {deck}: {failure.message}", **attempt.context)
     if failure is not None:
-        reached = time_reached(attempt.raw)
+        # Not from the raw file: its last transient may be another one that came to its end.
         raise ConvergenceError(
-            f"ngspice stopped in {deck}{_progress(reached, stop)}: {failure.message}",
-            time_reached=reached,
+            f"ngspice stopped in {deck}{_progress(failure.time, stop)}: {failure.message}",
+            time_reached=failure.time,
             stop=stop,
             **attempt.context,
         )
@@ -136,7 +136,7 @@ def check_plots(attempt: Attempt, plots: tuple[Plot, ...]) -> None:
             )
         if "v()" in plot.names:
             raise DeckRejected(f"an element of {deck} lacks a node; complete its line", **attempt.context)
-        if not plot.complete or not len(plot.data):
+        if not plot.complete:
             raise RawFileError(
                 f"'{plot.name}' of {deck} was not written to its end; is the disk full?", **attempt.context
             )

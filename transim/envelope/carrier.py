@@ -47,7 +47,9 @@ def extract_envelope(
     window = np.ones(2 * half + 1)
     window[[0, -1]] = 0.5
     sums = np.concatenate([[0.0], np.cumsum(envelope)])
-    middle = sums[2 * half + 1 :] - sums[: -2 * half - 1] - 0.5 * (envelope[: -2 * half] + envelope[2 * half :])
+    middle = (
+        sums[2 * half + 1 :] - sums[: -2 * half - 1] - 0.5 * (envelope[: -2 * half] + envelope[2 * half :])
+    )
     stride = max(1, points // 4)
     return grid[half:-half][::stride], (middle / window.sum())[::stride]
 

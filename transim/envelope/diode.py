@@ -8,8 +8,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from transim.circuit.elements import Device
-from transim.errors import LinearisationError
 from transim.envelope.junction import GMIN, Array, Depletion, exponential, saturation_factor, thermal_voltage
+from transim.errors import LinearisationError
 
 __all__ = ["DiodeLaw"]
 
@@ -56,7 +56,9 @@ class DiodeLaw:
 
     def __init__(self, device: Device, temperature: float) -> None:
         given = {_ALIASES.get(key, key): value for key, value in device.model.parameters.items()}
-        used = sorted(key for key in given if key in _UNKNOWN) + sorted(set(device.parameters) - {"area", "m"})
+        used = sorted(key for key in given if key in _UNKNOWN) + sorted(
+            set(device.parameters) - {"area", "m"}
+        )
         if given.get("level", 1.0) != 1.0:
             used.append("level")
         if used:
@@ -70,7 +72,10 @@ class DiodeLaw:
         factor = saturation_factor(kelvin, nominal, card["eg"], card["xti"]) / card["n"]
         saturation = card["is"] * size * math.exp(factor)
         self._scaled = _Scaled(
-            saturation, card["n"] * vt, card["ikf"] * size, _breakdown(card["bv"], card["ibv"] * size, saturation, vt)
+            saturation,
+            card["n"] * vt,
+            card["ikf"] * size,
+            _breakdown(card["bv"], card["ibv"] * size, saturation, vt),
         )
         self._vt = vt
         self._transit = card["tt"]

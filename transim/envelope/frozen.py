@@ -100,7 +100,9 @@ def _kept(network: Network, ports: Sequence[RfPort]) -> npt.NDArray[np.intp]:
     return np.array(sorted(set(range(network.size)) - rest), dtype=np.intp)
 
 
-def _solve_at(network: Network, ports: Sequence[RfPort], omega: complex, kept: npt.NDArray[np.intp]) -> Complex:
+def _solve_at(
+    network: Network, ports: Sequence[RfPort], omega: complex, kept: npt.NDArray[np.intp]
+) -> Complex:
     """Return S at every time point, shape (n, p, p), for one j w; unknowns that are not kept are eliminated once."""
     right = excitation(network, ports)
     matrix = network.constant_g + omega * network.constant_c
@@ -110,7 +112,9 @@ def _solve_at(network: Network, ports: Sequence[RfPort], omega: complex, kept: n
         if np.linalg.cond(inner) > _WORST_CONDITION:
             kept = np.arange(network.size)
         else:
-            matrix[np.ix_(kept, kept)] -= matrix[np.ix_(kept, rest)] @ np.linalg.solve(inner, matrix[np.ix_(rest, kept)])
+            matrix[np.ix_(kept, kept)] -= matrix[np.ix_(kept, rest)] @ np.linalg.solve(
+                inner, matrix[np.ix_(rest, kept)]
+            )
     matrix = matrix[np.ix_(kept, kept)]
     rows, columns = np.searchsorted(kept, network.rows), np.searchsorted(kept, network.columns)
     varying = network.varying_g + omega * network.varying_c

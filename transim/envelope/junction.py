@@ -117,5 +117,7 @@ class Depletion:
 def _potential_law(kelvin: float) -> tuple[float, float]:
     """Return factor and shift by which a built-in potential at 300.15 K becomes that at `kelvin`."""
     ratio = kelvin / REFERENCE
-    gap = -band_gap(kelvin) / (2.0 * BOLTZMANN * kelvin / CHARGE) + 1.1150877 / (2.0 * thermal_voltage(REFERENCE))
+    gap = -band_gap(kelvin) / (2.0 * BOLTZMANN * kelvin / CHARGE) + 1.1150877 / (
+        2.0 * thermal_voltage(REFERENCE)
+    )
     return ratio, -2.0 * thermal_voltage(kelvin) * (1.5 * math.log(ratio) + gap)

@@ -15,10 +15,10 @@ import numpy as np
 import numpy.typing as npt
 
 from transim.circuit.elements import Behavioural, Circuit, Coupling, Device, Element
-from transim.errors import LinearisationError, RawFileError
 from transim.envelope.diode import DiodeLaw
 from transim.envelope.junction import Array
 from transim.envelope.transistor import TransistorLaw
+from transim.errors import LinearisationError, RawFileError
 
 __all__ = ["Bias", "Network", "linearise", "saved_vectors"]
 
@@ -32,7 +32,9 @@ _SMALL_C = 1e-17
 
 def saved_vectors(circuit: Circuit) -> tuple[str, ...]:
     """Return the device vectors that the linearisation needs in the video run, as on a ``.save`` card."""
-    return tuple(f"@{device.name}[{name}]" for device in circuit.devices for name in _DEVICE_VECTORS[device.name[0]])
+    return tuple(
+        f"@{device.name}[{name}]" for device in circuit.devices for name in _DEVICE_VECTORS[device.name[0]]
+    )
 
 
 class Bias:
@@ -114,7 +116,7 @@ class Network:
     @property
     def size(self) -> int:
         """Number of unknowns."""
-        return self.constant_g.shape[0]
+        return len(self.unknowns)
 
     def at(self, points: npt.NDArray[np.intp]) -> Network:
         """Return the same network at some of its time points only."""
@@ -122,7 +124,6 @@ class Network:
             self.unknowns, self.constant_g, self.constant_c, self.rows, self.columns,
             self.varying_g[points], self.varying_c[points], self.time[points],
         )  # fmt: skip
-
 
     def scaled_changes(self) -> Array:
         """Return every entry that changes on a scale where equal distances are equal shares, shape (n, k or less).
@@ -155,7 +156,14 @@ class Network:
             varying.append(small * np.sinh(np.stack(between, axis=1)) if between else values[:0])
         time = np.interp(position, place, self.time)
         return Network(
-            self.unknowns, self.constant_g, self.constant_c, self.rows, self.columns, varying[0], varying[1], time
+            self.unknowns,
+            self.constant_g,
+            self.constant_c,
+            self.rows,
+            self.columns,
+            varying[0],
+            varying[1],
+            time,
         )
 
 
@@ -218,7 +226,14 @@ class _Stamps:
                     varying[kind][:, k] = table[place]
         index = np.array(places, dtype=np.intp).reshape(-1, 2)
         return Network(
-            dict(self.unknowns), fixed["g"], fixed["c"], index[:, 0], index[:, 1], varying["g"], varying["c"], time
+            dict(self.unknowns),
+            fixed["g"],
+            fixed["c"],
+            index[:, 0],
+            index[:, 1],
+            varying["g"],
+            varying["c"],
+            time,
         )
 
 
@@ -303,7 +318,9 @@ def _stamp_current_control(stamps: _Stamps, element: Element) -> None:
         return
     key = f"i:{element.source}"
     if key not in stamps.unknowns:
-        raise LinearisationError(element.name.upper(), f"its controlling source {element.source} has no current")
+        raise LinearisationError(
+            element.name.upper(), f"its controlling source {element.source} has no current"
+        )
     column = stamps.unknowns[key]
     if element.name[0] == "f":
         stamps.add(stamps.node(element.nodes[0]), column, element.value)
@@ -369,7 +386,9 @@ def _stamp_behavioural(stamps: _Stamps, source: Behavioural, bias: Bias, tempera
     try:
         dual = law.evaluate(bias.probes(law.nodes, law.sources), {"temper": temperature})
     except RawFileError as error:
-        raise LinearisationError(source.name.upper(), f"its control is not known ({error.message})") from error
+        raise LinearisationError(
+            source.name.upper(), f"its control is not known ({error.message})"
+        ) from error
     plus, minus = source.nodes
     row = stamps.branch(source.name, plus, minus) if source.quantity == "v" else -1
     for key, slope in dual.partial.items():

@@ -57,7 +57,11 @@ class Envelope:
 
 
 def solve_envelope(
-    network: Network, ports: Sequence[RfPort], frequency: Sequence[float], pair: tuple[int, int], wanted: str = "auto"
+    network: Network,
+    ports: Sequence[RfPort],
+    frequency: Sequence[float],
+    pair: tuple[int, int],
+    wanted: str = "auto",
 ) -> Envelope:
     """Solve a network for all carriers, each by the method that it needs.
 
@@ -101,7 +105,11 @@ def solve_envelope(
 
 
 def _transition(
-    network: Network, ports: Sequence[RfPort], carrier: float, pair: tuple[int, int], s: npt.NDArray[np.complex128]
+    network: Network,
+    ports: Sequence[RfPort],
+    carrier: float,
+    pair: tuple[int, int],
+    s: npt.NDArray[np.complex128],
 ) -> Transition:
     level = np.abs(s[:, pair[1], pair[0]])
     top = float(level.max())

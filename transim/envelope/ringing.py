@@ -70,7 +70,9 @@ def solve_ringing(network: Network, ports: Sequence[RfPort], frequency: Sequence
         one = (1.0 + ratio) / step
         two = -ratio * ratio / (1.0 + ratio) / step
         conductance, capacitance = at(point)
-        x = solve_linear(conductance + (omega + lead) * capacitance, right + one * charge[0] + two * charge[1])
+        x = solve_linear(
+            conductance + (omega + lead) * capacitance, right + one * charge[0] + two * charge[1]
+        )
         s[:, point] = scatter(network, ports, x)
         charge = [capacitance @ x, charge[0]]
         previous_step = step

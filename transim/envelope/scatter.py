@@ -9,8 +9,8 @@ import numpy as np
 import numpy.typing as npt
 
 from transim.circuit.assemble import RfPort
-from transim.errors import LinearisationError
 from transim.envelope.linearise import Network
+from transim.errors import LinearisationError
 
 __all__ = ["Complex", "Scattering", "excitation", "scatter", "solve_linear"]
 
@@ -58,4 +58,6 @@ def solve_linear(matrices: Complex, right: Complex) -> Complex:
     try:
         return np.asarray(np.linalg.solve(matrices, right))
     except np.linalg.LinAlgError as error:
-        raise LinearisationError("circuit", "the linearised network is singular (a node without connection)") from error
+        raise LinearisationError(
+            "circuit", "the linearised network is singular (a node without connection)"
+        ) from error

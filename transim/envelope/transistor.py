@@ -8,8 +8,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from transim.circuit.elements import Device
-from transim.errors import LinearisationError
 from transim.envelope.junction import GMIN, Array, Depletion, exponential, saturation_factor, thermal_voltage
+from transim.errors import LinearisationError
 
 __all__ = ["TransistorLaw", "TransistorSmallSignal"]
 
@@ -85,7 +85,8 @@ class TransistorLaw:
             used.append("cjs with a substrate node")
         if used:
             raise LinearisationError(
-                device.name.upper(), f"transistor parameter {used[0]} is not linearised; use the carrier analysis"
+                device.name.upper(),
+                f"transistor parameter {used[0]} is not linearised; use the carrier analysis",
             )
         card = {**_DEFAULTS, **{key: value for key, value in given.items() if key in _DEFAULTS}}
         self._card = card
@@ -111,7 +112,9 @@ class TransistorLaw:
         """Return the collector to substrate capacitance [F] at substrate less collector voltage `v` [V]."""
         return self._cs.capacitance(v)
 
-    def _base_charge(self, vbe: Array, vbc: Array, forward: tuple[Array, Array], reverse: tuple[Array, Array]) -> tuple[Array, Array, Array]:
+    def _base_charge(
+        self, vbe: Array, vbc: Array, forward: tuple[Array, Array], reverse: tuple[Array, Array]
+    ) -> tuple[Array, Array, Array]:
         """Return qb and its slopes with vbe and vbc."""
         card = self._card
         inverse_forward = 1.0 / card["vaf"] if card["vaf"] else 0.0

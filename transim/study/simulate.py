@@ -20,7 +20,7 @@ from transim.engine.rawfile import Plot
 from transim.envelope.carrier import extract_envelope
 from transim.envelope.junction import Array
 from transim.envelope.linearise import Bias, linearise, saved_vectors
-from transim.envelope.method import Envelope, solve_envelope
+from transim.envelope.method import solve_envelope
 from transim.envelope.stationary import Complex, largest_difference, read_scattering
 from transim.measure.limits import Judgement, Verdict, judge, verdict
 from transim.measure.metrics import Figure, extract
@@ -116,7 +116,9 @@ class _Case:
         self.temperature = temperature
         self.netlist: Netlist = assemble(design, driver)
         self.timeline: Timeline = timeline_of(design)
-        self.origin = Origin(design.title, Path(design.source.path or "design").name, driver.name, temperature)
+        self.origin = Origin(
+            design.title, Path(design.source.path or "design").name, driver.name, temperature
+        )
         self.decks: list[Deck] = []
         self.seconds = 0.0
 
@@ -135,11 +137,16 @@ class _Case:
     def static(self) -> tuple[Circuit, Complex]:
         """Return the flattened circuit and S in both states, shape (2, f, p, p), command low first."""
         design = self.design
-        deck = static_deck(self.netlist, design.control, design.carrier.frequency, design.numerics, self.origin)
+        deck = static_deck(
+            self.netlist, design.control, design.carrier.frequency, design.numerics, self.origin
+        )
         done = self.run(deck)
         plots = [plot for plot in done.plots if plot.name.startswith("AC")]
         half = len(plots) // 2
-        states = [read_scattering(some, self.netlist.ports, design.carrier.frequency) for some in (plots[:half], plots[half:])]
+        states = [
+            read_scattering(some, self.netlist.ports, design.carrier.frequency)
+            for some in (plots[:half], plots[half:])
+        ]
         return read_listing(done.log), np.stack(states)
 
     def video(self, saved: Sequence[str]) -> Plot:
@@ -158,14 +165,19 @@ class _Case:
     def carrier(self, frequency: float) -> tuple[Timeline, Waveform]:
         """Return the timeline of carrier-resolved runs and the complex S21 that they give."""
         design, netlist = self.design, self.netlist
-        timeline = timeline_of(design, settle=_SETTLING_PERIODS / frequency)
+        timeline = timeline_of(design, settle=_SETTLING_PERIODS / frequency, overrun=2.0 / frequency)
         # available power of a source of amplitude E behind Z0 is E^2 / 8 Z0
         watts = 1e-3 * 10.0 ** (design.carrier.level / 10.0)
         amplitude = float(np.sqrt(8.0 * watts * design.carrier.impedance))
         first, second = netlist.through
         decks = [
             carrier_deck(
-                netlist, design.control, timeline, design.numerics, self.origin, Tone(frequency, size, phase, first)
+                netlist,
+                design.control,
+                timeline,
+                design.numerics,
+                self.origin,
+                Tone(frequency, size, phase, first),
             )
             for size, phase in ((amplitude, 0.0), (amplitude, 90.0), (0.0, 0.0))
         ]
@@ -177,7 +189,9 @@ class _Case:
         return timeline, Waveform(time, 2.0 * envelope / amplitude, "1")
 
 
-def simulate(design: Design, driver: Driver, temperature: float, engine: Engine, analyses: Sequence[str]) -> CaseRun:
+def simulate(
+    design: Design, driver: Driver, temperature: float, engine: Engine, analyses: Sequence[str]
+) -> CaseRun:
     """Simulate one driver at one temperature and all carriers.
 
     Parameters
@@ -208,14 +222,16 @@ def simulate(design: Design, driver: Driver, temperature: float, engine: Engine,
     circuit, states = case.static()
     saved = saved_vectors(circuit) if "envelope" in analyses else ()
     video = case.video(saved)
-    vectors = {name: video.data[:, k] for k, name in enumerate(video.names)}
+    vectors = {name: np.real(video.data[:, k]) for k, name in enumerate(video.names)}
     results: list[Result] = []
     envelopes: dict[tuple[str, float], Waveform] = {}
     if "envelope" in analyses:
         _envelope(case, circuit, states, vectors, results, envelopes)
     if "carrier" in analyses:
         _carrier(case, states, vectors, results, envelopes)
-    order = {(name, f): k for k, (f, name) in enumerate((f, a) for f in design.carrier.frequency for a in analyses)}
+    order = {
+        (name, f): k for k, (f, name) in enumerate((f, a) for f in design.carrier.frequency for a in analyses)
+    }
     results.sort(key=lambda result: order[result.analysis, result.carrier])
     return CaseRun(
         driver.name, temperature, tuple(results), tuple(case.decks), video, envelopes, case.seconds
@@ -232,17 +248,23 @@ def _envelope(
 ) -> None:
     design, netlist = case.design, case.netlist
     frequencies = design.carrier.frequency
-    network = linearise(circuit, Bias(vectors, vectors["time"]), case.temperature, [p.source for p in netlist.ports])
+    network = linearise(
+        circuit, Bias(vectors, vectors["time"]), case.temperature, [p.source for p in netlist.ports]
+    )
     solution = solve_envelope(network, netlist.ports, frequencies, netlist.through, design.numerics.solution)
-    # the command begins to fall half an edge before its 50 % point
-    end = int(np.searchsorted(solution.time, case.timeline.falling - case.timeline.edge / 2.0, side="right")) - 1
+    # the command begins to fall half an edge before its 50 % point, and a ringing solution is a mean over one period
+    last = case.timeline.falling - case.timeline.edge / 2.0 - 1.0 / min(frequencies)
+    end = int(np.searchsorted(solution.time, max(last, case.timeline.rising), side="right")) - 1
     ends = (states[0], case.check(circuit, vectors, end))
     for k, frequency in enumerate(frequencies):
         pair = solution.s[k, :, netlist.through[1], netlist.through[0]]
         waveform = Waveform(solution.time, pair, "1")
         envelopes["envelope", frequency] = waveform
         record = _record(case, case.timeline, frequency, waveform, states[:, k], vectors)
-        differences = [largest_difference(ends[0][k], solution.s[k, 0]), largest_difference(ends[1][k], solution.s[k, end])]
+        differences = [
+            largest_difference(ends[0][k], solution.s[k, 0]),
+            largest_difference(ends[1][k], solution.s[k, end]),
+        ]
         results.append(
             _result(case, record, "envelope", f"{solution.methods[k]}: {solution.reasons[k]}", differences)
         )
@@ -268,7 +290,12 @@ def _carrier(
 
 
 def _record(
-    case: _Case, timeline: Timeline, frequency: float, envelope: Waveform, states: Complex, vectors: Mapping[str, Array]
+    case: _Case,
+    timeline: Timeline,
+    frequency: float,
+    envelope: Waveform,
+    states: Complex,
+    vectors: Mapping[str, Array],
 ) -> Record:
     """Collect the waveforms of one carrier; `states` has shape (2, p, p), command low first."""
     design, netlist = case.design, case.netlist
@@ -320,7 +347,9 @@ def _result(case: _Case, record: Record, analysis: str, method: str, differences
     faults = tuple(
         f"{where}, the envelope differs by {format_quantity(difference, 'dB')} from ngspice's AC analysis at the same bias; "
         f"at most {format_quantity(_TOLERATED, 'dB')} is sound"
-        for where, difference in zip(("before the first edge", "at the end of the pulse"), differences, strict=False)
+        for where, difference in zip(
+            ("before the first edge", "at the end of the pulse"), differences, strict=False
+        )
         if not difference <= _TOLERATED
     )
     return Result(

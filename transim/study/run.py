@@ -1,0 +1,119 @@
+"""A whole design: every driver at every temperature, with one verdict."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+from transim.design.model import Design, Driver
+from transim.engine.ngspice import Engine
+from transim.errors import DesignError
+from transim.measure.limits import Verdict
+from transim.parts.nearest import nearest
+from transim.study.simulate import CaseRun, Result, simulate
+
+__all__ = ["ANALYSES", "Outcome", "Progress", "run_design"]
+
+#: Analyses by the name under which they are asked for.
+ANALYSES = {"envelope": ("envelope",), "carrier": ("carrier",), "both": ("envelope", "carrier")}
+
+#: Called before each case with the number done, their total, and what comes next.
+Progress = Callable[[int, int, str], None]
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """What the run of a design gave.
+
+    Attributes
+    ----------
+    design : Design
+        What was run.
+    engine : str
+        For example ``ngspice 39``.
+    cases : tuple of CaseRun
+        One for each driver and temperature.
+    """
+
+    design: Design
+    engine: str
+    cases: tuple[CaseRun, ...]
+
+    @property
+    def results(self) -> tuple[Result, ...]:
+        """Every result: by driver, then temperature, carrier and analysis."""
+        return tuple(result for case in self.cases for result in case.results)
+
+    @property
+    def verdict(self) -> Verdict:
+        """Fail if any limit of any result is missed, else undefined if any cannot be judged, else pass."""
+        found = {result.verdict for result in self.results}
+        if "fail" in found:
+            return "fail"
+        return "undefined" if "undefined" in found else "pass"
+
+    @property
+    def engine_seconds(self) -> float:
+        """Time spent in ngspice [s]."""
+        return sum(case.engine_seconds for case in self.cases)
+
+
+def run_design(
+    design: Design,
+    engine: Engine,
+    *,
+    drivers: Sequence[str] = (),
+    analysis: str = "envelope",
+    progress: Progress | None = None,
+) -> Outcome:
+    """Simulate and judge a design.
+
+    Parameters
+    ----------
+    design : Design
+        Read and checked.
+    engine : Engine
+        ngspice.
+    drivers : sequence of str
+        Names of the drivers to run; none means all.
+    analysis : {"envelope", "carrier", "both"}
+        How the RF envelope is found.
+    progress : callable or None
+        Told before each case.
+
+    Returns
+    -------
+    Outcome
+
+    Raises
+    ------
+    DesignError
+        If a driver's name is not in the design.
+    EngineError
+        If a deck fails.
+    """
+    chosen = _choose(design, drivers)
+    todo = [(driver, temperature) for driver in chosen for temperature in design.environment.temperature]
+    cases = []
+    for done, (driver, temperature) in enumerate(todo):
+        if progress is not None:
+            progress(done, len(todo), f"{driver.name} at {temperature:g} degC")
+        cases.append(simulate(design, driver, temperature, engine, ANALYSES[analysis]))
+    if progress is not None:
+        progress(len(todo), len(todo), "")
+    return Outcome(design, f"ngspice {engine.version}", tuple(cases))
+
+
+def _choose(design: Design, names: Sequence[str]) -> list[Driver]:
+    if not names:
+        return list(design.drivers)
+    known = {driver.name: driver for driver in design.drivers}
+    for name in names:
+        if name not in known:
+            raise DesignError(
+                f"there is no driver {name}",
+                file=design.source.path,
+                expected=f"one of {', '.join(known)}",
+                nearest=nearest(name, list(known)),
+            )
+    return [known[name] for name in dict.fromkeys(names)]
