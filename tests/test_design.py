@@ -439,6 +439,13 @@ def test_slots_of_a_path_are_filled_by_name(read, errors_of):
     assert (misfit.key, unused.key) == ("switch.shunt", "junction.npn")
 
 
+def test_mistyped_junction_is_one_error(errors_of):
+    (error,) = errors_of(DESIGN.replace('junction = "tag"', 'junction = "tga"'))
+    assert (error.key, error.nearest) == ("switch.junction", "tag")
+    missing, unused = errors_of(DESIGN.replace('junction = "tag"', 'junction = "other"'))
+    assert (missing.key, missing.nearest, unused.key) == ("switch.junction", None, "junction.tag")
+
+
 def test_junction_that_does_not_fit_its_slot_is_a_topology_error(errors_of):
     (error,) = errors_of(DESIGN.replace('"reed"\nlifetime = "500 ns"', '"heron"'))
     assert isinstance(error, TopologyError)

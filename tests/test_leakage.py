@@ -83,8 +83,9 @@ def test_inband_matches_quadrature():
 
 
 def test_inband_ignores_a_resting_voltage():
-    lifted = cycle(p1=P1 + 0.7)
-    assert value(lifted, "video_inband") == pytest.approx(value(cycle(p1=P1), "video_inband"), abs=1e-9)
+    # 30.3 MHz: not a whole number of turns in the cycle, over which a constant would vanish by itself.
+    lifted, plain = (replace(cycle(p1=P1 + rest), carrier=30.3e6) for rest in (0.7, 0.0))
+    assert value(lifted, "video_inband") == pytest.approx(value(plain, "video_inband"), abs=1e-9)
     assert value(lifted, "video_peak") == pytest.approx(0.9)
 
 
@@ -119,6 +120,14 @@ def test_a_peak_without_both_flanks_has_no_width():
         value(step, "video_width")
     with pytest.raises(MeasurementError, match="before it"):
         value(cycle(p1=np.array([0.3, 0.3, 0, 0, 0, 0, 0, 0])), "video_width")
+
+
+def test_the_width_is_that_of_the_peak_and_not_of_its_neighbours():
+    # Bumps of 0.25 V at 505 ns and of 0.28 V at 715 ns around a peak of 0.4 V, which is 20 ns wide.
+    time = np.array([0, 495, 505, 515, 600, 620, 640, 700, 715, 730, 1000]) * NS
+    bumps = np.array([0, 0, 0.25, 0, 0, 0.4, 0, 0, 0.28, 0, 0])
+    record = replace(cycle(), video={"p1": Waveform(time, bumps, "V")})
+    assert value(record, "video_width") == pytest.approx(20 * NS, rel=1e-9)
 
 
 def test_reason_when_nothing_leaks():

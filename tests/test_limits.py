@@ -70,6 +70,12 @@ def test_a_function_that_gives_no_finite_number_gives_no_figure(monkeypatch):
     assert extract(EMPTY) == {"on_time": Figure(None, "s", "the waveform gives no finite number")}
 
 
+def test_a_figure_of_zero_has_no_sign(monkeypatch):
+    zero = replace(METRICS["on_time"], function=lambda _: -0.0)
+    monkeypatch.setattr("transim.measure.metrics.METRICS", {"on_time": zero})
+    assert math.copysign(1.0, extract(EMPTY)["on_time"].value) == 1.0
+
+
 @pytest.mark.parametrize(
     ("value", "bounds", "margin", "outcome"),
     [

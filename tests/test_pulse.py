@@ -123,6 +123,13 @@ def test_rise_time_starts_at_the_last_low_instant_before_the_high_one():
     assert value(record, "rise_time") == pytest.approx(80 * NS, rel=1e-9)
 
 
+def test_fall_time_starts_at_the_last_high_instant_before_the_low_one():
+    # A first dip to 0.4 at 530 ns passes 90 % before the edge proper.
+    record = cycle([0, 200, 300, 520, 530, 540, 600, 800, 1000], [0, 0, 0.8, 0.8, 0.4, 0.8, 0.8, 0, 0])
+    assert value(record, "off_delay") == pytest.approx(22 * NS, rel=1e-9)
+    assert value(record, "fall_time") == pytest.approx(160 * NS, rel=1e-9)
+
+
 def test_an_instant_before_the_middle_of_the_edge_is_negative():
     record = cycle([0, 95, 97, 600, 800, 1000], [0, 0, 0.8, 0.8, 0, 0])
     assert value(record, "on_time") == pytest.approx(-3.2 * NS, rel=1e-9)

@@ -2,19 +2,20 @@
 
 from __future__ import annotations
 
-import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 from transim.circuit.assemble import Netlist, RfPort
-from transim.circuit.elements import Behavioural, Circuit
 from transim.circuit.timeline import Timeline
 from transim.design.model import Control, Numerics
 from transim.quantities import deck_number, format_quantity
 
-__all__ = ["Deck", "Origin", "bias_check_deck", "carrier_deck", "static_deck", "video_deck"]
+__all__ = ["Deck", "Origin", "Tone", "carrier_deck", "deck_head", "static_deck", "video_deck"]
 
-_UNITS = "Units: V, A, s, Hz, ohm, F, H, C; node 0 is ground; the driver's current is i(vdrive), positive into the bias entry."
+_UNITS = (
+    "Units: V, A, s, Hz, ohm, F, H, C; node 0 is ground; the driver's current is i(vdrive), "
+    "positive into the bias entry."
+)
 
 
 @dataclass(frozen=True)
@@ -49,7 +50,20 @@ class Deck:
     stop: float | None = None
 
 
-def _head(name: str, origin: Origin, what: Sequence[str], writes_raw: bool) -> str:
+def deck_head(name: str, origin: Origin, what: Sequence[str], writes_raw: bool) -> str:
+    """Return the comment lines that every deck begins with.
+
+    Parameters
+    ----------
+    name : str
+        Stem of the deck's file name.
+    origin : Origin
+        Where it comes from.
+    what : sequence of str
+        What it is, one line each.
+    writes_raw : bool
+        Whether its own control block writes the raw file.
+    """
     option = "" if writes_raw else f" -r {name}.raw"
     lines = [
         f"* transim {name} deck",
@@ -113,7 +127,8 @@ def static_deck(
     """
     what = [
         "Static: both control states; operating point, then AC with 1 V behind each port's impedance in turn.",
-        f"S of ports i, j from the plots: 2 v(p_i) - (1 if i = j), both ports at {format_quantity(netlist.ports[0].impedance, 'ohm')}.",
+        "S of ports i, j from the plots: 2 v(p_i) - (1 if i = j), "
+        f"all ports at {format_quantity(netlist.ports[0].impedance, 'ohm')}.",
     ]
     nodes = " ".join(f"v({port.node})" for port in netlist.ports)
     steps = []
@@ -140,7 +155,7 @@ def static_deck(
         ]
     )
     text = (
-        _head("static", origin, what, True)
+        deck_head("static", origin, what, True)
         + netlist.text
         + f"Vcontrol ctl 0 DC {deck_number(control.low)}\n"
         + _quiet_ports(netlist.ports)
@@ -183,7 +198,7 @@ def video_deck(
     step = timeline.on_for / numerics.steps
     what = ["Video: control pulse on, RF sources off; transient. Leakage is the voltage at the RF ports."]
     text = (
-        _head("video", origin, what, False)
+        deck_head("video", origin, what, False)
         + netlist.text
         + _command(control, timeline)
         + _quiet_ports(netlist.ports)
@@ -196,7 +211,7 @@ def video_deck(
 
 @dataclass(frozen=True)
 class Tone:
-    """RF source of a carrier deck: frequency [Hz], amplitude of the source's voltage [V], phase [deg], and its port's place."""
+    """RF source of a carrier deck: frequency [Hz], amplitude behind the impedance [V], phase [deg], port's place."""
 
     frequency: float
     amplitude: float
@@ -244,7 +259,7 @@ def carrier_deck(
         sources += f"{port.source} e{port.node} 0 DC 0{drive}\n"
     nodes = " ".join(f"v({port.node})" for port in netlist.ports)
     text = (
-        _head(name, origin, what, False)
+        deck_head(name, origin, what, False)
         + netlist.text
         + _command(control, timeline)
         + sources
@@ -254,126 +269,3 @@ def carrier_deck(
         + f"\n.tran {deck_number(step)} {deck_number(timeline.stop)} 0 {deck_number(step)}\n.end\n"
     )
     return Deck(name, text, writes_raw=False, stop=timeline.stop)
-
-
-def bias_check_deck(
-    circuit: Circuit,
-    bias: Mapping[str, float],
-    ports: Sequence[RfPort],
-    frequencies: Sequence[float],
-    origin: Origin,
-) -> Deck:
-    """Write a deck in which ngspice itself linearises the circuit at a given bias.
-
-    Every node that a nonlinear element touches or is controlled by gets a twin: coupled to it by a capacitor of
-    1e-5 ohm, held at its bias through an inductor of 1e12 ohm (both at the lowest carrier), so that each nonlinear element sees the bias at DC and the circuit at the carrier. All
-    independent sources are zero. This reproduces the bias of any instant of a transient, which an operating
-    point does not.
-
-    Parameters
-    ----------
-    circuit : Circuit
-        Flattened elements.
-    bias : mapping
-        ``v(node)`` [V] and ``i(source)`` [A] at the instant.
-    ports : sequence of RfPort
-        RF ports.
-    frequencies : sequence of float
-        Carriers [Hz].
-    origin : Origin
-        For the head.
-
-    Returns
-    -------
-    Deck
-        Its raw file holds one AC plot for each port and frequency.
-    """
-    twins = _Twins(bias, min(frequencies))
-    body = [twins.rewrite(line, circuit) for line in circuit.lines]
-    nodes = " ".join(f"v({port.node})" for port in ports)
-    steps = []
-    for port in ports:
-        steps.append(f"alter {port.source} acmag = 1")
-        for frequency in frequencies:
-            number = deck_number(frequency)
-            steps += [f"ac lin 1 {number} {number}", f"write check.raw {nodes}"]
-        steps.append(f"alter {port.source} acmag = 0")
-    what = [
-        "Check: the flattened circuit at the bias of one instant of the video run, every junction held at it; AC at each port."
-    ]
-    text = (
-        _head("check", origin, what, True)
-        + "\n".join(line for line in body if line)
-        + "\n"
-        + twins.text()
-        + f".options temp={deck_number(origin.temperature)} rshunt=1e12 noacct\n"
-        + "\n".join([".control", "set filetype=binary", "set appendwrite", *steps, "quit 0", ".endc", ".end"])
-        + "\n"
-    )
-    return Deck("check", text, writes_raw=True)
-
-
-class _Twins:
-    """Rewrites listing lines so that nonlinear elements hang on twins of their nodes."""
-
-    def __init__(self, bias: Mapping[str, float], lowest: float) -> None:
-        self.bias = bias
-        # a coupling much better than 1e-5 ohm costs ngspice's matrix the digits of small conductances
-        self.capacitance = deck_number(1e5 / (2.0 * math.pi * lowest))
-        self.inductance = deck_number(1e12 / (2.0 * math.pi * lowest))
-        self.held: dict[str, None] = {}
-
-    def twin(self, node: str) -> str:
-        if node in ("0", "gnd"):
-            return "0"
-        self.held.setdefault(node)
-        return f"{node}_held"
-
-    def text(self) -> str:
-        lines = []
-        for k, node in enumerate(self.held):
-            value = deck_number(self.bias[f"v({node})"])
-            lines += [
-                f"Cheld{k} {node} {node}_held {self.capacitance}",
-                f"Lheld{k} {node}_held held{k} {self.inductance}",
-                f"Vheld{k} held{k} 0 DC {value}",
-            ]
-        return "\n".join(lines) + "\n"
-
-    def rewrite(self, line: str, circuit: Circuit) -> str:
-        name = line.split()[0].lower() if line.split() else ""
-        if name.startswith("."):
-            return line if name == ".model" else ""
-        if name[:1] in "vi" and name[:1].isalpha():
-            words = line.split()
-            return f"{words[0]} {words[1]} {words[2]} DC 0 AC 0"
-        for device in circuit.devices:
-            if device.name == name:
-                words = line.split()
-                count = len(device.nodes)
-                return " ".join(
-                    [
-                        words[0],
-                        *(self.twin(word.lower()) for word in words[1 : count + 1]),
-                        *words[count + 1 :],
-                    ]
-                )
-        for source in circuit.behaviourals:
-            if source.name == name:
-                return self._behavioural(source)
-        return line if name[:1].isalpha() else ""
-
-    def _behavioural(self, source: Behavioural) -> str:
-        law = source.law
-        held = law.with_probes(
-            lambda node: f"v({self.twin(node)})",
-            lambda name: f"(i({name}) + {deck_number(self.bias[f'i({name})'])})",
-        )
-        plus, minus = source.nodes
-        if source.quantity == "i":
-            return f"{source.name} {self.twin(plus)} {self.twin(minus)} i = {held}"
-        # the output of a voltage source stays in the circuit, less its bias, so that the circuit itself has none
-        offset = (0.0 if plus == "0" else self.bias[f"v({plus})"]) - (
-            0.0 if minus == "0" else self.bias[f"v({minus})"]
-        )
-        return f"{source.name} {plus} {minus} v = ({held}) - ({deck_number(offset)})"

@@ -1,8 +1,8 @@
 """Expressions of behavioural sources: parsed once, evaluated with their partial derivatives on arrays.
 
 The grammar is that of ngspice's B sources (ngspice 39 manual, section 5.1): arithmetic, comparison, logic,
-the conditional operator, ``v(a)``, ``v(a,b)``, ``i(source)``, ``time``, ``temper`` and the usual functions. Powers follow ngspice:
-``x ^ y`` is ``|x| ^ y``.
+the conditional operator, ``v(a)``, ``v(a,b)``, ``i(source)``, ``time``, ``temper`` and the usual functions.
+Powers follow ngspice: ``x ^ y`` is ``|x| ^ y``.
 """
 
 from __future__ import annotations

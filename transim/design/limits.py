@@ -7,8 +7,8 @@ from typing import Protocol
 
 from transim.design.faults import Faults
 from transim.design.fields import Quantity, shown
-from transim.design.model import Limit
 from transim.errors import DesignError
+from transim.measure.limits import Limit
 from transim.quantities import UNITS, format_quantity
 
 __all__ = ["Unitful", "read_limits"]
@@ -57,6 +57,7 @@ def read_limits(faults: Faults, raw: object, metrics: Mapping[str, Unitful]) -> 
                 ),
             )
             continue
+        before = len(faults.errors)
         ends: dict[str, float | None] = {}
         for key, value in entry.items():
             if key in ("min", "max"):
@@ -80,5 +81,6 @@ def read_limits(faults: Faults, raw: object, metrics: Mapping[str, Unitful]) -> 
                     found=format_quantity(low, unit),
                 ),
             )
-        limits.append(Limit(metric=metric, min=low, max=high))
+        if len(faults.errors) == before:
+            limits.append(Limit(metric=metric, min=low, max=high))
     return tuple(limits)

@@ -12,6 +12,7 @@ from transim.design.fields import Choice, Count, Line, Quantity, Series
 from transim.design.frozen import Frozen
 from transim.errors import DesignError
 from transim.measure.definitions import Definitions
+from transim.measure.limits import Limit
 from transim.parts.part import Part
 from transim.quantities import format_quantity
 
@@ -22,7 +23,6 @@ __all__ = [
     "Driver",
     "Environment",
     "Junction",
-    "Limit",
     "Measure",
     "Numerics",
     "Source",
@@ -195,22 +195,6 @@ class Driver(_Table):
     model: str | None = None
 
 
-class Limit(_Table):
-    """What a metric may be.
-
-    Parameters
-    ----------
-    metric : str
-        Name of the metric.
-    min, max : float or None
-        Ends in the metric's unit; at least one is given.
-    """
-
-    metric: str
-    min: float | None = None
-    max: float | None = None
-
-
 class Measure(_Table):
     """The table `[measure]`: definitions that the metrics use.
 
@@ -348,7 +332,7 @@ class Design(_Table):
     carrier: Carrier
     switch: Switch
     drivers: tuple[Driver, ...] = Field(min_length=1)
-    limits: tuple[Limit, ...] = ()
+    limits: tuple[InstanceOf[Limit], ...] = ()
     definitions: InstanceOf[Definitions] = _STANDARD
     environment: Environment = Environment()
     numerics: Numerics = Numerics()

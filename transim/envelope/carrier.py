@@ -9,7 +9,6 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-from scipy.interpolate import CubicSpline
 
 from transim.envelope.junction import Array
 
@@ -37,6 +36,9 @@ def extract_envelope(
     envelope : ndarray of complex, shape (n,)
         Peak phasor against cos(w t) [V].
     """
+    # half a second to import, which no other analysis needs
+    from scipy.interpolate import CubicSpline
+
     stop = min(float(time[-1]) for time, _ in runs)
     step = 1.0 / (carrier * points)
     grid = np.arange(0.0, stop, step)

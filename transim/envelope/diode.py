@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from transim.circuit.elements import Device
-from transim.envelope.junction import GMIN, Array, Depletion, exponential, saturation_factor, thermal_voltage
+from transim.envelope.junction import GMIN, SMALLEST, Array, Depletion, exponential, saturation_factor, thermal_voltage
 from transim.errors import LinearisationError
 
 __all__ = ["DiodeLaw"]
@@ -16,12 +16,12 @@ __all__ = ["DiodeLaw"]
 _ALIASES = {"cj0": "cjo", "cj": "cjo", "pb": "vj", "mj": "m", "ik": "ikf", "trs1": "trs", "tc": "trs"}
 #: Parameters of ngspice's diode that change its small-signal form and that this module does not have.
 _UNKNOWN = {
-    "isr", "ikr", "jsw", "is2", "ns", "cjp", "cjsw", "nbv", "jtun", "jtunsw", "ntun", "xtitun", "tm1", "tm2", "ttt1", "ttt2",
+    "isr", "ikr", "jsw", "is2", "ns", "cjp", "cjsw", "jtun", "jtunsw", "ntun", "xtitun", "tm1", "tm2", "ttt1", "ttt2",
     "tlev", "tlevc", "tcv", "cta", "ctp", "tpb", "tphp", "rth0", "vp", "lm", "lp", "wm", "wp", "xom", "xoi", "xm", "xp",
 }  # fmt: skip
 _DEFAULTS = {
     "is": 1e-14, "n": 1.0, "rs": 0.0, "tt": 0.0, "cjo": 0.0, "vj": 1.0, "m": 0.5, "fc": 0.5,
-    "eg": 1.11, "xti": 3.0, "tnom": 27.0, "trs": 0.0, "ikf": 0.0, "bv": 0.0, "ibv": 1e-3,
+    "eg": 1.11, "xti": 3.0, "tnom": 27.0, "trs": 0.0, "ikf": 0.0, "bv": 0.0, "ibv": 1e-3, "nbv": 0.0,
 }  # fmt: skip
 
 
@@ -70,14 +70,10 @@ class DiodeLaw:
         kelvin, nominal = temperature + 273.15, card["tnom"] + 273.15
         vt = thermal_voltage(kelvin)
         factor = saturation_factor(kelvin, nominal, card["eg"], card["xti"]) / card["n"]
-        saturation = card["is"] * size * math.exp(factor)
-        self._scaled = _Scaled(
-            saturation,
-            card["n"] * vt,
-            card["ikf"] * size,
-            _breakdown(card["bv"], card["ibv"] * size, saturation, vt),
-        )
-        self._vt = vt
+        saturation = max(card["is"], SMALLEST) * size * math.exp(factor)
+        self._reverse = (card["nbv"] or card["n"]) * vt
+        knee = _breakdown(card["bv"], card["ibv"] * size, saturation, self._reverse)
+        self._scaled = _Scaled(saturation, card["n"] * vt, card["ikf"] * size, knee)
         self._transit = card["tt"]
         self._depletion = Depletion(
             card["cjo"] * size, card["vj"], card["m"], card["fc"], kelvin=kelvin, nominal=nominal
@@ -94,8 +90,8 @@ class DiodeLaw:
             slope = slope * (1.0 + 0.5 * root) / (1.0 + root) ** 2
         if scaled.breakdown > 0.0:
             beyond = v < -scaled.breakdown
-            excess = np.where(beyond, -(scaled.breakdown + v) / self._vt, 0.0)
-            slope = np.where(beyond, scaled.saturation * np.exp(np.minimum(excess, 600.0)) / self._vt, slope)
+            excess = np.where(beyond, -(scaled.breakdown + v) / self._reverse, 0.0)
+            slope = np.where(beyond, scaled.saturation * np.exp(np.minimum(excess, 600.0)) / self._reverse, slope)
         slope = slope + GMIN
         return slope, self._transit * slope + self._depletion.capacitance(v)
 

@@ -20,6 +20,8 @@ BOLTZMANN = 1.38064852e-23
 CHARGE = 1.6021766208e-19
 REFERENCE = 300.15
 GMIN = 1e-12
+#: ngspice raises a smaller saturation current to this (its option epsmin) [A].
+SMALLEST = 1e-28
 
 
 def thermal_voltage(kelvin: float) -> float:

@@ -1,7 +1,7 @@
 """The flattened circuit as a time-varying linear network around its bias.
 
-Unknowns are node voltages and branch currents, as in modified nodal analysis (C. W. Ho, A. E. Ruehli, P. A. Brennan, IEEE Trans.
-Circuits Syst. 22(6), 1975). With x the complex envelope at the carrier w, the network is::
+Unknowns are node voltages and branch currents, as in modified nodal analysis (C. W. Ho, A. E. Ruehli,
+P. A. Brennan, IEEE Trans. Circuits Syst. 22(6), 1975). With x the complex envelope at the carrier w, the network is::
 
     d/dt(C(t) x) + (G(t) + j w C(t)) x = s
 """
@@ -23,7 +23,7 @@ from transim.errors import LinearisationError, RawFileError
 __all__ = ["Bias", "Network", "linearise", "saved_vectors"]
 
 #: What ngspice has to save of each device, beside all node voltages and branch currents.
-_DEVICE_VECTORS = {"d": ("vd",), "q": ("vbe", "vbc")}
+_DEVICE_VECTORS = {"d": ("vd",), "q": ("vbe", "vbc", "ic")}
 
 #: Entries far below these are no load to a 50 ohm line at any carrier [S, F].
 _SMALL_G = 1e-8
@@ -364,9 +364,10 @@ def _stamp_transistor(stamps: _Stamps, device: Device, bias: Bias, temperature: 
         inner[name] = f"{device.name}#{name}" if resistance > 0.0 else node
         if resistance > 0.0:
             stamps.admittance(node, inner[name], 1.0 / resistance)
-    # the drop in the collector resistance is small against the potential that shapes the outer capacitance
     polarity = -1.0 if device.model.kind == "pnp" else 1.0
-    signal = law.small_signal(vbe, vbc, polarity * (bias.voltage(base) - bias.voltage(collector)))
+    drop = law.collector_resistance * bias.device(device.name, "ic")
+    outer = polarity * (bias.voltage(base) - bias.voltage(collector) + drop)
+    signal = law.small_signal(vbe, vbc, outer)
     inner["base"] = f"{device.name}#base" if law.has_base_resistance else base
     if law.has_base_resistance:
         stamps.admittance(base, inner["base"], signal.base)

@@ -1,4 +1,4 @@
-"""Which solution a circuit needs: frozen where its RF network is fast against the switching, ringing where it is not."""
+"""Which solution a circuit needs: frozen where its RF network is fast against the switching, else ringing."""
 
 from __future__ import annotations
 
@@ -46,12 +46,15 @@ class Envelope:
         Time [s].
     s : ndarray, shape (f, n, p, p)
         S-parameters of each carrier.
+    frozen : ndarray, shape (f, n, p, p)
+        The frozen solution, which is what an AC analysis at the bias of each instant has to give.
     methods, reasons : tuple of str
         ``frozen`` or ``ringing`` for each carrier, and the ground for it.
     """
 
     time: Array
     s: npt.NDArray[np.complex128]
+    frozen: npt.NDArray[np.complex128]
     methods: tuple[str, ...]
     reasons: tuple[str, ...]
 
@@ -101,7 +104,7 @@ def solve_envelope(
         ringing: Scattering = solve_ringing(network, ports, [frequency[k] for k in slow])
         s = s.copy()
         s[slow] = ringing.s
-    return Envelope(network.time, s, tuple(methods), tuple(reasons))
+    return Envelope(network.time, s, frozen.s, tuple(methods), tuple(reasons))
 
 
 def _transition(

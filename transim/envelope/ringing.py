@@ -17,8 +17,8 @@ from transim.envelope.scatter import Complex, Scattering, excitation, scatter, s
 
 __all__ = ["solve_ringing"]
 
-#: Largest change of an entry in one step. A capacitance that falls by orders of magnitude in one step of the video run would
-#: otherwise leave its charge behind as a voltage that no circuit has.
+#: Largest change of an entry in one step. A capacitance that falls by orders of magnitude in one step of the
+#: video run would otherwise leave its charge behind as a voltage that no circuit has.
 _SHARE = 0.25
 
 

@@ -40,6 +40,15 @@ class Scattering:
 
 
 def excitation(network: Network, ports: Sequence[RfPort]) -> Complex:
+    """Return the right-hand sides for 1 V behind each port's impedance in turn, shape (m, p).
+
+    Parameters
+    ----------
+    network : Network
+        m unknowns.
+    ports : sequence of RfPort
+        p ports.
+    """
     right = np.zeros((network.size, len(ports)), dtype=complex)
     for k, port in enumerate(ports):
         right[network.unknowns[f"i:{port.source}"], k] = 1.0
@@ -55,6 +64,20 @@ def scatter(network: Network, ports: Sequence[RfPort], x: Complex) -> Complex:
 
 
 def solve_linear(matrices: Complex, right: Complex) -> Complex:
+    """Solve a batch of linear systems.
+
+    Parameters
+    ----------
+    matrices : ndarray, shape (..., m, m)
+        The systems.
+    right : ndarray, shape (m, p) or (..., m, p)
+        Right-hand sides.
+
+    Raises
+    ------
+    LinearisationError
+        If one of them is singular.
+    """
     try:
         return np.asarray(np.linalg.solve(matrices, right))
     except np.linalg.LinAlgError as error:

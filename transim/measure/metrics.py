@@ -117,4 +117,4 @@ def _figure(entry: Metric, record: Record) -> Figure:
         return Figure(None, entry.unit, reason.message)
     if not math.isfinite(value):
         return Figure(None, entry.unit, "the waveform gives no finite number")
-    return Figure(value, entry.unit)
+    return Figure(value + 0.0, entry.unit)  # no minus zero in results

@@ -9,7 +9,7 @@ from transim.design.model import Design, Driver
 from transim.engine.ngspice import Engine
 from transim.errors import DesignError
 from transim.measure.limits import Verdict
-from transim.parts.nearest import nearest
+from transim.parts.nearest import nearest_name
 from transim.study.simulate import CaseRun, Result, simulate
 
 __all__ = ["ANALYSES", "Outcome", "Progress", "run_design"]
@@ -114,6 +114,6 @@ def _choose(design: Design, names: Sequence[str]) -> list[Driver]:
                 f"there is no driver {name}",
                 file=design.source.path,
                 expected=f"one of {', '.join(known)}",
-                nearest=nearest(name, list(known)),
+                nearest=nearest_name(name, known),
             )
     return [known[name] for name in dict.fromkeys(names)]

@@ -11,16 +11,17 @@ from pathlib import Path
 import numpy as np
 
 from transim.circuit.assemble import Netlist, assemble
-from transim.circuit.decks import Deck, Origin, Tone, bias_check_deck, carrier_deck, static_deck, video_deck
+from transim.circuit.decks import Deck, Origin, Tone, carrier_deck, static_deck, video_deck
 from transim.circuit.elements import Circuit, read_listing
 from transim.circuit.timeline import Timeline, timeline_of
 from transim.design.model import Design, Driver
 from transim.engine.ngspice import Engine, EngineRun
 from transim.engine.rawfile import Plot
 from transim.envelope.carrier import extract_envelope
+from transim.envelope.check import bias_check_deck
 from transim.envelope.junction import Array
 from transim.envelope.linearise import Bias, linearise, saved_vectors
-from transim.envelope.method import solve_envelope
+from transim.envelope.method import Envelope, solve_envelope
 from transim.envelope.stationary import Complex, largest_difference, read_scattering
 from transim.measure.limits import Judgement, Verdict, judge, verdict
 from transim.measure.metrics import Figure, extract
@@ -30,8 +31,14 @@ from transim.quantities import format_quantity
 
 __all__ = ["CaseRun", "Result", "simulate"]
 
-#: Largest difference between the envelope's ends and ngspice's own AC analysis [dB].
+#: Largest difference between the envelope and ngspice's own AC analysis [dB].
 _TOLERATED = 0.05
+_CHECKS = {
+    "check_start": "before the first edge",
+    "check_rise": "half way on the command's rising edge",
+    "check_end": "at the end of the pulse",
+    "check_fall": "half way on the command's falling edge",
+}
 #: Carrier periods before the first edge of a carrier run, for its start-up to die away.
 _SETTLING_PERIODS = 20.0
 
@@ -57,7 +64,7 @@ class Result:
     faults : tuple of str
         What makes the figures unfit to be judged; empty in a sound run.
     check : float or None
-        Largest difference of the envelope's two ends to ngspice's AC analysis [dB].
+        Largest difference of the envelope to ngspice's AC analysis at four biases [dB].
     """
 
     driver: str
@@ -155,11 +162,12 @@ class _Case:
         deck = video_deck(self.netlist, design.control, self.timeline, design.numerics, self.origin, saved)
         return self.run(deck).plots[0]
 
-    def check(self, circuit: Circuit, vectors: Mapping[str, Array], point: int) -> Complex:
+    def check(self, name: str, circuit: Circuit, vectors: Mapping[str, Array], point: int) -> Complex:
         """Return S at the bias of one point of the video run, by ngspice, shape (f, p, p)."""
-        bias = {name: float(values[point]) for name, values in vectors.items()}
+        here = slice(point, point + 1)
+        bias = Bias({vector: values[here] for vector, values in vectors.items()}, vectors["time"][here])
         frequencies = self.design.carrier.frequency
-        deck = bias_check_deck(circuit, bias, self.netlist.ports, frequencies, self.origin)
+        deck = bias_check_deck(name, circuit, bias, self.netlist.ports, frequencies, self.origin)
         return read_scattering(self.run(deck).plots, self.netlist.ports, frequencies)
 
     def carrier(self, frequency: float) -> tuple[Timeline, Waveform]:
@@ -252,22 +260,39 @@ def _envelope(
         circuit, Bias(vectors, vectors["time"]), case.temperature, [p.source for p in netlist.ports]
     )
     solution = solve_envelope(network, netlist.ports, frequencies, netlist.through, design.numerics.solution)
-    # the command begins to fall half an edge before its 50 % point, and a ringing solution is a mean over one period
-    last = case.timeline.falling - case.timeline.edge / 2.0 - 1.0 / min(frequencies)
-    end = int(np.searchsorted(solution.time, max(last, case.timeline.rising), side="right")) - 1
-    ends = (states[0], case.check(circuit, vectors, end))
+    points = _check_points(case, solution)
+    references = {name: case.check(name, circuit, vectors, point) for name, point in points.items()}
+    # before the first edge the bias is ngspice's own operating point
+    points["check_start"], references["check_start"] = 0, states[0]
     for k, frequency in enumerate(frequencies):
         pair = solution.s[k, :, netlist.through[1], netlist.through[0]]
         waveform = Waveform(solution.time, pair, "1")
         envelopes["envelope", frequency] = waveform
         record = _record(case, case.timeline, frequency, waveform, states[:, k], vectors)
-        differences = [
-            largest_difference(ends[0][k], solution.s[k, 0]),
-            largest_difference(ends[1][k], solution.s[k, end]),
-        ]
-        results.append(
-            _result(case, record, "envelope", f"{solution.methods[k]}: {solution.reasons[k]}", differences)
-        )
+        differences = {
+            name: largest_difference(references[name][k], solution.frozen[k, point]) for name, point in points.items()
+        }
+        method = f"{solution.methods[k]}: {solution.reasons[k]}"
+        results.append(_result(case, record, "envelope", method, differences))
+
+
+def _check_points(case: _Case, solution: Envelope) -> dict[str, int]:
+    """Return the points of the video run at which ngspice linearises too: half way on both edges, end of the pulse."""
+    timeline, time = case.timeline, solution.time
+    first, second = case.netlist.through
+    level = np.abs(solution.frozen[0, :, second, first])
+    halves = np.flatnonzero(np.diff(level > 0.5 * level.max()))
+    points = {}
+    for name, start, stop in (
+        ("check_rise", timeline.rising, timeline.falling),
+        ("check_fall", timeline.falling, timeline.stop),
+    ):
+        inside = halves[(time[halves] > start) & (time[halves] < stop)]
+        if inside.size:
+            points[name] = int(inside[0])
+    # the command begins to fall half an edge before its 50 % point
+    points["check_end"] = int(np.searchsorted(time, timeline.falling - timeline.edge / 2.0, side="right")) - 1
+    return points
 
 
 def _carrier(
@@ -286,7 +311,7 @@ def _carrier(
         envelopes["carrier", frequency] = waveform
         record = _record(case, case.timeline, frequency, waveform, states[:, k], vectors)
         method = f"quadrature of two runs with {points} points a period, less one without RF"
-        results.append(_result(case, record, "carrier", method, []))
+        results.append(_result(case, record, "carrier", method, {}))
 
 
 def _record(
@@ -342,14 +367,12 @@ def _vector(vectors: Mapping[str, Array], name: str) -> Array:
     raise KeyError(name)
 
 
-def _result(case: _Case, record: Record, analysis: str, method: str, differences: Sequence[float]) -> Result:
+def _result(case: _Case, record: Record, analysis: str, method: str, differences: Mapping[str, float]) -> Result:
     figures = extract(record)
     faults = tuple(
-        f"{where}, the envelope differs by {format_quantity(difference, 'dB')} from ngspice's AC analysis at the same bias; "
-        f"at most {format_quantity(_TOLERATED, 'dB')} is sound"
-        for where, difference in zip(
-            ("before the first edge", "at the end of the pulse"), differences, strict=False
-        )
+        f"{_CHECKS[name]}, the envelope differs by {format_quantity(difference, 'dB')} from ngspice's AC analysis at "
+        f"the same bias; at most {format_quantity(_TOLERATED, 'dB')} is sound"
+        for name, difference in differences.items()
         if not difference <= _TOLERATED
     )
     return Result(
@@ -361,5 +384,5 @@ def _result(case: _Case, record: Record, analysis: str, method: str, differences
         judgements=judge(figures, case.design.limits),
         method=method,
         faults=faults,
-        check=max(differences) if differences else None,
+        check=max(differences.values()) if differences else None,
     )

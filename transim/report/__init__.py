@@ -1,0 +1,1 @@
+"""What a run says: as text, as a JSON document, as a folder of files."""

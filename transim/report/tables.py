@@ -1,0 +1,222 @@
+"""The figures of a run as plain text: one table a carrier, the drivers side by side."""
+
+from __future__ import annotations
+
+import itertools
+import textwrap
+from collections.abc import Iterable, Iterator, Sequence
+from dataclasses import dataclass
+
+from transim.measure.limits import Judgement, Limit
+from transim.measure.metrics import METRICS
+from transim.quantities import format_quantity
+from transim.study.run import Outcome
+from transim.study.simulate import Result
+
+__all__ = ["WIDTH", "Column", "align", "limit_text", "metric_tables", "verdict_word", "wrap"]
+
+#: Longest line of any output that is not a name of the user's own.
+WIDTH = 100
+_GAP = "  "
+
+
+@dataclass(frozen=True)
+class Column:
+    """A column of a table: its heading, its cells, and the side that they are aligned to."""
+
+    heading: str
+    cells: tuple[str, ...]
+    right: bool = False
+
+    @property
+    def width(self) -> int:
+        """Characters of the widest cell or heading."""
+        return max(map(len, (self.heading, *self.cells)))
+
+
+def align(columns: Sequence[Column], indent: str = "") -> list[str]:
+    """Set columns side by side.
+
+    Parameters
+    ----------
+    columns : sequence of Column
+        Of equal length.
+    indent : str
+        What every line starts with.
+
+    Returns
+    -------
+    list of str
+        Lines; the first holds the headings, unless all of them are empty.
+    """
+    lines = []
+    rows = zip(*((column.heading, *column.cells) for column in columns), strict=True)
+    for row in rows:
+        cells = [
+            cell.rjust(column.width) if column.right else cell.ljust(column.width)
+            for cell, column in zip(row, columns, strict=True)
+        ]
+        lines.append((indent + _GAP.join(cells)).rstrip())
+    return lines if any(column.heading for column in columns) else lines[1:]
+
+
+def wrap(text: str, indent: str = "", hanging: str = "  ") -> list[str]:
+    """Break a sentence into lines of at most `WIDTH` characters.
+
+    Parameters
+    ----------
+    text : str
+        The sentence.
+    indent, hanging : str
+        What the first line starts with, and what the others start with after that.
+
+    Returns
+    -------
+    list of str
+        The lines; a single word that is longer stays whole.
+    """
+    return textwrap.wrap(
+        text,
+        WIDTH,
+        initial_indent=indent,
+        subsequent_indent=indent + hanging,
+        break_long_words=False,
+        break_on_hyphens=False,
+    )
+
+
+def limit_text(limit: Limit | Judgement) -> str:
+    """Write a limit in words.
+
+    Parameters
+    ----------
+    limit : Limit or Judgement
+        With one bound or two.
+
+    Returns
+    -------
+    str
+        For example ``at most 500 ns``.
+    """
+    unit = METRICS[limit.metric].unit
+    if limit.min is None or limit.max is None:
+        bound = limit.max if limit.min is None else limit.min
+        word = "at most" if limit.min is None else "at least"
+        return word if bound is None else f"{word} {format_quantity(bound, unit)}"
+    return f"{format_quantity(limit.min, unit)} .. {format_quantity(limit.max, unit)}"
+
+
+def verdict_word(result: Result, judgement: Judgement) -> str:
+    """Return the verdict on one limit as a word: a run with a fault judges nothing.
+
+    Parameters
+    ----------
+    result : Result
+        The run.
+    judgement : Judgement
+        One of its own.
+
+    Returns
+    -------
+    str
+        ``PASS``, ``FAIL`` or ``UNDEFINED``.
+    """
+    return "UNDEFINED" if result.faults else judgement.verdict.upper()
+
+
+def metric_tables(outcome: Outcome) -> list[str]:
+    """Write the figures of all drivers.
+
+    Parameters
+    ----------
+    outcome : Outcome
+        The run of a design.
+
+    Returns
+    -------
+    list of str
+        For each temperature, carrier and analysis: the metrics that have a limit, then the others, then
+        the reasons of those that are undefined.
+    """
+
+    groups: dict[tuple[float, float, str], list[Result]] = {}
+    for result in outcome.results:
+        groups.setdefault((result.temperature, result.carrier, result.analysis), []).append(result)
+    lines: list[str] = []
+    for (temperature, carrier, analysis), group in groups.items():
+        place = f"{format_quantity(carrier, 'Hz', 12)} and {format_quantity(temperature, 'degC', 12)}"
+        lines += [f"At {place}, {analysis} analysis", "", *_group(group, outcome.design.limits), ""]
+    return lines[:-1]
+
+
+def _group(group: Sequence[Result], limits: Sequence[Limit]) -> Iterator[str]:
+    limited = tuple(dict.fromkeys(limit.metric for limit in limits))
+    others = tuple(name for name in METRICS if name not in limited)
+    if limited:
+        bounds = Column("limit", tuple(limit_text(limit) for limit in limits))
+        yield from _side_by_side(
+            Column("with a limit", limited), [_judged(result) for result in group], bounds
+        )
+        yield ""
+    heading = "without a limit" if limited else "metric"
+    titles = Column("meaning", tuple(METRICS[name].title for name in others))
+    columns = [_plain(result, others) for result in group]
+    names = Column(heading, others)
+    # the titles are worth a column only where no table has to be split for them
+    fits = sum(column.width + len(_GAP) for column in (names, *columns, titles)) <= WIDTH
+    yield from _side_by_side(names, columns, titles if fits else None)
+    reasons = _reasons(group)
+    if reasons:
+        yield ""
+        yield "  undefined (-), because"
+        for reason in reasons:
+            yield from wrap(reason, "  ", "    ")
+
+
+def _judged(result: Result) -> Column:
+    values = [_value(result, judgement.metric) for judgement in result.judgements]
+    words = [verdict_word(result, judgement) for judgement in result.judgements]
+    width = max(map(len, values), default=0)
+    return Column(
+        result.driver, tuple(f"{value:>{width}} {word}" for value, word in zip(values, words, strict=True))
+    )
+
+
+def _plain(result: Result, names: Iterable[str]) -> Column:
+    return Column(result.driver, tuple(_value(result, name) for name in names), right=True)
+
+
+def _value(result: Result, name: str) -> str:
+    figure = result.figures[name]
+    return "-" if figure.value is None else format_quantity(figure.value, figure.unit)
+
+
+def _side_by_side(names: Column, columns: Sequence[Column], last: Column | None) -> Iterator[str]:
+    """Set the columns of the drivers between names and last column, in several tables where they do not fit."""
+    ends = [names] if last is None else [names, last]
+    room = WIDTH - sum(column.width + len(_GAP) for column in ends)
+    rest = list(columns)
+    while rest:
+        widths = itertools.accumulate(column.width + len(_GAP) for column in rest)
+        count = max(1, sum(width <= room for width in widths))
+        if rest[0] is not columns[0]:
+            yield ""
+        yield from align([names, *rest[:count], *([] if last is None else [last])], "  ")
+        rest = rest[count:]
+
+
+def _reasons(group: Sequence[Result]) -> list[str]:
+    """Return each reason once, with the metrics and drivers that it holds for."""
+    metrics: dict[tuple[str, str], list[str]] = {}
+    for result in group:
+        for name, figure in result.figures.items():
+            if figure.value is None:
+                metrics.setdefault((figure.note or "no reason is known", result.driver), []).append(name)
+    drivers: dict[tuple[str, str], list[str]] = {}
+    for (note, driver), names in metrics.items():
+        drivers.setdefault((note, ", ".join(names)), []).append(driver)
+    everyone = [result.driver for result in group]
+    return [
+        f"{names}: {note}" if who == everyone else f"{names} ({', '.join(who)}): {note}"
+        for (note, names), who in drivers.items()
+    ]

@@ -1,0 +1,192 @@
+"""What stands around the figures of a run: its definitions before them, the verdicts after them."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Sequence
+
+from transim.measure.definitions import Definitions
+from transim.measure.limits import Judgement, Verdict
+from transim.measure.metrics import METRICS
+from transim.quantities import format_quantity
+from transim.report.tables import limit_text, verdict_word, wrap
+from transim.study.run import Outcome
+from transim.study.simulate import Result
+
+__all__ = ["definitions_text", "head_lines", "joined_verdict", "verdict_lines"]
+
+_LEVELS = {"voltage": "-20 and -0.915 dB", "power": "-10 and -0.458 dB"}
+_REFERENCES = {"static": "the static on state", "end_of_pulse": "the end of the on interval"}
+#: Smaller differences to ngspice's AC analysis are not worth their digits [dB].
+_SMALLEST = 1e-3
+
+
+def definitions_text(definitions: Definitions) -> str:
+    """State what the figures are counted from.
+
+    Parameters
+    ----------
+    definitions : Definitions
+        Of the design.
+
+    Returns
+    -------
+    str
+        One sentence: without it a switching time says nothing.
+    """
+    video = definitions.video_bandwidth
+    seen = "unfiltered" if video is None else f"through one pole at {format_quantity(video, 'Hz')}"
+    return (
+        f"10 and 90 % of RF {definitions.basis} ({_LEVELS[definitions.basis]}), 100 % is"
+        f" {_REFERENCES[definitions.reference]};"
+        f" settled within {format_quantity(definitions.settle_band, 'dB')} and"
+        f" {format_quantity(definitions.phase_band, 'deg')};"
+        f" off at {format_quantity(definitions.isolation_level, 'dB')}; video leakage {seen},"
+        f" in band per {format_quantity(definitions.resolution_bandwidth, 'Hz')}"
+    )
+
+
+def head_lines(outcome: Outcome) -> list[str]:
+    """Write what was run, and by which definitions.
+
+    Parameters
+    ----------
+    outcome : Outcome
+        The run of a design.
+
+    Returns
+    -------
+    list of str
+        Title, then engine, analyses and temperatures, then definitions.
+    """
+    design = outcome.design
+    analyses = " and ".join(dict.fromkeys(result.analysis for result in outcome.results))
+    degrees = ", ".join(format_quantity(value, "degC", 12) for value in design.environment.temperature)
+    return [
+        *wrap(design.title),
+        *wrap(f"{outcome.engine}; {analyses} analysis; {degrees}; design file {design.source.path.name}"),
+        *wrap(f"Times from the 50 % points of the command; {definitions_text(design.definitions)}."),
+    ]
+
+
+def verdict_lines(outcome: Outcome) -> list[str]:
+    """Write the verdict on each driver with its ground, and the verdict on all.
+
+    Parameters
+    ----------
+    outcome : Outcome
+        The run of a design.
+
+    Returns
+    -------
+    list of str
+        A block a driver: verdict, worst limit, faults, how the envelope was found. The last line is the
+        verdict on the whole run.
+    """
+    lines = []
+    drivers = tuple(dict.fromkeys(case.driver for case in outcome.cases))
+    verdicts: dict[str, Verdict] = {}
+    for driver in drivers:
+        results = [result for result in outcome.results if result.driver == driver]
+        verdicts[driver] = joined_verdict(results)
+        lines += [*_driver(driver, results, verdicts[driver]), ""]
+    return [*lines, *wrap(_overall(outcome, verdicts))]
+
+
+def joined_verdict(results: Sequence[Result]) -> Verdict:
+    """Return the verdict over several results.
+
+    Parameters
+    ----------
+    results : sequence of Result
+        The results.
+
+    Returns
+    -------
+    {"pass", "fail", "undefined"}
+        Fail if any fails, else undefined if any is undefined, else pass.
+    """
+    found = {result.verdict for result in results}
+    if "fail" in found:
+        return "fail"
+    return "undefined" if "undefined" in found else "pass"
+
+
+def _overall(outcome: Outcome, verdicts: dict[str, Verdict]) -> str:
+    if not outcome.design.limits:
+        return f"Verdict: {outcome.verdict.upper()}; the design sets no limits"
+    same = [driver for driver, verdict in verdicts.items() if verdict == outcome.verdict]
+    what = {
+        "pass": "every limit is met",
+        "fail": f"a limit is missed by {', '.join(same)}",
+        "undefined": f"a limit cannot be judged for {', '.join(same)}",
+    }
+    good = [driver for driver, verdict in verdicts.items() if verdict == "pass"]
+    also = f"; every limit is met by {', '.join(good)}" if good and outcome.verdict != "pass" else ""
+    return f"Verdict: {outcome.verdict.upper()}; {what[outcome.verdict]}{also}"
+
+
+def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterator[str]:
+    judged = [(result, judgement) for result in results for judgement in result.judgements]
+    words = [verdict_word(result, judgement) for result, judgement in judged]
+    counts = [f"{words.count(word)} {text}" for word, text in _COUNTED.items() if words.count(word)]
+    yield from wrap(
+        f"{driver}: {verdict.upper()}; {', '.join(counts)}" if judged else f"{driver}: no limits to judge"
+    )
+    several = len({result.temperature for result in results}) > 1
+    places = {id(result): _place(result, several) for result in results}
+    known = [pair for pair in judged if pair[1].margin is not None and not pair[0].faults]
+    if known:
+        result, judgement = min(known, key=lambda pair: _relative(pair[1]))
+        yield from wrap(_margin(judgement, places[id(result)]), "  ")
+    for result, judgement in judged:
+        if judgement.value is None:
+            note = result.figures[judgement.metric].note
+            yield from wrap(f"undefined: {judgement.metric} at {places[id(result)]}, {note}", "  ")
+    for result in results:
+        for fault in result.faults:
+            yield from wrap(f"fault at {places[id(result)]}: {fault}", "  ")
+    for result in results:
+        yield from wrap(f"{result.analysis} at {places[id(result)]}: {result.method}", "  ")
+    checks = [result.check for result in results if result.check is not None]
+    if checks:
+        found = f"by {format_quantity(max(checks), 'dB', 2)} at most" if max(checks) > _SMALLEST else ""
+        found = found or f"by less than {format_quantity(_SMALLEST, 'dB')}"
+        yield from wrap(f"check: the envelope's ends differ from ngspice's own .ac {found}", "  ")
+
+
+_COUNTED = {"PASS": "met", "FAIL": "missed", "UNDEFINED": "undefined"}
+
+
+def _place(result: Result, several: bool) -> str:
+    place = format_quantity(result.carrier, "Hz", 12)
+    return f"{place} and {format_quantity(result.temperature, 'degC', 12)}" if several else place
+
+
+def _bound(judgement: Judgement) -> float:
+    """Return the bound that the margin is counted from."""
+    value, low, high = judgement.value, judgement.min, judgement.max
+    if value is None or (low is None and high is None):
+        return math.nan
+    if low is None or high is None:
+        return float(high if low is None else low)  # type: ignore[arg-type]
+    return low if value - low <= high - value else high
+
+
+def _relative(judgement: Judgement) -> float:
+    """Return the margin as a share of its bound, which makes limits of all units comparable."""
+    margin, bound = judgement.margin or 0.0, abs(_bound(judgement))
+    return margin / bound if bound > 0.0 else math.copysign(math.inf, margin) if margin else 0.0
+
+
+def _margin(judgement: Judgement, place: str) -> str:
+    unit = METRICS[judgement.metric].unit
+    value, margin = judgement.value or 0.0, judgement.margin or 0.0
+    share = _relative(judgement)
+    percent = f" ({abs(100.0 * share):.3g} %)" if math.isfinite(share) and unit not in ("dB", "dBm") else ""
+    word = "worst" if margin < 0.0 else "closest"
+    side = "outside" if margin < 0.0 else "inside"
+    return (
+        f"{word}: {judgement.metric} at {place} is {format_quantity(value, unit)}, that is"
+        f" {format_quantity(abs(margin), unit)}{percent} {side} its limit of {limit_text(judgement)}"
+    )

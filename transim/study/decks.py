@@ -1,0 +1,89 @@
+"""The decks of one driver at one temperature that can be written without running any of them."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from pathlib import Path
+
+from transim.circuit.assemble import assemble
+from transim.circuit.decks import Deck, Origin, Tone, carrier_deck, static_deck, video_deck
+from transim.circuit.timeline import timeline_of
+from transim.design.model import Design, Driver
+
+__all__ = ["carrier_decks", "case_decks"]
+
+#: Carrier periods before the first edge for the start-up to die away, and after the judged cycle.
+_SETTLING_PERIODS, _OVERRUN_PERIODS = 20.0, 2.0
+
+
+def case_decks(design: Design, driver: Driver, temperature: float) -> tuple[Deck, Deck]:
+    """Write the static and the video deck.
+
+    Parameters
+    ----------
+    design : Design
+        The design.
+    driver : Driver
+        One of its drivers.
+    temperature : float
+        [degC].
+
+    Returns
+    -------
+    tuple of Deck
+        Static and video; the video deck of an envelope analysis saves some device currents more.
+
+    Raises
+    ------
+    TopologyError
+        If path and driver do not fit together.
+    """
+    netlist, origin = assemble(design, driver), _origin(design, driver, temperature)
+    control, numerics = design.control, design.numerics
+    return (
+        static_deck(netlist, control, design.carrier.frequency, numerics, origin),
+        video_deck(netlist, control, timeline_of(design), numerics, origin),
+    )
+
+
+def carrier_decks(design: Design, driver: Driver, temperature: float, frequency: float) -> Sequence[Deck]:
+    """Write the decks of the carrier analysis: two in quadrature, one without RF.
+
+    Parameters
+    ----------
+    design : Design
+        The design.
+    driver : Driver
+        One of its drivers.
+    temperature, frequency : float
+        [degC], [Hz].
+
+    Returns
+    -------
+    sequence of Deck
+        At 0 deg, at 90 deg, and quiet.
+
+    Raises
+    ------
+    TopologyError
+        If path and driver do not fit together.
+    """
+    netlist, origin = assemble(design, driver), _origin(design, driver, temperature)
+    timeline = timeline_of(
+        design, settle=_SETTLING_PERIODS / frequency, overrun=_OVERRUN_PERIODS / frequency
+    )
+    # available power of a source of amplitude E behind Z0 is E^2 / 8 Z0
+    watts = 1e-3 * 10.0 ** (design.carrier.level / 10.0)
+    amplitude = math.sqrt(8.0 * watts * design.carrier.impedance)
+    port = netlist.through[0]
+    return [
+        carrier_deck(
+            netlist, design.control, timeline, design.numerics, origin, Tone(frequency, size, phase, port)
+        )
+        for size, phase in ((amplitude, 0.0), (amplitude, 90.0), (0.0, 0.0))
+    ]
+
+
+def _origin(design: Design, driver: Driver, temperature: float) -> Origin:
+    return Origin(design.title, Path(design.source.path).name, driver.name, temperature)
