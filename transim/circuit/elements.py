@@ -16,6 +16,7 @@ from transim.errors import LinearisationError, NetlistError
 __all__ = ["Behavioural", "Circuit", "Coupling", "Device", "Element", "Model", "read_listing"]
 
 _LISTED = re.compile(r"^\s*(\d+) : (.*)$")
+_OPTION = re.compile(r"\s(?:reciproctc|reciprocm|tc1|tc2|m|temp|dtemp)\s*=", re.IGNORECASE)
 _ASSIGNMENT = re.compile(r"([a-z_]\w*)\s*=\s*", re.IGNORECASE)
 
 #: Why an element letter stops the envelope solver, and what the user can do.
@@ -236,18 +237,24 @@ def _read_element(line: str, models: Mapping[str, Model]) -> Element | Coupling 
         return _read_device(name, words, models)
     if letter in "vi":
         return Element(name, (_node(words[1]), _node(words[2])), 0.0)
-    if letter in "fh":
-        return Element(name, (_node(words[1]), _node(words[2])), spice_number(words[4]), words[3].lower())
-    if letter in "eg":
-        plain, _ = _split(words)
-        if len(plain) != 6:
-            raise LinearisationError(name.upper(), f"cannot read this form of controlled source: {line!r}")
-        return Element(name, tuple(map(_node, plain[1:5])), spice_number(plain[5]))
+    if letter in "efgh":
+        return _read_controlled(name, line)
     if letter in "rlc":
         return _read_passive(name, words)
     raise LinearisationError(
         name.upper(), f"element letter {letter.upper()!r} is not known to the envelope solver"
     )
+
+
+def _read_controlled(name: str, line: str) -> Element:
+    plain, extra = _split(line.split())
+    multiplier = extra.pop("m", 1.0) if name[0] in "fg" else 1.0
+    if extra or len(plain) != (6 if name[0] in "eg" else 5):
+        raise LinearisationError(name.upper(), f"cannot read this form of controlled source: {line!r}")
+    gain = spice_number(plain[-1]) * multiplier
+    if name[0] in "eg":
+        return Element(name, tuple(map(_node, plain[1:5])), gain)
+    return Element(name, (_node(plain[1]), _node(plain[2])), gain, plain[3].lower())
 
 
 def _read_passive(name: str, words: list[str]) -> Element:
@@ -286,10 +293,23 @@ def _read_behavioural(name: str, line: str) -> Behavioural:
     match = re.match(r"([iv])\s*=\s*(.*)$", words[3], re.IGNORECASE)
     if match is None:
         raise LinearisationError(name.upper(), f"cannot read its line {line!r}")
-    # ngspice appends options of its own to the sources that it makes of behavioural resistors and capacitors
-    text = re.split(r"\s(?:reciproctc|reciprocm|tc1|tc2|m|temp|dtemp)\s*=", match[2], maxsplit=1)[0]
+    text, options = _split_options(name, match[2])
+    multiplier = options.pop("m", 1.0)
+    if multiplier != 1.0:
+        if match[1].lower() == "v" or options.get("reciprocm", 0.0) != 0.0:
+            raise LinearisationError(name.upper(), "its parameter m is not known to the envelope solver")
+        text = f"{multiplier!r}*({text})"
+    for option in ("tc1", "tc2"):
+        if options.get(option, 0.0) != 0.0:
+            raise LinearisationError(name.upper(), f"its parameter {option} is not known to the envelope solver")
     try:
         law = parse_expression(text)
     except ExpressionError as error:
         raise LinearisationError(name.upper(), str(error)) from error
     return Behavioural(name, (_node(words[1]), _node(words[2])), match[1].lower(), law)
+
+
+def _split_options(name: str, text: str) -> tuple[str, dict[str, float]]:
+    """Cut off the options after an expression; ngspice appends some to what it makes of behavioural R, C and L."""
+    match = _OPTION.search(text)
+    return (text, {}) if match is None else (text[: match.start()], _assignments(text[match.start() :], name.upper()))

@@ -163,10 +163,13 @@ def _guarded(function: Callable[[Array], Array]) -> Callable[[Array], Array]:
     return evaluate
 
 
+_LARGEST = 99.0 * np.log(10.0)
+
 _UNARY: dict[str, tuple[Callable[[Array], Array], Callable[[Array], Array]]] = {
     "abs": (np.abs, np.sign),
     "sqrt": (lambda x: np.sqrt(np.abs(x)), lambda x: 0.5 / np.sqrt(np.maximum(np.abs(x), 1e-300))),
-    "exp": (np.exp, np.exp),
+    # ngspice lets an exponential grow to 1e99 and no further
+    "exp": (lambda x: np.exp(np.minimum(x, _LARGEST)), lambda x: np.exp(np.minimum(x, _LARGEST))),
     "ln": (lambda x: np.log(np.abs(x)), lambda x: 1 / x),
     "log": (lambda x: np.log(np.abs(x)), lambda x: 1 / x),
     "log10": (lambda x: np.log10(np.abs(x)), lambda x: 1 / (x * np.log(10.0))),
@@ -182,7 +185,7 @@ _UNARY: dict[str, tuple[Callable[[Array], Array], Callable[[Array], Array]]] = {
     "asinh": (np.arcsinh, lambda x: 1 / np.sqrt(x * x + 1)),
     "acosh": (np.arccosh, lambda x: 1 / np.sqrt(x * x - 1)),
     "atanh": (np.arctanh, lambda x: 1 / (1 - x * x)),
-    "u": (lambda x: np.where(x > 0, 1.0, 0.0), np.zeros_like),
+    "u": (lambda x: np.heaviside(x, 0.5), np.zeros_like),
     "u2": (lambda x: np.clip(x, 0, 1), lambda x: np.where((x > 0) & (x < 1), 1.0, 0.0)),
     "uramp": (lambda x: np.maximum(x, 0), lambda x: np.where(x > 0, 1.0, 0.0)),
     "sgn": (np.sign, np.zeros_like),
@@ -260,7 +263,7 @@ _BINARY: dict[str, Callable[[Dual, Dual], Dual]] = {
     "|": _flag(lambda x, y: (x != 0) | (y != 0)),
 }
 _LEVELS = (("||", "|"), ("&&", "&"), ("==", "!=", "<>"), ("<", ">", "<=", ">="), ("+", "-"), ("*", "/"))
-_CONSTANTS = {"pi": np.pi, "e": np.e, "temper": None, "time": None, "kelvin": -273.15}
+_CONSTANTS = {"pi": np.pi, "e": np.e, "temper": None, "time": None}
 
 
 class _Reader:
@@ -326,10 +329,12 @@ class _Reader:
         return self.power()
 
     def power(self) -> Node:
+        # ngspice takes powers from the left: 2^3^2 is 64
         left = self.atom()
-        if self.peek()[1] in ("^", "**"):
+        while self.peek()[1] in ("^", "**"):
             self.take()
-            return _binary("^", left, self.signed())
+            exponent = self.signed() if self.peek()[1] in ("-", "+", "!", "~") else self.atom()
+            left = _binary("^", left, exponent)
         return left
 
     def atom(self) -> Node:

@@ -56,7 +56,7 @@ class DiodeLaw:
 
     def __init__(self, device: Device, temperature: float) -> None:
         given = {_ALIASES.get(key, key): value for key, value in device.model.parameters.items()}
-        used = sorted(key for key in given if key in _UNKNOWN) + sorted(
+        used = sorted(key for key in given if key in _UNKNOWN and given[key] != 0.0) + sorted(
             set(device.parameters) - {"area", "m"}
         )
         if given.get("level", 1.0) != 1.0:

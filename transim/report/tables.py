@@ -3,86 +3,16 @@
 from __future__ import annotations
 
 import itertools
-import textwrap
 from collections.abc import Iterable, Iterator, Sequence
-from dataclasses import dataclass
 
 from transim.measure.limits import Judgement, Limit
 from transim.measure.metrics import METRICS
 from transim.quantities import format_quantity
+from transim.report.layout import GAP, WIDTH, Column, align, wrap
 from transim.study.run import Outcome
 from transim.study.simulate import Result
 
-__all__ = ["WIDTH", "Column", "align", "limit_text", "metric_tables", "verdict_word", "wrap"]
-
-#: Longest line of any output that is not a name of the user's own.
-WIDTH = 100
-_GAP = "  "
-
-
-@dataclass(frozen=True)
-class Column:
-    """A column of a table: its heading, its cells, and the side that they are aligned to."""
-
-    heading: str
-    cells: tuple[str, ...]
-    right: bool = False
-
-    @property
-    def width(self) -> int:
-        """Characters of the widest cell or heading."""
-        return max(map(len, (self.heading, *self.cells)))
-
-
-def align(columns: Sequence[Column], indent: str = "") -> list[str]:
-    """Set columns side by side.
-
-    Parameters
-    ----------
-    columns : sequence of Column
-        Of equal length.
-    indent : str
-        What every line starts with.
-
-    Returns
-    -------
-    list of str
-        Lines; the first holds the headings, unless all of them are empty.
-    """
-    lines = []
-    rows = zip(*((column.heading, *column.cells) for column in columns), strict=True)
-    for row in rows:
-        cells = [
-            cell.rjust(column.width) if column.right else cell.ljust(column.width)
-            for cell, column in zip(row, columns, strict=True)
-        ]
-        lines.append((indent + _GAP.join(cells)).rstrip())
-    return lines if any(column.heading for column in columns) else lines[1:]
-
-
-def wrap(text: str, indent: str = "", hanging: str = "  ") -> list[str]:
-    """Break a sentence into lines of at most `WIDTH` characters.
-
-    Parameters
-    ----------
-    text : str
-        The sentence.
-    indent, hanging : str
-        What the first line starts with, and what the others start with after that.
-
-    Returns
-    -------
-    list of str
-        The lines; a single word that is longer stays whole.
-    """
-    return textwrap.wrap(
-        text,
-        WIDTH,
-        initial_indent=indent,
-        subsequent_indent=indent + hanging,
-        break_long_words=False,
-        break_on_hyphens=False,
-    )
+__all__ = ["limit_text", "metric_tables", "verdict_word"]
 
 
 def limit_text(limit: Limit | Judgement) -> str:
@@ -138,7 +68,6 @@ def metric_tables(outcome: Outcome) -> list[str]:
         For each temperature, carrier and analysis: the metrics that have a limit, then the others, then
         the reasons of those that are undefined.
     """
-
     groups: dict[tuple[float, float, str], list[Result]] = {}
     for result in outcome.results:
         groups.setdefault((result.temperature, result.carrier, result.analysis), []).append(result)
@@ -163,7 +92,7 @@ def _group(group: Sequence[Result], limits: Sequence[Limit]) -> Iterator[str]:
     columns = [_plain(result, others) for result in group]
     names = Column(heading, others)
     # the titles are worth a column only where no table has to be split for them
-    fits = sum(column.width + len(_GAP) for column in (names, *columns, titles)) <= WIDTH
+    fits = sum(column.width + len(GAP) for column in (names, *columns, titles)) <= WIDTH
     yield from _side_by_side(names, columns, titles if fits else None)
     reasons = _reasons(group)
     if reasons:
@@ -177,9 +106,8 @@ def _judged(result: Result) -> Column:
     values = [_value(result, judgement.metric) for judgement in result.judgements]
     words = [verdict_word(result, judgement) for judgement in result.judgements]
     width = max(map(len, values), default=0)
-    return Column(
-        result.driver, tuple(f"{value:>{width}} {word}" for value, word in zip(values, words, strict=True))
-    )
+    cells = tuple(f"{value:>{width}} {word}" for value, word in zip(values, words, strict=True))
+    return Column(result.driver.rjust(width), cells)
 
 
 def _plain(result: Result, names: Iterable[str]) -> Column:
@@ -194,10 +122,10 @@ def _value(result: Result, name: str) -> str:
 def _side_by_side(names: Column, columns: Sequence[Column], last: Column | None) -> Iterator[str]:
     """Set the columns of the drivers between names and last column, in several tables where they do not fit."""
     ends = [names] if last is None else [names, last]
-    room = WIDTH - sum(column.width + len(_GAP) for column in ends)
+    room = WIDTH - sum(column.width + len(GAP) for column in ends)
     rest = list(columns)
     while rest:
-        widths = itertools.accumulate(column.width + len(_GAP) for column in rest)
+        widths = itertools.accumulate(column.width + len(GAP) for column in rest)
         count = max(1, sum(width <= room for width in widths))
         if rest[0] is not columns[0]:
             yield ""

@@ -9,19 +9,20 @@ from transim.measure.definitions import Definitions
 from transim.measure.limits import Judgement, Verdict
 from transim.measure.metrics import METRICS
 from transim.quantities import format_quantity
-from transim.report.tables import limit_text, verdict_word, wrap
+from transim.report.layout import wrap
+from transim.report.tables import limit_text, verdict_word
 from transim.study.run import Outcome
 from transim.study.simulate import Result
 
-__all__ = ["definitions_text", "head_lines", "joined_verdict", "verdict_lines"]
+__all__ = ["definition_lines", "head_lines", "joined_verdict", "verdict_lines"]
 
 _LEVELS = {"voltage": "-20 and -0.915 dB", "power": "-10 and -0.458 dB"}
-_REFERENCES = {"static": "the static on state", "end_of_pulse": "the end of the on interval"}
+_REFERENCES = {"static": "static on state", "end_of_pulse": "end of the on interval"}
 #: Smaller differences to ngspice's AC analysis are not worth their digits [dB].
 _SMALLEST = 1e-3
 
 
-def definitions_text(definitions: Definitions) -> str:
+def definition_lines(definitions: Definitions) -> list[str]:
     """State what the figures are counted from.
 
     Parameters
@@ -31,19 +32,19 @@ def definitions_text(definitions: Definitions) -> str:
 
     Returns
     -------
-    str
-        One sentence: without it a switching time says nothing.
+    list of str
+        Two lines: without them a switching time says nothing.
     """
     video = definitions.video_bandwidth
     seen = "unfiltered" if video is None else f"through one pole at {format_quantity(video, 'Hz')}"
-    return (
-        f"10 and 90 % of RF {definitions.basis} ({_LEVELS[definitions.basis]}), 100 % is"
-        f" {_REFERENCES[definitions.reference]};"
-        f" settled within {format_quantity(definitions.settle_band, 'dB')} and"
-        f" {format_quantity(definitions.phase_band, 'deg')};"
-        f" off at {format_quantity(definitions.isolation_level, 'dB')}; video leakage {seen},"
-        f" in band per {format_quantity(definitions.resolution_bandwidth, 'Hz')}"
-    )
+    band, phase = format_quantity(definitions.settle_band, "dB"), format_quantity(definitions.phase_band, "deg")
+    return [
+        f"times from the command's 50 % points to 10 and 90 % of RF {definitions.basis}"
+        f" ({_LEVELS[definitions.basis]});",
+        f"100 % is the {_REFERENCES[definitions.reference]}; settled within {band} and {phase}; off at"
+        f" {format_quantity(definitions.isolation_level, 'dB')};",
+        f"video leakage {seen}, in band per {format_quantity(definitions.resolution_bandwidth, 'Hz')}",
+    ]
 
 
 def head_lines(outcome: Outcome) -> list[str]:
@@ -65,7 +66,7 @@ def head_lines(outcome: Outcome) -> list[str]:
     return [
         *wrap(design.title),
         *wrap(f"{outcome.engine}; {analyses} analysis; {degrees}; design file {design.source.path.name}"),
-        *wrap(f"Times from the 50 % points of the command; {definitions_text(design.definitions)}."),
+        *wrap(" ".join(definition_lines(design.definitions))),
     ]
 
 
@@ -152,7 +153,7 @@ def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterato
     if checks:
         found = f"by {format_quantity(max(checks), 'dB', 2)} at most" if max(checks) > _SMALLEST else ""
         found = found or f"by less than {format_quantity(_SMALLEST, 'dB')}"
-        yield from wrap(f"check: the envelope's ends differ from ngspice's own .ac {found}", "  ")
+        yield from wrap(f"check: S differs from ngspice's own .ac at the same biases {found}", "  ")
 
 
 _COUNTED = {"PASS": "met", "FAIL": "missed", "UNDEFINED": "undefined"}

@@ -12,7 +12,7 @@ from transim.measure.limits import Verdict
 from transim.parts.nearest import nearest_name
 from transim.study.simulate import CaseRun, Result, simulate
 
-__all__ = ["ANALYSES", "Outcome", "Progress", "run_design"]
+__all__ = ["ANALYSES", "Outcome", "Progress", "choose_drivers", "run_design"]
 
 #: Analyses by the name under which they are asked for.
 ANALYSES = {"envelope": ("envelope",), "carrier": ("carrier",), "both": ("envelope", "carrier")}
@@ -92,7 +92,7 @@ def run_design(
     EngineError
         If a deck fails.
     """
-    chosen = _choose(design, drivers)
+    chosen = choose_drivers(design, drivers)
     todo = [(driver, temperature) for driver in chosen for temperature in design.environment.temperature]
     cases = []
     for done, (driver, temperature) in enumerate(todo):
@@ -104,7 +104,26 @@ def run_design(
     return Outcome(design, f"ngspice {engine.version}", tuple(cases))
 
 
-def _choose(design: Design, names: Sequence[str]) -> list[Driver]:
+def choose_drivers(design: Design, names: Sequence[str]) -> list[Driver]:
+    """Return drivers of a design by name.
+
+    Parameters
+    ----------
+    design : Design
+        The design.
+    names : sequence of str
+        Their names; none means all.
+
+    Returns
+    -------
+    list of Driver
+        In the order of the names, each once.
+
+    Raises
+    ------
+    DesignError
+        If there is no driver of a name.
+    """
     if not names:
         return list(design.drivers)
     known = {driver.name: driver for driver in design.drivers}

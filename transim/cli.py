@@ -1,0 +1,241 @@
+"""The command line: how the commands and their options are spelled, and what an exit status means.
+
+Only this module imports click. What a command needs is imported when it is called, so that help and errors
+come at once.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import functools
+import signal
+import sys
+import threading
+import traceback
+from collections.abc import Callable, Iterator, Sequence
+from pathlib import Path
+from typing import Any, NoReturn
+
+import click
+
+from transim import __version__
+from transim.errors import DesignError, TransimError
+
+__all__ = ["main"]
+
+_INTERRUPTED, _TERMINATED = 130, 143
+_Command = Callable[..., int]
+
+
+class _Commands(click.Group):
+    """A group that answers an unknown command with the nearest one."""
+
+    def resolve_command(self, ctx: click.Context, args: list[str]) -> Any:
+        from transim.parts.nearest import nearest_name
+
+        if args and self.get_command(ctx, args[0]) is None and not args[0].startswith("-"):
+            nearest = nearest_name(args[0], self.commands)
+            raise click.UsageError(
+                f"there is no command {args[0]}" + (f"; did you mean {nearest}?" if nearest else ""), ctx
+            )
+        return super().resolve_command(ctx, args)
+
+
+@click.group(
+    cls=_Commands,
+    context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100},
+    epilog="Exit status: 0 all limits met; 1 a limit missed; 2 bad command line, design file or netlist; 3 ngspice"
+    " missing or failed; 4 a limited metric is undefined; 130, 143 interrupted, terminated.",
+)
+@click.version_option(__version__, message="transim %(version)s")
+def _transim() -> None:
+    """Switching transients of solid-state RF switches and their drivers.
+
+    Reads a design file (TOML), runs it on ngspice, and judges switching times, video leakage and driver
+    currents against the limits in it.
+    """
+
+
+def _common(command: _Command) -> Callable[..., int]:
+    """Add the options that every command has."""
+
+    @click.option("--json", "json", metavar="FILE|-", help="Also write a JSON document; - for standard output instead of text.")
+    @click.option(
+        "--color", type=click.Choice(["auto", "always", "never"]), default="auto", show_default=True, help="Colours of the text."
+    )
+    @click.option("--debug", is_flag=True, expose_value=False, help="Show the traceback of an error.")
+    @functools.wraps(command)
+    def wrapped(json: str | None, color: str, **arguments: Any) -> int:
+        from transim.commands.console import Console
+
+        console = Console(json, color)
+        console.check()
+        return command(console, **arguments)
+
+    return wrapped
+
+
+_design = click.argument("design", type=click.Path(path_type=Path))
+_force = click.option("--force", is_flag=True, help="Replace what an earlier call wrote; other files stay.")
+_ngspice = click.option("--ngspice", metavar="PATH", help="The ngspice to use; else TRANSIM_NGSPICE, else PATH is searched.")
+_drivers = click.option("--driver", "drivers", metavar="NAME", multiple=True, help="Only this driver; may be repeated.")
+
+
+@_transim.command("new")
+@click.argument("file")
+@click.option("--path", metavar="NAME", default="series_pair", show_default=True, help="A path part.")
+@click.option("--driver", metavar="NAME", default="push_pull_speedup", show_default=True, help="A driver part.")
+@click.option("--force", is_flag=True, help="Replace FILE if it exists.")
+@_common
+def _new(console: Any, file: str, path: str, driver: str, force: bool) -> int:
+    """Write a starting design FILE (- for standard output): every key, its default and its meaning."""
+    from transim.commands.new import new_design
+
+    return new_design(console, file, path, driver, force=force)
+
+
+@_transim.command("check")
+@_design
+@_common
+def _check(console: Any, design: Path) -> int:
+    """Read DESIGN and say what circuit it makes, without running it."""
+    from transim.commands.check import check_design
+
+    return check_design(console, design)
+
+
+@_transim.command("parts")
+@click.argument("name", required=False)
+@click.option("--folder", type=click.Path(path_type=Path), metavar="DIR", help="Also the part files of your own in DIR.")
+@_common
+def _parts(console: Any, name: str | None, folder: Path | None) -> int:
+    """List the part files, or describe the part NAME with all its parameters."""
+    from transim.commands.parts import show_parts
+
+    return show_parts(console, name, folder)
+
+
+@_transim.command("deck")
+@_design
+@click.option("--out", type=click.Path(path_type=Path), required=True, metavar="DIR", help="Folder for the decks.")
+@_drivers
+@_force
+@_common
+def _deck(console: Any, design: Path, out: Path, drivers: Sequence[str], force: bool) -> int:
+    """Write every deck of DESIGN, one folder a driver; each runs in plain ngspice by itself."""
+    from transim.commands.deck import write_design_decks
+
+    return write_design_decks(console, design, out, drivers, force=force)
+
+
+@_transim.command("run")
+@_design
+@click.option(
+    "--analysis",
+    type=click.Choice(["envelope", "carrier", "both"]),
+    default="envelope",
+    show_default=True,
+    help="envelope: small signal, fast; carrier: the RF resolved at its real level, slow.",
+)
+@_drivers
+@click.option("--out", type=click.Path(path_type=Path), metavar="DIR", help="Folder for result.json, decks and waveforms.")
+@_force
+@_ngspice
+@_common
+def _run(console: Any, design: Path, **options: Any) -> int:
+    """Simulate the drivers of DESIGN at all its carriers and temperatures, and judge them side by side."""
+    from transim.commands.run import RunRequest, run_and_report
+
+    return run_and_report(console, RunRequest(design, **options))
+
+
+@_transim.command("engine")
+@_ngspice
+@_common
+def _engine(console: Any, ngspice: str | None) -> int:
+    """Say which ngspice is used and where it was looked for, and test it."""
+    from transim.commands.engine import show_engine
+
+    return show_engine(console, ngspice)
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run one command.
+
+    Parameters
+    ----------
+    arguments : sequence of str or None
+        Words after the program's name; None: those of the process.
+
+    Returns
+    -------
+    int
+        Exit status.
+    """
+    words = list(sys.argv[1:] if arguments is None else arguments)
+    with _termination():
+        try:
+            status = _transim.main(words, prog_name="transim", standalone_mode=False)
+        except TransimError as error:
+            return _fail(error, words)
+        except click.UsageError as error:
+            return _fail(_usage(error), words)
+        except (KeyboardInterrupt, click.Abort):
+            return _INTERRUPTED
+        except SystemExit as leaving:
+            return leaving.code if isinstance(leaving.code, int) else 1
+        except Exception as error:  # noqa: BLE001 - the last resort: no traceback unless it is asked for
+            text = f"{type(error).__name__}: {error}".splitlines()[0]
+            return _fail(TransimError(f"unexpected {text}; run again with --debug to see where"), words)
+        return status if isinstance(status, int) else 0
+
+
+def _usage(error: click.UsageError) -> DesignError:
+    path = error.ctx.command_path if error.ctx is not None else "transim"
+    message = error.format_message().rstrip(".")
+    return DesignError(f"{message[:1].lower()}{message[1:]} ({path} --help says what there is)")
+
+
+def _fail(error: TransimError, words: Sequence[str]) -> int:
+    """Report an error on standard error, and as the document where one is wanted."""
+    if "--debug" in words:
+        traceback.print_exc()
+    single = getattr(error, "errors", (error,))
+    sys.stderr.write("".join(f"error: {one}\n" for one in single))
+    target = _value_of("--json", words)
+    if target is not None:
+        from transim.commands.console import Console
+        from transim.report.document import error_document
+
+        with contextlib.suppress(TransimError):
+            Console(target).document(error_document(error))
+    return error.exit_code
+
+
+def _value_of(option: str, words: Sequence[str]) -> str | None:
+    """Find an option's value where the command line could not be read."""
+    for word, following in zip(words, [*words[1:], None], strict=True):
+        if word == "--":
+            return None
+        if word == option:
+            return following
+        if word.startswith(f"{option}="):
+            return word.partition("=")[2]
+    return None
+
+
+@contextlib.contextmanager
+def _termination() -> Iterator[None]:
+    """Let a request to terminate unwind the program as Ctrl-C does: what was started is ended, nothing half stays."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+
+    def leave(_number: int, _frame: object) -> NoReturn:
+        raise SystemExit(_TERMINATED)
+
+    before = signal.signal(signal.SIGTERM, leave)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGTERM, before)

@@ -1,0 +1,1 @@
+"""What the commands do; each module has one, and none knows how its options are spelled."""

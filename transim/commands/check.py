@@ -1,0 +1,216 @@
+"""Command `check`: the circuit that a design makes, in words."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from pathlib import Path
+from typing import Any
+
+from transim.circuit.assemble import assemble
+from transim.circuit.timeline import Timeline, timeline_of
+from transim.commands.console import Console
+from transim.design.model import Design, Driver, Junction
+from transim.design.toml import read_design
+from transim.measure.metrics import METRICS
+from transim.parts.part import Part
+from transim.quantities import format_quantity
+from transim.report.document import FORMAT
+from transim.report.layout import Column, align, wrap
+from transim.report.tables import limit_text
+from transim.report.verdicts import definitions_text
+
+__all__ = ["check_design"]
+
+
+def check_design(console: Console, file: Path) -> int:
+    """Read a design, put its circuits together, and describe them.
+
+    Parameters
+    ----------
+    console : Console
+        Where to write.
+    file : Path
+        The design file.
+
+    Returns
+    -------
+    int
+        Exit status.
+
+    Raises
+    ------
+    InvalidDesign
+        With all the errors of the file.
+    TopologyError
+        If path, junctions and a driver do not fit together.
+    """
+    design = read_design(file)
+    for driver in design.drivers:
+        assemble(design, driver)
+    console.write([*_describe(design), f"{file}: no errors; next: transim run {file}"])
+    console.document(_document(design))
+    return 0
+
+
+def _describe(design: Design) -> Iterator[str]:
+    yield from wrap(design.title)
+    for section in (_command(design), _path(design), _junctions(design), _drivers(design)):
+        yield ""
+        yield from section
+    yield ""
+    yield from _rf(design)
+    yield ""
+    yield from _limits(design)
+    yield ""
+    yield from _runs(design)
+    yield ""
+
+
+def _command(design: Design) -> Iterator[str]:
+    control = design.control
+    timeline = timeline_of(design)
+    low, high = format_quantity(control.low, "V"), format_quantity(control.high, "V")
+    times = {name: format_quantity(getattr(control, name), "s") for name in ("edge", "on_for", "period")}
+    train = "a single pulse" if control.pulses == 1 else f"{control.pulses} pulses, of which the last is judged"
+    yield from wrap(
+        f"command: from {low} to {high} with edges of {times['edge']} (0 to 100 %), high for {times['on_for']}"
+        f" between its 50 % points, every {times['period']}; {train};"
+        f" {format_quantity(timeline.stop, 's')} are simulated"
+    )
+
+
+def _path(design: Design) -> Iterator[str]:
+    switch = design.switch
+    path = switch.path
+    state = "forward biased" if path.passes else "not forward biased"
+    yield from wrap(f"path {path.name}: {path.summary}")
+    yield from wrap(
+        f"RF ports {', '.join(path.ports)}; judged from {' to '.join(path.through)}; RF passes while the"
+        f" junctions are {state}; each driver feeds the bias entry {', '.join(path.bias)}",
+        "  ",
+    )
+    yield from _settings(path, switch.values)
+
+
+def _junctions(design: Design) -> Iterator[str]:
+    switch = design.switch
+    for junction in _distinct(switch.junctions):
+        slots = [slot for slot in switch.path.slots if switch.junctions[slot.name].name == junction.name]
+        places = "; ".join(f"{slot.name}: {slot.meaning}" for slot in slots)
+        yield from wrap(f"junction {junction.name} ({places})")
+        yield from _part(junction)
+
+
+def _drivers(design: Design) -> Iterator[str]:
+    for number, driver in enumerate(design.drivers):
+        if number:
+            yield ""
+        yield f"driver {driver.name}"
+        yield from _part(driver)
+
+
+def _part(component: Junction | Driver) -> Iterator[str]:
+    yield from wrap(f"{component.part.name}: {component.part.summary}", "  ")
+    silenced: tuple[str, ...] = ()
+    if component.model is not None and component.part.model is not None:
+        silenced = component.part.model.parameters
+        yield from wrap(f"model card of its own: {component.model}", "  ", "    ")
+    yield from _settings(component.part, component.values, silenced)
+
+
+def _settings(part: Part, values: Mapping[str, float], silenced: tuple[str, ...] = ()) -> list[str]:
+    """Write a line for each supply and parameter that has an effect."""
+    settings = [setting for name, setting in part.settings.items() if name not in silenced]
+    columns = (
+        Column("", tuple(setting.name for setting in settings)),
+        Column("", tuple(format_quantity(values[s.name], s.unit, 12) for s in settings), right=True),
+        Column("", tuple("default" if values[s.name] == s.default else "" for s in settings)),
+        Column("", tuple(setting.meaning for setting in settings)),
+    )
+    return [line for text in align(columns, "    ") for line in _wrap_row(text, columns)] if settings else []
+
+
+def _wrap_row(text: str, columns: tuple[Column, ...]) -> list[str]:
+    """Break the last cell of a row that is too long, below its own beginning."""
+    start = 4 + sum(column.width + 2 for column in columns[:-1])
+    rest = wrap(text[start:], " " * start, "")
+    return [text[:start] + rest[0][start:], *rest[1:]]
+
+
+def _rf(design: Design) -> Iterator[str]:
+    carrier = design.carrier
+    frequencies = ", ".join(format_quantity(value, "Hz", 12) for value in carrier.frequency)
+    degrees = ", ".join(format_quantity(value, "degC", 12) for value in design.environment.temperature)
+    yield from wrap(
+        f"carriers: {frequencies} at {format_quantity(carrier.level, 'dBm')} from"
+        f" {format_quantity(carrier.impedance, 'ohm')} into {format_quantity(carrier.impedance, 'ohm')}"
+    )
+    yield f"temperatures: {degrees}"
+    yield from wrap(f"definitions: times from the 50 % points of the command; {definitions_text(design.definitions)}")
+
+
+def _limits(design: Design) -> Iterator[str]:
+    if not design.limits:
+        yield "limits: none; a run gives figures and judges nothing"
+        return
+    yield "limits"
+    columns = (
+        Column("", tuple(limit.metric for limit in design.limits)),
+        Column("", tuple(limit_text(limit) for limit in design.limits)),
+        Column("", tuple(METRICS[limit.metric].title for limit in design.limits)),
+    )
+    yield from align(columns, "  ")
+
+
+def _runs(design: Design) -> Iterator[str]:
+    drivers, degrees = len(design.drivers), len(design.environment.temperature)
+    times = _times(drivers, "driver") + (f" and {_times(degrees, 'temperature')}" if degrees > 1 else "")
+    yield f"decks, for {times}"
+    yield "  static    both control states: operating point and S-parameters at every carrier"
+    yield "  video     the control pulse without RF"
+    yield "  check_*   envelope analysis: S-parameters by ngspice at single biases of the video run"
+    for frequency in design.carrier.frequency:
+        timeline = _resolved(design, frequency)
+        points = timeline.stop * frequency * design.numerics.carrier_points
+        yield from wrap(
+            f"carrier_* carrier analysis at {format_quantity(frequency, 'Hz', 12)}: three decks of"
+            f" {points:.2g} time steps".replace("e+0", "e"),
+            "  ",
+        )
+
+
+def _times(count: int, noun: str) -> str:
+    return f"{count} {noun}{'s' if count != 1 else ''}"
+
+
+def _resolved(design: Design, frequency: float) -> Timeline:
+    return timeline_of(design, overrun=2.0 / frequency)
+
+
+def _distinct(junctions: Mapping[str, Junction]) -> list[Junction]:
+    return list({junction.name: junction for junction in junctions.values()}.values())
+
+
+def _document(design: Design) -> dict[str, Any]:
+    path = design.switch.path
+    return {
+        "format": FORMAT,
+        "title": design.title,
+        "design": design.source.path.name,
+        "control": design.control.model_dump(),
+        "carrier": design.carrier.model_dump(),
+        "path": {"part": path.name, "values": dict(design.switch.values)},
+        "junctions": {slot: _component(junction) for slot, junction in design.switch.junctions.items()},
+        "drivers": [_component(driver) for driver in design.drivers],
+        "limits": [{"metric": limit.metric, "min": limit.min, "max": limit.max} for limit in design.limits],
+        "temperature": list(design.environment.temperature),
+    }
+
+
+def _component(component: Junction | Driver) -> dict[str, Any]:
+    return {
+        "name": component.name,
+        "part": component.part.name,
+        "values": dict(component.values),
+        "model": component.model,
+    }
