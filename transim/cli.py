@@ -24,6 +24,7 @@ from transim.errors import DesignError, TransimError
 __all__ = ["main"]
 
 _INTERRUPTED, _TERMINATED = 130, 143
+_PATH = click.Path(path_type=Path)
 _Command = Callable[..., int]
 
 
@@ -59,10 +60,8 @@ def _transim() -> None:
 def _common(command: _Command) -> Callable[..., int]:
     """Add the options that every command has."""
 
-    @click.option("--json", "json", metavar="FILE|-", help="Also write a JSON document; - for standard output instead of text.")
-    @click.option(
-        "--color", type=click.Choice(["auto", "always", "never"]), default="auto", show_default=True, help="Colours of the text."
-    )
+    @click.option("--json", metavar="FILE|-", help="Write a JSON document too; - prints it in place of the text.")
+    @click.option("--color", type=click.Choice(["auto", "always", "never"]), default="auto", show_default=True)
     @click.option("--debug", is_flag=True, expose_value=False, help="Show the traceback of an error.")
     @functools.wraps(command)
     def wrapped(json: str | None, color: str, **arguments: Any) -> int:
@@ -75,13 +74,17 @@ def _common(command: _Command) -> Callable[..., int]:
     return wrapped
 
 
-_design = click.argument("design", type=click.Path(path_type=Path))
+_design = click.argument("design", type=_PATH)
 _force = click.option("--force", is_flag=True, help="Replace what an earlier call wrote; other files stay.")
-_ngspice = click.option("--ngspice", metavar="PATH", help="The ngspice to use; else TRANSIM_NGSPICE, else PATH is searched.")
-_drivers = click.option("--driver", "drivers", metavar="NAME", multiple=True, help="Only this driver; may be repeated.")
+_ngspice = click.option(
+    "--ngspice", metavar="PATH", help="The ngspice to use; else that of TRANSIM_NGSPICE, else the one on PATH."
+)
+_drivers = click.option(
+    "--driver", "drivers", metavar="NAME", multiple=True, help="Only this driver of the design; may be repeated."
+)
 
 
-@_transim.command("new")
+@_transim.command("new", short_help="Write a starting design file.")
 @click.argument("file")
 @click.option("--path", metavar="NAME", default="series_pair", show_default=True, help="A path part.")
 @click.option("--driver", metavar="NAME", default="push_pull_speedup", show_default=True, help="A driver part.")
@@ -94,7 +97,7 @@ def _new(console: Any, file: str, path: str, driver: str, force: bool) -> int:
     return new_design(console, file, path, driver, force=force)
 
 
-@_transim.command("check")
+@_transim.command("check", short_help="Read a design and describe its circuit, without running.")
 @_design
 @_common
 def _check(console: Any, design: Path) -> int:
@@ -104,9 +107,9 @@ def _check(console: Any, design: Path) -> int:
     return check_design(console, design)
 
 
-@_transim.command("parts")
+@_transim.command("parts", short_help="List the part files, or describe one.")
 @click.argument("name", required=False)
-@click.option("--folder", type=click.Path(path_type=Path), metavar="DIR", help="Also the part files of your own in DIR.")
+@click.option("--folder", type=_PATH, metavar="DIR", help="Part files of your own, beside these.")
 @_common
 def _parts(console: Any, name: str | None, folder: Path | None) -> int:
     """List the part files, or describe the part NAME with all its parameters."""
@@ -115,9 +118,9 @@ def _parts(console: Any, name: str | None, folder: Path | None) -> int:
     return show_parts(console, name, folder)
 
 
-@_transim.command("deck")
+@_transim.command("deck", short_help="Write the decks of a design.")
 @_design
-@click.option("--out", type=click.Path(path_type=Path), required=True, metavar="DIR", help="Folder for the decks.")
+@click.option("--out", type=_PATH, required=True, metavar="DIR", help="Folder for the decks.")
 @_drivers
 @_force
 @_common
@@ -128,7 +131,7 @@ def _deck(console: Any, design: Path, out: Path, drivers: Sequence[str], force: 
     return write_design_decks(console, design, out, drivers, force=force)
 
 
-@_transim.command("run")
+@_transim.command("run", short_help="Simulate the drivers of a design and judge them.")
 @_design
 @click.option(
     "--analysis",
@@ -138,7 +141,7 @@ def _deck(console: Any, design: Path, out: Path, drivers: Sequence[str], force: 
     help="envelope: small signal, fast; carrier: the RF resolved at its real level, slow.",
 )
 @_drivers
-@click.option("--out", type=click.Path(path_type=Path), metavar="DIR", help="Folder for result.json, decks and waveforms.")
+@click.option("--out", type=_PATH, metavar="DIR", help="Folder for result.json, decks and waveforms.")
 @_force
 @_ngspice
 @_common
@@ -149,7 +152,7 @@ def _run(console: Any, design: Path, **options: Any) -> int:
     return run_and_report(console, RunRequest(design, **options))
 
 
-@_transim.command("engine")
+@_transim.command("engine", short_help="Say which ngspice is used, and test it.")
 @_ngspice
 @_common
 def _engine(console: Any, ngspice: str | None) -> int:

@@ -7,17 +7,18 @@ from pathlib import Path
 from typing import Any
 
 from transim.circuit.assemble import assemble
-from transim.circuit.timeline import Timeline, timeline_of
+from transim.circuit.timeline import timeline_of
 from transim.commands.console import Console
 from transim.design.model import Design, Driver, Junction
 from transim.design.toml import read_design
 from transim.measure.metrics import METRICS
 from transim.parts.part import Part
 from transim.quantities import format_quantity
-from transim.report.document import FORMAT
+from transim.report.document import FORMAT, limit_document
 from transim.report.layout import Column, align, wrap
 from transim.report.tables import limit_text
-from transim.report.verdicts import definitions_text
+from transim.report.verdicts import definition_lines
+from transim.study.decks import carrier_timeline
 
 __all__ = ["check_design"]
 
@@ -86,7 +87,7 @@ def _path(design: Design) -> Iterator[str]:
     yield from wrap(f"path {path.name}: {path.summary}")
     yield from wrap(
         f"RF ports {', '.join(path.ports)}; judged from {' to '.join(path.through)}; RF passes while the"
-        f" junctions are {state}; each driver feeds the bias entry {', '.join(path.bias)}",
+        f" junctions are {state}; a driver feeds its bias entry",
         "  ",
     )
     yield from _settings(path, switch.values)
@@ -146,7 +147,8 @@ def _rf(design: Design) -> Iterator[str]:
         f" {format_quantity(carrier.impedance, 'ohm')} into {format_quantity(carrier.impedance, 'ohm')}"
     )
     yield f"temperatures: {degrees}"
-    yield from wrap(f"definitions: times from the 50 % points of the command; {definitions_text(design.definitions)}")
+    for sentence in definition_lines(design.definitions):
+        yield from wrap(sentence)
 
 
 def _limits(design: Design) -> Iterator[str]:
@@ -170,21 +172,15 @@ def _runs(design: Design) -> Iterator[str]:
     yield "  video     the control pulse without RF"
     yield "  check_*   envelope analysis: S-parameters by ngspice at single biases of the video run"
     for frequency in design.carrier.frequency:
-        timeline = _resolved(design, frequency)
-        points = timeline.stop * frequency * design.numerics.carrier_points
-        yield from wrap(
-            f"carrier_* carrier analysis at {format_quantity(frequency, 'Hz', 12)}: three decks of"
-            f" {points:.2g} time steps".replace("e+0", "e"),
-            "  ",
+        steps = carrier_timeline(design, frequency).stop * frequency * design.numerics.carrier_points
+        yield (
+            f"  carrier_* carrier analysis at {format_quantity(frequency, 'Hz', 12)}: three decks of about"
+            f" {float(f'{steps:.2g}'):.0f} time steps"
         )
 
 
 def _times(count: int, noun: str) -> str:
     return f"{count} {noun}{'s' if count != 1 else ''}"
-
-
-def _resolved(design: Design, frequency: float) -> Timeline:
-    return timeline_of(design, overrun=2.0 / frequency)
 
 
 def _distinct(junctions: Mapping[str, Junction]) -> list[Junction]:
@@ -202,7 +198,7 @@ def _document(design: Design) -> dict[str, Any]:
         "path": {"part": path.name, "values": dict(design.switch.values)},
         "junctions": {slot: _component(junction) for slot, junction in design.switch.junctions.items()},
         "drivers": [_component(driver) for driver in design.drivers],
-        "limits": [{"metric": limit.metric, "min": limit.min, "max": limit.max} for limit in design.limits],
+        "limits": [limit_document(limit) for limit in design.limits],
         "temperature": list(design.environment.temperature),
     }
 

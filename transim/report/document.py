@@ -16,6 +16,7 @@ from transim.errors import TransimError
 if TYPE_CHECKING:
     from transim.engine.ngspice import Engine
     from transim.engine.reference import SelfCheck
+    from transim.measure.limits import Judgement, Limit
     from transim.parts.part import Parameter, Part
     from transim.study.run import Outcome
     from transim.study.simulate import Result
@@ -25,6 +26,7 @@ __all__ = [
     "engine_document",
     "error_document",
     "json_text",
+    "limit_document",
     "part_document",
     "run_document",
 ]
@@ -105,21 +107,35 @@ def run_document(outcome: Outcome, seconds: float) -> Document:
     }
 
 
+def limit_document(limit: Limit | Judgement) -> Document:
+    """Return a limit.
+
+    Parameters
+    ----------
+    limit : Limit or Judgement
+        With one bound or two.
+
+    Returns
+    -------
+    dict
+        Metric, and the bounds that it has in the metric's unit.
+    """
+    bounds = {"min": limit.min, "max": limit.max}
+    return {"metric": limit.metric, **{name: bound for name, bound in bounds.items() if bound is not None}}
+
+
 def _result(result: Result) -> Document:
     from transim.report.tables import verdict_word
 
-    limits = []
-    for judgement in result.judgements:
-        bounds = {"min": judgement.min, "max": judgement.max}
-        limits.append(
-            {
-                "metric": judgement.metric,
-                **{name: bound for name, bound in bounds.items() if bound is not None},
-                "value": judgement.value,
-                "margin": judgement.margin,
-                "verdict": verdict_word(result, judgement).lower(),
-            }
-        )
+    limits = [
+        {
+            **limit_document(judgement),
+            "value": judgement.value,
+            "margin": judgement.margin,
+            "verdict": verdict_word(result, judgement).lower(),
+        }
+        for judgement in result.judgements
+    ]
     return {
         "driver": result.driver,
         "carrier": result.carrier,
@@ -187,6 +203,9 @@ def part_document(part: Part) -> Document:
         "terminals": list(part.terminals),
         "supplies": [_parameter(supply) for supply in part.supplies],
         "parameters": [_parameter(parameter) for parameter in part.parameters],
+        "ports": list(part.ports),
+        "through": list(part.through),
+        "passes_biased": part.passes,
         "slots": [asdict(slot) for slot in part.slots],
         "model_kinds": [] if part.model is None else list(part.model.kinds),
         "notes": list(part.notes),

@@ -99,7 +99,7 @@ def _group(group: Sequence[Result], limits: Sequence[Limit]) -> Iterator[str]:
         yield ""
         yield "  undefined (-), because"
         for reason in reasons:
-            yield from wrap(reason, "  ", "    ")
+            yield from wrap(reason, "  ")
 
 
 def _judged(result: Result) -> Column:

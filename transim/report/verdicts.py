@@ -33,17 +33,17 @@ def definition_lines(definitions: Definitions) -> list[str]:
     Returns
     -------
     list of str
-        Two lines: without them a switching time says nothing.
+        Two sentences, the first with basis and reference: without them a switching time says nothing.
     """
     video = definitions.video_bandwidth
     seen = "unfiltered" if video is None else f"through one pole at {format_quantity(video, 'Hz')}"
     band, phase = format_quantity(definitions.settle_band, "dB"), format_quantity(definitions.phase_band, "deg")
     return [
-        f"times from the command's 50 % points to 10 and 90 % of RF {definitions.basis}"
-        f" ({_LEVELS[definitions.basis]});",
-        f"100 % is the {_REFERENCES[definitions.reference]}; settled within {band} and {phase}; off at"
-        f" {format_quantity(definitions.isolation_level, 'dB')};",
-        f"video leakage {seen}, in band per {format_quantity(definitions.resolution_bandwidth, 'Hz')}",
+        f"Levels: 10 and 90 % of RF {definitions.basis} ({_LEVELS[definitions.basis]});"
+        f" 100 % is the {_REFERENCES[definitions.reference]}.",
+        f"Times from the command's 50 % points; settled within {band}, {phase}; off at"
+        f" {format_quantity(definitions.isolation_level, 'dB')};"
+        f" video leakage {seen}, in band per {format_quantity(definitions.resolution_bandwidth, 'Hz')}.",
     ]
 
 
@@ -66,7 +66,7 @@ def head_lines(outcome: Outcome) -> list[str]:
     return [
         *wrap(design.title),
         *wrap(f"{outcome.engine}; {analyses} analysis; {degrees}; design file {design.source.path.name}"),
-        *wrap(" ".join(definition_lines(design.definitions))),
+        *(line for sentence in definition_lines(design.definitions) for line in wrap(sentence)),
     ]
 
 
@@ -130,9 +130,9 @@ def _overall(outcome: Outcome, verdicts: dict[str, Verdict]) -> str:
 def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterator[str]:
     judged = [(result, judgement) for result in results for judgement in result.judgements]
     words = [verdict_word(result, judgement) for result, judgement in judged]
-    counts = [f"{words.count(word)} {text}" for word, text in _COUNTED.items() if words.count(word)]
+    counts = [f"{text} {words.count(word)}" for word, text in _COUNTED.items() if words.count(word)]
     yield from wrap(
-        f"{driver}: {verdict.upper()}; {', '.join(counts)}" if judged else f"{driver}: no limits to judge"
+        f"{driver}: {verdict.upper()}; limits {', '.join(counts)}" if judged else f"{driver}: no limits to judge"
     )
     several = len({result.temperature for result in results}) > 1
     places = {id(result): _place(result, several) for result in results}

@@ -8,10 +8,10 @@ from pathlib import Path
 
 from transim.circuit.assemble import assemble
 from transim.circuit.decks import Deck, Origin, Tone, carrier_deck, static_deck, video_deck
-from transim.circuit.timeline import timeline_of
+from transim.circuit.timeline import Timeline, timeline_of
 from transim.design.model import Design, Driver
 
-__all__ = ["carrier_decks", "case_decks"]
+__all__ = ["carrier_decks", "carrier_timeline", "case_decks"]
 
 #: Carrier periods before the first edge for the start-up to die away, and after the judged cycle.
 _SETTLING_PERIODS, _OVERRUN_PERIODS = 20.0, 2.0
@@ -47,6 +47,24 @@ def case_decks(design: Design, driver: Driver, temperature: float) -> tuple[Deck
     )
 
 
+def carrier_timeline(design: Design, frequency: float) -> Timeline:
+    """Lay out the command of a carrier-resolved run.
+
+    Parameters
+    ----------
+    design : Design
+        The design.
+    frequency : float
+        Carrier [Hz].
+
+    Returns
+    -------
+    Timeline
+        With time for the carrier to settle before the first edge.
+    """
+    return timeline_of(design, settle=_SETTLING_PERIODS / frequency, overrun=_OVERRUN_PERIODS / frequency)
+
+
 def carrier_decks(design: Design, driver: Driver, temperature: float, frequency: float) -> Sequence[Deck]:
     """Write the decks of the carrier analysis: two in quadrature, one without RF.
 
@@ -70,9 +88,7 @@ def carrier_decks(design: Design, driver: Driver, temperature: float, frequency:
         If path and driver do not fit together.
     """
     netlist, origin = assemble(design, driver), _origin(design, driver, temperature)
-    timeline = timeline_of(
-        design, settle=_SETTLING_PERIODS / frequency, overrun=_OVERRUN_PERIODS / frequency
-    )
+    timeline = carrier_timeline(design, frequency)
     # available power of a source of amplitude E behind Z0 is E^2 / 8 Z0
     watts = 1e-3 * 10.0 ** (design.carrier.level / 10.0)
     amplitude = math.sqrt(8.0 * watts * design.carrier.impedance)

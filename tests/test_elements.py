@@ -1,0 +1,204 @@
+"""The expanded listing read into elements.
+
+Outside reference: the text below is what ngspice 39 itself printed for ``listing expand``, line for line; that it
+still prints so is checked in tests/spice. Multipliers and defaults are those of the ngspice 39 manual, chapters 3 to 8.
+"""
+
+import numpy as np
+import pytest
+
+from transim.circuit.elements import Behavioural, Circuit, Device, Element, read_listing
+from transim.errors import LinearisationError, NetlistError
+
+LISTING = """
+Note: No compatibility mode selected!
+
+
+Circuit: * listing
+
+	* listing
+
+     5 : r.xa.r1 p xa.m   3.000000000000000e+03   
+     6 : l.xa.l1 xa.m xa.n 1e-6 ic=0 
+     7 : l.xa.l2 xa.n q 2u 
+     8 : k.xa.k1 l.xa.l1 l.xa.l2 0.5
+     9 : c.xa.c1 p q 1p 
+    12 : b.xa.brb p q i= v(p,q) / (   1.0000000000e+03 * (   1.0000000000e+00 + v(p) * v(p) ) ) reciproctc=1 reciprocm=0
+    14 : e.xa.ecb xa.cb_int1 0 q p 1
+    15 : c.xa.ccb xa.cb_int1 0 1 
+    17 : b.xa.bcb p q i= i(e.xa.ecb) * (   1.0000000000e-12 * (   1.0000000000e+00 + v(p) ) ) reciproctc=1
+    18 : .model xa:dj d(is=    3.000000000000000e-14     tt=1u)
+    19 : d.xa.d1 p q xa:dj 
+    20 : d.xa.d2 p q xa:dj 2
+    21 : d.xa.d3 p q xa:dj area=3 m=2 off
+    22 : q.xa.q1 p q 0 xa:qj 
+    23 : q.xa.q2 p q 0 0 xa:qj 2
+    24 : q.xa.q3 p q 0 xa:qj area=2 m=3
+    25 : .model xa:qj npn(is=1e-15 bf=100)
+    28 : v1 p 0 1
+    29 : i1 q gnd 1m
+    30 : e1 e 0 p q 2.5
+    31 : g1 g 0 p q 1m
+    32 : f1 f 0 v1 3
+    33 : h1 h 0 v1 50
+    40 : r8 q 0 10 m=2
+    41 : c9 q 0 1p m=2
+    42 : l9 q 0 1u m=2
+    43 : g9 g 0 p q 1m m=2
+    44 : f9 f 0 v1 3 m=2
+    46 : b1 b 0 v= v(p,q) * max ( v(p) ,   0.0000000000e+00 )
+    47 : b9 b 0 i= v(p) *   2.0000000000e+00 m=3
+    48 : brc b 0 i= v(b, 0) / (   1.0000000000e+02 ) m=2.00000000e+00 reciproctc=1 reciprocm=0
+    67 : .end
+"""
+
+
+@pytest.fixture(scope="module")
+def circuit() -> Circuit:
+    return read_listing(LISTING)
+
+
+def test_everything_is_read(circuit):
+    assert circuit.refused == ()
+    assert [len(some) for some in (circuit.elements, circuit.couplings, circuit.devices, circuit.behaviourals)] == [
+        17, 1, 6, 5,
+    ]  # fmt: skip
+
+
+@pytest.mark.parametrize(
+    "expected",
+    [
+        Element("r.xa.r1", ("p", "xa.m"), 3000.0),
+        Element("l.xa.l1", ("xa.m", "xa.n"), 1e-6),
+        Element("l.xa.l2", ("xa.n", "q"), 2e-6),
+        Element("c.xa.c1", ("p", "q"), 1e-12),
+        Element("v1", ("p", "0"), 0.0),
+        Element("i1", ("q", "0"), 0.0),
+        Element("e1", ("e", "0", "p", "q"), 2.5),
+        Element("g1", ("g", "0", "p", "q"), 1e-3),
+        Element("f1", ("f", "0"), 3.0, "v1"),
+        Element("h1", ("h", "0"), 50.0, "v1"),
+        Element("r8", ("q", "0"), 5.0),
+        Element("c9", ("q", "0"), 2e-12),
+        Element("l9", ("q", "0"), 0.5e-6),
+        Element("g9", ("g", "0", "p", "q"), 2e-3),
+        Element("f9", ("f", "0"), 6.0, "v1"),
+    ],
+    ids=lambda element: element.name,
+)
+def test_elements(circuit, expected):
+    found = next(element for element in circuit.elements if element.name == expected.name)
+    assert (found.nodes, found.source) == (expected.nodes, expected.source)
+    assert found.value == pytest.approx(expected.value, rel=1e-12)
+
+
+def test_coupling(circuit):
+    assert circuit.couplings[0].inductors == ("l.xa.l1", "l.xa.l2")
+    assert circuit.couplings[0].factor == 0.5
+
+
+def test_devices(circuit):
+    found: dict[str, Device] = {device.name: device for device in circuit.devices}
+    assert found["d.xa.d1"].parameters == {}
+    assert found["d.xa.d2"].parameters == {"area": 2.0}
+    assert found["d.xa.d3"].parameters == {"area": 3.0, "m": 2.0}
+    assert found["q.xa.q1"].nodes == ("p", "q", "0")
+    assert found["q.xa.q2"].nodes == ("p", "q", "0", "0")
+    assert found["q.xa.q2"].parameters == {"area": 2.0}
+    assert found["q.xa.q3"].parameters == {"area": 2.0, "m": 3.0}
+    model = found["d.xa.d1"].model
+    assert (model.name, model.kind) == ("xa:dj", "d")
+    assert model.parameters == pytest.approx({"is": 3e-14, "tt": 1e-6}, rel=1e-12)
+    assert found["q.xa.q1"].model.kind == "npn"
+
+
+def value(circuit, name, **bias):
+    source: Behavioural = next(source for source in circuit.behaviourals if source.name == name)
+    dual = source.law.evaluate({key.replace("_", ":", 1): np.asarray(x) for key, x in bias.items()}, {})
+    return float(dual.value), {key: float(slope) for key, slope in dual.partial.items()}
+
+
+def test_behavioural_sources(circuit):
+    quantities = {source.name: source.quantity for source in circuit.behaviourals}
+    assert quantities == {"b.xa.brb": "i", "b.xa.bcb": "i", "b1": "v", "b9": "i", "brc": "i"}
+    current, slopes = value(circuit, "b.xa.brb", v_p=2.0, v_q=0.5)
+    assert current == pytest.approx(1.5 / 5000.0)
+    assert slopes == pytest.approx({"v:p": 1 / 5000.0 - 1.5 * 4.0 / 25000.0, "v:q": -1 / 5000.0})
+    assert value(circuit, "b1", v_p=2.0, v_q=0.5)[0] == 3.0
+
+
+def test_behavioural_capacitor_is_a_capacitance_times_the_current_of_one_farad(circuit):
+    source = next(source for source in circuit.behaviourals if source.name == "b.xa.bcb")
+    assert source.law.sources == ("e.xa.ecb",)
+    dual = source.law.evaluate({"i:e.xa.ecb": np.asarray(1e9), "v:p": np.asarray(2.0)}, {})
+    assert float(dual.value) == pytest.approx(3e-3)
+    assert float(dual.partial["i:e.xa.ecb"]) == pytest.approx(3e-12)
+
+
+def test_multiplier_of_a_behavioural_current(circuit):
+    assert value(circuit, "b9", v_p=1.5) == (pytest.approx(9.0), {"v:p": pytest.approx(6.0)})
+    assert value(circuit, "brc", v_b=1.0)[0] == pytest.approx(0.02)
+
+
+def test_nodes_are_those_of_the_elements_without_ground(circuit):
+    assert set(circuit.nodes) == {"p", "q", "b", "e", "f", "g", "h", "xa.m", "xa.n", "xa.cb_int1"}
+
+
+def one(line: str) -> Circuit:
+    return read_listing(f"     3 : {line}\n     9 : .model dm d(is=1e-14)\n    10 : .end\n")
+
+
+@pytest.mark.parametrize(
+    ("line", "name", "words"),
+    [
+        ("m1 d g 0 0 mm", "M1", "MOSFET"),
+        ("j1 p q 0 jm", "J1", "JFET"),
+        ("z1 p q 0 zm", "Z1", "MESFET"),
+        ("t1 p 0 t2 0 z0=50 td=1n", "T1", "transmission line"),
+        ("o1 p 0 t2 0 om", "O1", "lossy transmission line"),
+        ("s1 p q q 0 sw", "S1", "voltage-controlled switch"),
+        ("w1 p q v1 sw", "W1", "current-controlled switch"),
+        ("a$poly$e3 %vd [ p 0 ] %vd ( e3 0 ) a$poly$e3", "A$POLY$E3", "code model"),
+        ("r9 q 0 10 tc1=1e-3", "R9", "tc1"),
+        ("r9 q 0 10 rmod", "R9", "rmod"),
+        ("c9 q 0 cmod l=10u w=10u", "c9", "cmod"),
+        ("d1 p q dm area=2 temp=50", "", ""),
+        ("e1 e 0 p q 2.5 m=2", "E1", "controlled source"),
+        ("h1 h 0 v1 50 m=2", "H1", "controlled source"),
+        ("f1 f 0 poly(1) v1 0 3", "F1", "controlled source"),
+        ("g1 g 0 p q 1m tc1=1", "G1", "controlled source"),
+        ("d1 p q missing", "D1", "its model is not in the listing"),
+        ("b1 b 0 i= ddt(v(p))", "B1", "'ddt'"),
+        ("b1 b 0 i= v(p)*2 tc1=1e-3", "B1", "tc1"),
+        ("b1 b 0 v= v(p)*2 m=2", "B1", "parameter m"),
+        ("br1 b 0 i= v(b, 0) / ( 100 ) tc1=1.0e-03 tc2=0 reciproctc=1 reciprocm=0", "BR1", "tc1"),
+        ("b1 b 0 pwl= v(p)", "B1", "cannot read its line"),
+        ("r1 a", "r1", "cannot read its line"),
+    ],
+)
+def test_what_has_no_small_signal_form_is_refused_by_name(line, name, words):
+    found = one(line)
+    if not name:
+        # an instance parameter is refused where its law is made, with the diode's name
+        assert found.devices[0].parameters == {"area": 2.0, "temp": 50.0}
+        return
+    assert (found.elements, found.devices, found.behaviourals) == ((), (), ())
+    (refusal,) = found.refused
+    assert isinstance(refusal, LinearisationError)
+    assert words in str(refusal)
+    assert name.lower() in str(refusal).lower()
+
+
+def test_refusals_do_not_stop_what_can_be_read():
+    found = read_listing(LISTING.replace("67 : .end", "66 : m1 p q 0 0 mm\n    67 : .end"))
+    assert len(found.elements) == 17
+    assert [str(refusal).split(":")[0] for refusal in found.refused] == ["M1"]
+
+
+def test_zero_ohm_is_what_ngspice_makes_of_it():
+    assert one("rq q 0 0").elements[0].value == 1e-3
+
+
+def test_nothing_to_read():
+    with pytest.raises(NetlistError, match="no expanded listing"):
+        read_listing("ngspice-39 done\n")
