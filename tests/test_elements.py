@@ -8,6 +8,8 @@ import numpy as np
 import pytest
 
 from transim.circuit.elements import Behavioural, Circuit, Device, Element, read_listing
+from transim.envelope.diode import DiodeLaw
+from transim.envelope.transistor import TransistorLaw
 from transim.errors import LinearisationError, NetlistError
 
 LISTING = """
@@ -162,7 +164,6 @@ def one(line: str) -> Circuit:
         ("r9 q 0 10 tc1=1e-3", "R9", "tc1"),
         ("r9 q 0 10 rmod", "R9", "rmod"),
         ("c9 q 0 cmod l=10u w=10u", "c9", "cmod"),
-        ("d1 p q dm area=2 temp=50", "", ""),
         ("e1 e 0 p q 2.5 m=2", "E1", "controlled source"),
         ("h1 h 0 v1 50 m=2", "H1", "controlled source"),
         ("f1 f 0 poly(1) v1 0 3", "F1", "controlled source"),
@@ -178,15 +179,28 @@ def one(line: str) -> Circuit:
 )
 def test_what_has_no_small_signal_form_is_refused_by_name(line, name, words):
     found = one(line)
-    if not name:
-        # an instance parameter is refused where its law is made, with the diode's name
-        assert found.devices[0].parameters == {"area": 2.0, "temp": 50.0}
-        return
     assert (found.elements, found.devices, found.behaviourals) == ((), (), ())
     (refusal,) = found.refused
     assert isinstance(refusal, LinearisationError)
     assert words in str(refusal)
     assert name.lower() in str(refusal).lower()
+
+
+@pytest.mark.parametrize(
+    ("line", "law", "words"),
+    [
+        ("d1 p q dm area=2 temp=50", DiodeLaw, "D1.*temp"),
+        ("d1 p q dj", DiodeLaw, "D1.*isr"),
+        ("q1 p q 0 qm temp=50", TransistorLaw, "Q1.*temp"),
+        ("q1 p q 0 qp", TransistorLaw, "Q1.*ptf"),
+        ("q1 p q 0 s qs", TransistorLaw, "Q1.*cjs"),
+    ],
+)
+def test_what_changes_the_small_signal_form_unseen_is_refused(line, law, words):
+    cards = (".model dj d(isr=1e-12)", ".model qm npn(bf=90)", ".model qp npn(ptf=30)", ".model qs npn(cjs=1p)")
+    found = read_listing("\n".join(f" {k} : {text}" for k, text in enumerate([line, *cards, ".model dm d(isr=0)"])))
+    with pytest.raises(LinearisationError, match=words):
+        law(found.devices[0], 27.0)
 
 
 def test_refusals_do_not_stop_what_can_be_read():

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import contextlib
 import functools
+import itertools
 import signal
 import sys
 import threading
@@ -23,7 +24,6 @@ from transim.errors import DesignError, TransimError
 
 __all__ = ["main"]
 
-_INTERRUPTED, _TERMINATED = 130, 143
 _PATH = click.Path(path_type=Path)
 _Command = Callable[..., int]
 
@@ -176,15 +176,16 @@ def main(arguments: Sequence[str] | None = None) -> int:
         Exit status.
     """
     words = list(sys.argv[1:] if arguments is None else arguments)
-    with _termination():
+    with _orderly_end():
         try:
             status = _transim.main(words, prog_name="transim", standalone_mode=False)
         except TransimError as error:
             return _fail(error, words)
+        except click.exceptions.NoArgsIsHelpError as error:
+            sys.stderr.write(f"{error.format_message()}\n")
+            return error.exit_code
         except click.UsageError as error:
             return _fail(_usage(error), words)
-        except (KeyboardInterrupt, click.Abort):
-            return _INTERRUPTED
         except SystemExit as leaving:
             return leaving.code if isinstance(leaving.code, int) else 1
         except Exception as error:  # noqa: BLE001 - the last resort: no traceback unless it is asked for
@@ -217,7 +218,7 @@ def _fail(error: TransimError, words: Sequence[str]) -> int:
 
 def _value_of(option: str, words: Sequence[str]) -> str | None:
     """Find an option's value where the command line could not be read."""
-    for word, following in zip(words, [*words[1:], None], strict=True):
+    for word, following in itertools.zip_longest(words, words[1:]):
         if word == "--":
             return None
         if word == option:
@@ -228,17 +229,19 @@ def _value_of(option: str, words: Sequence[str]) -> str | None:
 
 
 @contextlib.contextmanager
-def _termination() -> Iterator[None]:
-    """Let a request to terminate unwind the program as Ctrl-C does: what was started is ended, nothing half stays."""
+def _orderly_end() -> Iterator[None]:
+    """Let Ctrl-C and a request to terminate unwind the program: what was started is ended, nothing half stays."""
     if threading.current_thread() is not threading.main_thread():
         yield
         return
 
-    def leave(_number: int, _frame: object) -> NoReturn:
-        raise SystemExit(_TERMINATED)
+    def leave(number: int, _frame: object) -> NoReturn:
+        # not KeyboardInterrupt: raised inside exec(), it ends Python by the signal even where it is caught
+        raise SystemExit(128 + number)
 
-    before = signal.signal(signal.SIGTERM, leave)
+    before = {number: signal.signal(number, leave) for number in (signal.SIGINT, signal.SIGTERM)}
     try:
         yield
     finally:
-        signal.signal(signal.SIGTERM, before)
+        for number, handler in before.items():
+            signal.signal(number, handler)

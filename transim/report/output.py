@@ -109,9 +109,10 @@ class ResultFolder:
                 (temporary / name).replace(target)
             for name in sorted(old - set(new)):
                 (self._place / name).unlink(missing_ok=True)
-            for parent in {(self._place / name).parent for name in old} - {self._place}:
+            emptied = {parent for name in old for parent in PurePosixPath(name).parents} - {PurePosixPath()}
+            for parent in sorted(emptied, reverse=True):
                 with contextlib.suppress(OSError):
-                    parent.rmdir()
+                    (self._place / parent).rmdir()
 
 
 def write_file(path: Path, text: str) -> None:
@@ -137,6 +138,8 @@ def write_file(path: Path, text: str) -> None:
             path.write_text(text, encoding="utf-8")
             return
         place = path.resolve()
+        if not place.parent.is_dir():
+            raise OutputError(f"{path} cannot be written: there is no folder {place.parent}")
         handle, name = tempfile.mkstemp(prefix=f".{place.name}.", suffix=".transim", dir=place.parent)
         temporary = Path(name)
         try:

@@ -79,7 +79,7 @@ def video_waveforms(video: Plot, netlist: Netlist) -> dict[str, tuple[Array, str
     for port in netlist.ports:
         found[f"port_{port.node}"] = (np.real(video[f"v({port.node})"]), "V")
     for supply in netlist.supplies:
-        found[f"supply_current_{supply.removeprefix('vsupply_')}"] = (-np.real(video[f"i({supply})"]), "A")
+        found[f"supply_current_{supply.removeprefix('vsupply_')}"] = (0.0 - np.real(video[f"i({supply})"]), "A")
     units = {"charge": "C", "current": "A", "reverse": "V"}
     for probe in netlist.probes:
         name = first = f"{probe.quantity}_{probe.junction}"
