@@ -191,6 +191,7 @@ def test_what_has_no_small_signal_form_is_refused_by_name(line, name, words):
     [
         ("d1 p q dm area=2 temp=50", DiodeLaw, "D1.*temp"),
         ("d1 p q dj", DiodeLaw, "D1.*isr"),
+        ("d1 p q dm 3 m=2", DiodeLaw, "D1.*m beside area"),
         ("q1 p q 0 qm temp=50", TransistorLaw, "Q1.*temp"),
         ("q1 p q 0 qp", TransistorLaw, "Q1.*ptf"),
         ("q1 p q 0 s qs", TransistorLaw, "Q1.*cjs"),

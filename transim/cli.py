@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import contextlib
 import functools
+import io
 import itertools
 import signal
 import sys
@@ -24,6 +25,8 @@ from transim.errors import DesignError, TransimError
 
 __all__ = ["main"]
 
+#: Exit status after a signal, 128 and its number.
+_ENDINGS = {130: "interrupted", 143: "terminated"}
 _PATH = click.Path(path_type=Path)
 _Command = Callable[..., int]
 
@@ -176,6 +179,10 @@ def main(arguments: Sequence[str] | None = None) -> int:
         Exit status.
     """
     words = list(sys.argv[1:] if arguments is None else arguments)
+    for stream in (sys.stdout, sys.stderr):
+        # a title may hold letters that the terminal's encoding has not
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="backslashreplace")
     with _orderly_end():
         try:
             status = _transim.main(words, prog_name="transim", standalone_mode=False)
@@ -187,11 +194,19 @@ def main(arguments: Sequence[str] | None = None) -> int:
         except click.UsageError as error:
             return _fail(_usage(error), words)
         except SystemExit as leaving:
-            return leaving.code if isinstance(leaving.code, int) else 1
+            status = leaving.code if isinstance(leaving.code, int) else 1
+            if status in _ENDINGS:
+                return _fail(_ended(status), words)
         except Exception as error:  # noqa: BLE001 - the last resort: no traceback unless it is asked for
             text = f"{type(error).__name__}: {error}".splitlines()[0]
             return _fail(TransimError(f"unexpected {text}; run again with --debug to see where"), words)
         return status if isinstance(status, int) else 0
+
+
+def _ended(status: int) -> TransimError:
+    error = TransimError(_ENDINGS[status])
+    error.exit_code = status
+    return error
 
 
 def _usage(error: click.UsageError) -> DesignError:

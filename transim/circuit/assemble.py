@@ -16,7 +16,7 @@ from transim.errors import TopologyError
 from transim.parts.part import Part, Slot
 from transim.quantities import deck_number
 
-__all__ = ["JunctionProbe", "Netlist", "RfPort", "assemble"]
+__all__ = ["JunctionPlace", "JunctionProbe", "Netlist", "RfPort", "assemble"]
 
 _VECTOR = re.compile(r"(?P<kind>[vi])\((?P<inside>[^()]*)\)|@(?P<device>[^\[]+)\[(?P<parameter>[^\]]+)\]")
 
@@ -50,6 +50,28 @@ class JunctionProbe:
 
 
 @dataclass(frozen=True)
+class JunctionPlace:
+    """A junction of the path in the flattened circuit.
+
+    Attributes
+    ----------
+    instance : str
+        Instance in the path, for example ``xj1``.
+    junction : str
+        Name of its table in the design.
+    nodes : mapping of str to str
+        Flattened node at each of its terminals.
+    ammeters : mapping of str to str
+        Zero-volt source in each terminal but the last; its current flows into the junction.
+    """
+
+    instance: str
+    junction: str
+    nodes: Mapping[str, str]
+    ammeters: Mapping[str, str]
+
+
+@dataclass(frozen=True)
 class Netlist:
     """Everything of a circuit that does not depend on the analysis.
 
@@ -61,6 +83,8 @@ class Netlist:
         In the order of the path.
     through : tuple of int
         Places of the two ports whose transmission is judged (from, to).
+    junctions : tuple of JunctionPlace
+        Junctions of the path, in its order.
     probes : tuple of JunctionProbe
         What to look at inside the junctions.
     supplies : tuple of str
@@ -70,6 +94,7 @@ class Netlist:
     text: str
     ports: tuple[RfPort, ...]
     through: tuple[int, int]
+    junctions: tuple[JunctionPlace, ...]
     probes: tuple[JunctionProbe, ...]
     supplies: tuple[str, ...]
 
@@ -128,7 +153,9 @@ def assemble(design: Design, driver: Driver) -> Netlist:
     lines = str(circuit).splitlines()
     body = "\n".join(line for line in lines if line and not line.startswith(".title"))
     through = (path.ports.index(path.through[0]), path.ports.index(path.through[1]))
-    return Netlist(body + "\n", tuple(ports), through, tuple(_probes(design)), tuple(supplies))
+    places = _junctions(design)
+    probes = tuple(probe for place in places for probe in _probes(design, place))
+    return Netlist(body + "\n", tuple(ports), through, places, probes, tuple(supplies))
 
 
 def _terminal(name: str, renamed: Mapping[str, str]) -> str:
@@ -174,13 +201,17 @@ def _slot(slot: Slot, junction: Junction) -> str:
     values = " ".join(
         f"{name}={deck_number(junction.values[name])}" for name in junction.values if name in used
     )
-    wires = " ".join(slot.terminals)
-    call = f"X1 {' '.join(junction.part.terminals)} {_junction_name(junction)} {values}".rstrip()
-    return f"* junction {junction.name}\n.subckt {slot.name} {wires}\n{call}\n.ends\n"
+    # an ammeter in every terminal but the last, whose current follows from the others
+    measured = slot.terminals[:-1]
+    ammeters = "".join(f"V{name} {name} {name}_in 0\n" for name in measured)
+    inner = [f"{name}_in" if name in measured else name for name in slot.terminals]
+    call = f"X1 {' '.join(inner)} {_junction_name(junction)} {values}".rstrip()
+    head = f"* junction {junction.name}\n.subckt {slot.name} {' '.join(slot.terminals)}\n"
+    return f"{head}{ammeters}{call}\n.ends\n"
 
 
-def _probes(design: Design) -> list[JunctionProbe]:
-    """Translate the probes of each junction part to the names of the flattened circuit."""
+def _junctions(design: Design) -> tuple[JunctionPlace, ...]:
+    """Find the instances of the slots in the path, with the nodes that they have in the flattened circuit."""
     path = design.switch.path
     slots = {slot.name.lower(): slot for slot in path.slots}
     found = []
@@ -189,19 +220,25 @@ def _probes(design: Design) -> list[JunctionProbe]:
         if not words or words[0][0].lower() != "x" or words[-1].lower() not in slots:
             continue
         slot = slots[words[-1].lower()]
-        part = design.switch.junctions[slot.name].part
         instance = words[0].lower()
-        wires = {
-            inner.lower(): _path_node(path, node)
-            for inner, node in zip(part.terminals, words[1:-1], strict=True)
+        nodes = {
+            name.lower(): _path_node(path, node) for name, node in zip(slot.terminals, words[1:-1], strict=True)
         }
-        for probe in part.probes:
-            terms = tuple(
-                (scale, _flattened(vector, f"xpath.{instance}.x1", wires)) for scale, vector in probe.terms
-            )
-            # ngspice does not save the voltage of ground
-            terms = tuple(term for term in terms if term[1] != "v(0)")
-            found.append(JunctionProbe(instance, probe.quantity, terms))
+        ammeters = {name.lower(): f"v.xpath.{instance}.v{name.lower()}" for name in slot.terminals[:-1]}
+        found.append(JunctionPlace(instance, design.switch.junctions[slot.name].name, nodes, ammeters))
+    return tuple(found)
+
+
+def _probes(design: Design, place: JunctionPlace) -> list[JunctionProbe]:
+    """Translate the probes of a junction's part to the names of the flattened circuit."""
+    part = next(j.part for j in design.switch.junctions.values() if j.name == place.junction)
+    wires = dict(zip((name.lower() for name in part.terminals), place.nodes.values(), strict=True))
+    found = []
+    for probe in part.probes:
+        prefix = f"xpath.{place.instance}.x1"
+        terms = ((scale, _flattened(vector, prefix, wires)) for scale, vector in probe.terms)
+        # ngspice does not save the voltage of ground
+        found.append(JunctionProbe(place.instance, probe.quantity, tuple(term for term in terms if term[1] != "v(0)")))
     return found
 
 

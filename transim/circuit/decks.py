@@ -92,7 +92,9 @@ def _command(control: Control, timeline: Timeline) -> str:
         timeline.on_for - timeline.edge,
         timeline.period,
     )
-    text = " ".join(map(deck_number, (control.low, control.high, *times)))
+    # twelve digits: binary fractions of a sum of times only make the deck hard to read
+    numbers = [control.low, control.high, *(float(f"{value:.12g}") for value in times)]
+    text = " ".join(map(deck_number, numbers))
     return f"Vcontrol ctl 0 DC {deck_number(control.low)} PULSE({text})\n"
 
 

@@ -61,6 +61,9 @@ class DiodeLaw:
         )
         if given.get("level", 1.0) != 1.0:
             used.append("level")
+        if "area" in device.parameters and device.parameters.get("m", 1.0) != 1.0:
+            # ngspice 39 multiplies the area by m anew before each analysis of a deck
+            used.append("m beside area")
         if used:
             raise LinearisationError(
                 device.name.upper(), f"diode parameter {used[0]} is not linearised; use the carrier analysis"
@@ -72,7 +75,9 @@ class DiodeLaw:
         factor = saturation_factor(kelvin, nominal, card["eg"], card["xti"]) / card["n"]
         saturation = max(card["is"], SMALLEST) * size * math.exp(factor)
         self._reverse = (card["nbv"] or card["n"]) * vt
-        knee = _breakdown(card["bv"], card["ibv"] * size, saturation, self._reverse)
+        # ngspice gives a device of any area the same IBV
+        at_breakdown = card["ibv"] * device.parameters.get("m", 1.0)
+        knee = _breakdown(card["bv"], at_breakdown, saturation, self._reverse, vt)
         self._scaled = _Scaled(saturation, card["n"] * vt, card["ikf"] * size, knee)
         self._transit = card["tt"]
         self._depletion = Depletion(
@@ -96,13 +101,13 @@ class DiodeLaw:
         return slope, self._transit * slope + self._depletion.capacitance(v)
 
 
-def _breakdown(voltage: float, current: float, saturation: float, vt: float) -> float:
-    """Return the knee voltage at which the breakdown exponential has to start to carry IBV at BV [V]."""
+def _breakdown(voltage: float, current: float, saturation: float, scale: float, vt: float) -> float:
+    """Return the knee voltage at which the breakdown exponential of slope `scale` has to start to carry IBV at BV [V]."""
     if voltage <= 0.0:
         return 0.0
     if current < saturation * voltage / vt:
         return voltage
-    knee = voltage - vt * math.log(1.0 + current / saturation)
+    knee = voltage - scale * math.log(1.0 + current / saturation)
     for _ in range(25):
-        knee = voltage - vt * math.log(current / saturation + 1.0 - knee / vt)
+        knee = voltage - scale * math.log(current / saturation + 1.0 - knee / vt)
     return knee

@@ -90,12 +90,16 @@ class TransistorLaw:
             )
         card = {**_DEFAULTS, **{key: value for key, value in given.items() if key in _DEFAULTS}}
         self._card = card
-        self._size = device.parameters.get("area", 1.0) * device.parameters.get("m", 1.0)
+        area, many = device.parameters.get("area", 1.0), device.parameters.get("m", 1.0)
+        self._size = area * many
         kelvin, nominal = temperature + 273.15, card["tnom"] + 273.15
         self._vt = thermal_voltage(kelvin)
         factor = saturation_factor(kelvin, nominal, card["eg"], card["xti"])
         gain = math.exp(card["xtb"] * math.log(kelvin / nominal))
         self._is = card["is"] * math.exp(factor) * self._size
+        # ngspice 39 scales IS of the collector junction by the area twice
+        self._reverse_is = self._is * area
+        self._gmin = GMIN * many
         self._bf, self._br = card["bf"] * gain, card["br"] * gain
         self._ise = card["ise"] * math.exp(factor / card["ne"]) / gain * self._size
         self._isc = card["isc"] * math.exp(factor / card["nc"]) / gain * self._size
@@ -156,15 +160,15 @@ class TransistorLaw:
         """
         card, vt = self._card, self._vt
         forward = exponential(vbe, card["nf"] * vt, self._is)
-        reverse = exponential(vbc, card["nr"] * vt, self._is)
+        reverse = exponential(vbc, card["nr"] * vt, self._reverse_is)
         leak_e = exponential(vbe, card["ne"] * vt, self._ise)
         leak_c = exponential(vbc, card["nc"] * vt, self._isc)
         qb, by_be, by_bc = self._base_charge(vbe, vbc, forward, reverse)
         transfer = (forward[0] - reverse[0]) / qb
         go = (reverse[1] + transfer * by_bc) / qb
         gm = (forward[1] - transfer * by_be) / qb - go
-        pi = forward[1] / self._bf + leak_e[1] + GMIN
-        mu = reverse[1] / self._br + leak_c[1] + GMIN
+        pi = forward[1] / self._bf + leak_e[1] + self._gmin
+        mu = reverse[1] / self._br + leak_c[1] + self._gmin
         base_current = forward[0] / self._bf + leak_e[0] + reverse[0] / self._br + leak_c[0]
         diffusion, cross = self._emitter_charge(vbe, vbc, forward, (qb, by_be, by_bc))
         inner = card["xcjc"]

@@ -48,9 +48,9 @@ def json_text(document: Mapping[str, Any]) -> str:
     Returns
     -------
     str
-        JSON, indented; what is no finite number is null.
+        JSON in ASCII, indented; what is no finite number is null.
     """
-    return json.dumps(_finite(document), indent=2, allow_nan=False, ensure_ascii=False) + "\n"
+    return json.dumps(_finite(document), indent=2, allow_nan=False) + "\n"
 
 
 def _finite(value: Any) -> Any:

@@ -2,32 +2,27 @@
 
 from __future__ import annotations
 
-import os
 from collections.abc import Mapping, Sequence
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
-from pathlib import Path
 
 import numpy as np
 
-from transim.circuit.assemble import Netlist, assemble
-from transim.circuit.decks import Deck, Origin, Tone, carrier_deck, static_deck, video_deck
-from transim.circuit.elements import Circuit, read_listing
-from transim.circuit.timeline import Timeline, timeline_of
+from transim.circuit.decks import Deck
+from transim.circuit.elements import Circuit
 from transim.design.model import Design, Driver
-from transim.engine.ngspice import Engine, EngineRun
+from transim.engine.ngspice import Engine
 from transim.engine.rawfile import Plot
-from transim.envelope.carrier import extract_envelope
-from transim.envelope.check import bias_check_deck
 from transim.envelope.junction import Array
 from transim.envelope.linearise import Bias, linearise, saved_vectors
 from transim.envelope.method import Envelope, solve_envelope
-from transim.envelope.stationary import Complex, largest_difference, read_scattering
+from transim.envelope.stationary import Complex, largest_difference
 from transim.measure.limits import Judgement, Verdict, judge, verdict
 from transim.measure.metrics import Figure, extract
 from transim.measure.record import Record
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
+from transim.study.case import Case
+from transim.study.records import record_of
 
 __all__ = ["CaseRun", "Result", "simulate"]
 
@@ -39,8 +34,6 @@ _CHECKS = {
     "check_end": "at the end of the pulse",
     "check_fall": "half way on the command's falling edge",
 }
-#: Carrier periods before the first edge of a carrier run, for its start-up to die away.
-_SETTLING_PERIODS = 20.0
 
 
 @dataclass(frozen=True)
@@ -114,89 +107,6 @@ class CaseRun:
     engine_seconds: float
 
 
-class _Case:
-    """Decks of one driver and temperature, and what they gave so far."""
-
-    def __init__(self, design: Design, driver: Driver, temperature: float, engine: Engine) -> None:
-        self.design = design
-        self.engine = engine
-        self.temperature = temperature
-        self.netlist: Netlist = assemble(design, driver)
-        self.timeline: Timeline = timeline_of(design)
-        self.origin = Origin(
-            design.title, Path(design.source.path or "design").name, driver.name, temperature
-        )
-        self.decks: list[Deck] = []
-        self.seconds = 0.0
-
-    def run(self, deck: Deck) -> EngineRun:
-        self.decks.append(deck)
-        done = self.engine.run(
-            deck.text,
-            name=deck.name,
-            timeout=self.design.numerics.timeout,
-            stop_time=deck.stop,
-            writes_raw=deck.writes_raw,
-        )
-        self.seconds += done.seconds
-        return done
-
-    def static(self) -> tuple[Circuit, Complex]:
-        """Return the flattened circuit and S in both states, shape (2, f, p, p), command low first."""
-        design = self.design
-        deck = static_deck(
-            self.netlist, design.control, design.carrier.frequency, design.numerics, self.origin
-        )
-        done = self.run(deck)
-        plots = [plot for plot in done.plots if plot.name.startswith("AC")]
-        half = len(plots) // 2
-        states = [
-            read_scattering(some, self.netlist.ports, design.carrier.frequency)
-            for some in (plots[:half], plots[half:])
-        ]
-        return read_listing(done.log), np.stack(states)
-
-    def video(self, saved: Sequence[str]) -> Plot:
-        """Return the run of the control pulse without RF."""
-        design = self.design
-        deck = video_deck(self.netlist, design.control, self.timeline, design.numerics, self.origin, saved)
-        return self.run(deck).plots[0]
-
-    def check(self, name: str, circuit: Circuit, vectors: Mapping[str, Array], point: int) -> Complex:
-        """Return S at the bias of one point of the video run, by ngspice, shape (f, p, p)."""
-        here = slice(point, point + 1)
-        bias = Bias({vector: values[here] for vector, values in vectors.items()}, vectors["time"][here])
-        frequencies = self.design.carrier.frequency
-        deck = bias_check_deck(name, circuit, bias, self.netlist.ports, frequencies, self.origin)
-        return read_scattering(self.run(deck).plots, self.netlist.ports, frequencies)
-
-    def carrier(self, frequency: float) -> tuple[Timeline, Waveform]:
-        """Return the timeline of carrier-resolved runs and the complex S21 that they give."""
-        design, netlist = self.design, self.netlist
-        timeline = timeline_of(design, settle=_SETTLING_PERIODS / frequency, overrun=2.0 / frequency)
-        # available power of a source of amplitude E behind Z0 is E^2 / 8 Z0
-        watts = 1e-3 * 10.0 ** (design.carrier.level / 10.0)
-        amplitude = float(np.sqrt(8.0 * watts * design.carrier.impedance))
-        first, second = netlist.through
-        decks = [
-            carrier_deck(
-                netlist,
-                design.control,
-                timeline,
-                design.numerics,
-                self.origin,
-                Tone(frequency, size, phase, first),
-            )
-            for size, phase in ((amplitude, 0.0), (amplitude, 90.0), (0.0, 0.0))
-        ]
-        with ThreadPoolExecutor(max_workers=min(3, os.cpu_count() or 1)) as pool:
-            plots = [done.plots[0] for done in pool.map(self.run, decks)]
-        node = f"v({netlist.ports[second].node})"
-        runs = tuple((plot["time"], plot[node]) for plot in plots)
-        time, envelope = extract_envelope(runs, frequency, design.numerics.carrier_points)  # type: ignore[arg-type]
-        return timeline, Waveform(time, 2.0 * envelope / amplitude, "1")
-
-
 def simulate(
     design: Design, driver: Driver, temperature: float, engine: Engine, analyses: Sequence[str]
 ) -> CaseRun:
@@ -226,7 +136,7 @@ def simulate(
     LinearisationError
         If the envelope analysis is asked for and an element has no small-signal form.
     """
-    case = _Case(design, driver, temperature, engine)
+    case = Case(design, driver, temperature, engine)
     circuit, states = case.static()
     saved = saved_vectors(circuit) if "envelope" in analyses else ()
     video = case.video(saved)
@@ -247,7 +157,7 @@ def simulate(
 
 
 def _envelope(
-    case: _Case,
+    case: Case,
     circuit: Circuit,
     states: Complex,
     vectors: Mapping[str, Array],
@@ -268,7 +178,7 @@ def _envelope(
         pair = solution.s[k, :, netlist.through[1], netlist.through[0]]
         waveform = Waveform(solution.time, pair, "1")
         envelopes["envelope", frequency] = waveform
-        record = _record(case, case.timeline, frequency, waveform, states[:, k], vectors)
+        record = record_of(case, case.timeline, frequency, waveform, states[:, k], vectors)
         differences = {
             name: largest_difference(references[name][k], solution.frozen[k, point]) for name, point in points.items()
         }
@@ -276,7 +186,7 @@ def _envelope(
         results.append(_result(case, record, "envelope", method, differences))
 
 
-def _check_points(case: _Case, solution: Envelope) -> dict[str, int]:
+def _check_points(case: Case, solution: Envelope) -> dict[str, int]:
     """Return the points of the video run at which ngspice linearises too: half way on both edges, end of the pulse."""
     timeline, time = case.timeline, solution.time
     first, second = case.netlist.through
@@ -296,7 +206,7 @@ def _check_points(case: _Case, solution: Envelope) -> dict[str, int]:
 
 
 def _carrier(
-    case: _Case,
+    case: Case,
     states: Complex,
     vectors: Mapping[str, Array],
     results: list[Result],
@@ -309,65 +219,12 @@ def _carrier(
         shift = timeline.lead - case.timeline.lead
         waveform = Waveform(waveform.time - shift, waveform.value, "1")
         envelopes["carrier", frequency] = waveform
-        record = _record(case, case.timeline, frequency, waveform, states[:, k], vectors)
+        record = record_of(case, case.timeline, frequency, waveform, states[:, k], vectors)
         method = f"quadrature of two runs with {points} points a period, less one without RF"
         results.append(_result(case, record, "carrier", method, {}))
 
 
-def _record(
-    case: _Case,
-    timeline: Timeline,
-    frequency: float,
-    envelope: Waveform,
-    states: Complex,
-    vectors: Mapping[str, Array],
-) -> Record:
-    """Collect the waveforms of one carrier; `states` has shape (2, p, p), command low first."""
-    design, netlist = case.design, case.netlist
-    passes = bool(design.switch.path.passes)
-    first, second = netlist.through
-    on, off = (states[1], states[0]) if passes else (states[0], states[1])
-    time = vectors["time"]
-    probes: dict[str, dict[str, Waveform]] = {"charge": {}, "reverse": {}}
-    for probe in netlist.probes:
-        if probe.quantity in probes:
-            total = sum((scale * _vector(vectors, name) for scale, name in probe.terms), np.zeros(time.size))
-            found = probes[probe.quantity]
-            name = probe.junction if probe.junction not in found else f"{probe.junction} {len(found) + 1}"
-            found[name] = Waveform(time, np.asarray(total), "C" if probe.quantity == "charge" else "V")
-    power = None
-    if netlist.supplies:
-        rails = [name.removeprefix("vsupply_") for name in netlist.supplies]
-        delivered = [-vectors[f"v({rail})"] * vectors[f"i(vsupply_{rail})"] for rail in rails]
-        power = Waveform(time, np.sum(delivered, axis=0), "W")
-    return Record(
-        timing=timeline.timing(passes),
-        definitions=design.definitions,
-        carrier=frequency,
-        impedance=design.carrier.impedance,
-        biased_passes=passes,
-        envelope=envelope,
-        static_on=complex(on[second, first]),
-        static_off=complex(off[second, first]),
-        match_on=complex(on[first, first]),
-        match_off=complex(off[first, first]),
-        video={port.node: Waveform(time, vectors[f"v({port.node})"], "V") for port in netlist.ports},
-        drive_current=Waveform(time, vectors["i(vdrive)"], "A"),
-        supply_power=power,
-        junction_charge=probes["charge"],
-        junction_reverse=probes["reverse"],
-    )
-
-
-def _vector(vectors: Mapping[str, Array], name: str) -> Array:
-    """Find a saved vector; ngspice prints device quantities with the letter of their kind around them."""
-    for known in (name, f"i({name})", f"v({name})"):
-        if known in vectors:
-            return vectors[known]
-    raise KeyError(name)
-
-
-def _result(case: _Case, record: Record, analysis: str, method: str, differences: Mapping[str, float]) -> Result:
+def _result(case: Case, record: Record, analysis: str, method: str, differences: Mapping[str, float]) -> Result:
     figures = extract(record)
     faults = tuple(
         f"{_CHECKS[name]}, the envelope differs by {format_quantity(difference, 'dB')} from ngspice's AC analysis at "

@@ -1,0 +1,89 @@
+"""The waveforms of a case, collected for the metrics."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+
+from transim.circuit.timeline import Timeline
+from transim.envelope.junction import Array
+from transim.envelope.stationary import Complex
+from transim.measure.record import Record
+from transim.measure.waveform import Waveform
+from transim.study.case import Case
+
+__all__ = ["record_of"]
+
+
+def record_of(
+    case: Case,
+    timeline: Timeline,
+    frequency: float,
+    envelope: Waveform,
+    states: Complex,
+    vectors: Mapping[str, Array],
+) -> Record:
+    """Collect the waveforms of one carrier.
+
+    Parameters
+    ----------
+    case : Case
+        The circuit.
+    timeline : Timeline
+        Of the waveforms.
+    frequency : float
+        Carrier [Hz].
+    envelope : Waveform
+        Complex S of the through pair.
+    states : ndarray, shape (2, p, p)
+        S in the settled states, command low first.
+    vectors : mapping
+        The video run, by name as ngspice prints it.
+
+    Returns
+    -------
+    Record
+    """
+    design, netlist = case.design, case.netlist
+    passes = bool(design.switch.path.passes)
+    first, second = netlist.through
+    on, off = (states[1], states[0]) if passes else (states[0], states[1])
+    time = vectors["time"]
+    probes: dict[str, dict[str, Waveform]] = {"charge": {}, "reverse": {}}
+    for probe in netlist.probes:
+        if probe.quantity in probes:
+            total = sum((scale * _vector(vectors, name) for scale, name in probe.terms), np.zeros(time.size))
+            found = probes[probe.quantity]
+            name = probe.junction if probe.junction not in found else f"{probe.junction} {len(found) + 1}"
+            found[name] = Waveform(time, np.asarray(total), "C" if probe.quantity == "charge" else "V")
+    power = None
+    if netlist.supplies:
+        rails = [name.removeprefix("vsupply_") for name in netlist.supplies]
+        delivered = [-vectors[f"v({rail})"] * vectors[f"i(vsupply_{rail})"] for rail in rails]
+        power = Waveform(time, np.sum(delivered, axis=0), "W")
+    return Record(
+        timing=timeline.timing(passes),
+        definitions=design.definitions,
+        carrier=frequency,
+        impedance=design.carrier.impedance,
+        biased_passes=passes,
+        envelope=envelope,
+        static_on=complex(on[second, first]),
+        static_off=complex(off[second, first]),
+        match_on=complex(on[first, first]),
+        match_off=complex(off[first, first]),
+        video={port.node: Waveform(time, vectors[f"v({port.node})"], "V") for port in netlist.ports},
+        drive_current=Waveform(time, vectors["i(vdrive)"], "A"),
+        supply_power=power,
+        junction_charge=probes["charge"],
+        junction_reverse=probes["reverse"],
+    )
+
+
+def _vector(vectors: Mapping[str, Array], name: str) -> Array:
+    """Find a saved vector; ngspice prints device quantities with the letter of their kind around them."""
+    for known in (name, f"i({name})", f"v({name})"):
+        if known in vectors:
+            return vectors[known]
+    raise KeyError(name)
