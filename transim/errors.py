@@ -8,7 +8,8 @@
     |  |- TopologyError                         a node, port or terminal that does not fit
     |  `- InvalidDesign                         all the errors of one design file together
     |- NetlistError                    exit 2   file, line: a part file, model card or netlist
-    |  `- LinearisationError                    an element that the envelope solver refuses, by name
+    |  |- LinearisationError                    an element that the envelope solver refuses, by name
+    |  `- RecordError                           file, line: measured data that cannot be used
     |- OutputError                     exit 2   a result folder or file that cannot be written
     |- EngineError                     exit 3   command, return code, log tail, deck kept at
     |  |- EngineNotFound
@@ -43,6 +44,7 @@ __all__ = [
     "OutputError",
     "QuantityError",
     "RawFileError",
+    "RecordError",
     "TopologyError",
     "TransimError",
 ]
@@ -216,6 +218,20 @@ class LinearisationError(NetlistError):
     def __init__(self, element: str, reason: str) -> None:
         super().__init__(f"{element}: {reason}")
         self.element = element
+
+
+class RecordError(NetlistError):
+    """A file of measured data, or a document of a record, that cannot be used.
+
+    Parameters
+    ----------
+    message : str
+        What is wrong and what to change.
+    file : Path or None
+        The file.
+    line : int or None
+        Its line, counted from 1.
+    """
 
 
 class OutputError(TransimError):

@@ -42,12 +42,15 @@ class Deck:
         Whether its own control block writes NAME.raw; otherwise ngspice's option ``-r`` does.
     stop : float or None
         End of a transient [s].
+    group : str
+        Folder for decks that come in sets; empty otherwise.
     """
 
     name: str
     text: str
     writes_raw: bool
     stop: float | None = None
+    group: str = ""
 
 
 def deck_head(name: str, origin: Origin, what: Sequence[str], writes_raw: bool) -> str:
@@ -221,6 +224,15 @@ class Tone:
     port: int
 
 
+def _carrier_vectors(netlist: Netlist) -> list[str]:
+    """Return what a carrier-resolved run saves: ports, bias, driver, and what tells of each junction."""
+    nodes = {port.node: None for port in netlist.ports} | {"ctl": None, "bias": None}
+    nodes |= {node: None for place in netlist.junctions for node in place.nodes.values()}
+    currents = ["vdrive", *(name for place in netlist.junctions for name in place.ammeters.values())]
+    voltages = [f"v({node})" for node in nodes if node != "0"]
+    return [*voltages, *(f"i({name})" for name in currents), *netlist.saved]
+
+
 def carrier_deck(
     netlist: Netlist, control: Control, timeline: Timeline, numerics: Numerics, origin: Origin, tone: Tone
 ) -> Deck:
@@ -259,7 +271,6 @@ def carrier_deck(
             values = (0.0, tone.amplitude, tone.frequency, 0.0, 0.0, tone.phase + 90.0)
             drive = f" SIN({' '.join(map(deck_number, values))})"
         sources += f"{port.source} e{port.node} 0 DC 0{drive}\n"
-    nodes = " ".join(f"v({port.node})" for port in netlist.ports)
     text = (
         deck_head(name, origin, what, False)
         + netlist.text
@@ -267,7 +278,7 @@ def carrier_deck(
         + sources
         + _options(numerics, origin.temperature, "trap")
         + ".options vntol=1e-9 abstol=1e-14 chgtol=1e-18\n"
-        + f".save v(ctl) {nodes} i(vdrive) {' '.join(netlist.saved)}".rstrip()
+        + f".save {' '.join(_carrier_vectors(netlist))}"
         + f"\n.tran {deck_number(step)} {deck_number(timeline.stop)} 0 {deck_number(step)}\n.end\n"
     )
     return Deck(name, text, writes_raw=False, stop=timeline.stop)

@@ -48,7 +48,7 @@ def check_design(console: Console, file: Path) -> int:
     design = read_design(file)
     for driver in design.drivers:
         assemble(design, driver)
-    console.write([*_describe(design), f"{file}: no errors; next: transim run {file}"])
+    console.write([*_describe(design), f"no errors; next: transim run {file}"])
     console.document(_document(design))
     return 0
 
@@ -143,7 +143,7 @@ def _rf(design: Design) -> Iterator[str]:
     frequencies = ", ".join(format_quantity(value, "Hz", 12) for value in carrier.frequency)
     degrees = ", ".join(format_quantity(value, "degC", 12) for value in design.environment.temperature)
     yield from wrap(
-        f"carriers: {frequencies} at {format_quantity(carrier.level, 'dBm')} from"
+        f"carriers: {frequencies} at {', '.join(format_quantity(level, 'dBm') for level in carrier.level)} from"
         f" {format_quantity(carrier.impedance, 'ohm')} into {format_quantity(carrier.impedance, 'ohm')}"
     )
     yield f"temperatures: {degrees}"

@@ -49,7 +49,7 @@ def new_design(console: Console, file: str, path: str, driver: str, *, force: bo
         console.write(text.splitlines())
     else:
         write_file(target, text)
-        console.write([f"{file}: a design with the path {path} and the driver {driver}; next: transim check {file}"])
+        console.write([f"a design with the path {path} and the driver {driver}; next: transim check {file}"])
     console.document(
         {"format": FORMAT, "file": None if file == "-" else file, "path": path, "driver": driver, "text": text}
     )

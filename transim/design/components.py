@@ -10,6 +10,7 @@ from transim.design.faults import Faults
 from transim.design.fields import Line, Quantity, shown
 from transim.design.locate import KeyPath
 from transim.design.model import Driver, Junction, Switch
+from transim.design.ratings import read_driver_ratings, read_junction_ratings
 from transim.errors import DesignError, NetlistError, TopologyError
 from transim.parts.cards import read_model_card
 from transim.parts.catalogue import Catalogue
@@ -99,9 +100,10 @@ class Components:
             path = ("driver", name)
             part = self._part("driver", (*path, "part"), table)
             if part is not None:
-                values = self._values(part, path, table, {"part", "model"})
+                values = self._values(part, path, table, {"part", "model", "ratings"})
                 model = self._model(part, path, table)
-                drivers.append(Driver(name=name, part=part, values=values, model=model))
+                ratings = read_driver_ratings(self._faults, path, table, part)
+                drivers.append(Driver(name=name, part=part, values=values, model=model, ratings=ratings))
         return tuple(drivers)
 
     def _junction(self, name: str, table: Mapping[str, object]) -> Junction | None:
@@ -109,8 +111,9 @@ class Components:
         part = self._part("junction", (*path, "part"), table)
         if part is None:
             return None
-        values = self._values(part, path, table, {"part", "model"})
-        return Junction(name=name, part=part, values=values, model=self._model(part, path, table))
+        values = self._values(part, path, table, {"part", "model", "ratings"})
+        ratings = read_junction_ratings(self._faults, path, table, part)
+        return Junction(name=name, part=part, values=values, model=self._model(part, path, table), ratings=ratings)
 
     def _named_tables(self, kind: str, raw: object) -> dict[str, dict[str, object]]:
         """Return the tables `[kind.NAME]`, refusing names that cannot stand in a deck."""

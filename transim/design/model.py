@@ -10,6 +10,7 @@ from pydantic import BaseModel, ConfigDict, Field, InstanceOf, ValidationInfo, f
 
 from transim.design.fields import Choice, Count, Line, Quantity, Series
 from transim.design.frozen import Frozen
+from transim.design.ratings import DriverRatings, JunctionRatings
 from transim.errors import DesignError
 from transim.measure.definitions import Definitions
 from transim.measure.limits import Limit
@@ -118,8 +119,8 @@ class Carrier(_Table):
     ----------
     frequency : tuple of float
         Carriers, each simulated [Hz].
-    level : float
-        Available power of the source [dBm].
+    level : tuple of float
+        Available power of the source, each simulated where the carrier is resolved [dBm].
     impedance : float
         Of source and loads, and reference of the S-parameters [ohm].
     """
@@ -127,8 +128,8 @@ class Carrier(_Table):
     frequency: Annotated[tuple[float, ...], Series(Quantity("Hz", 0.0, 1e12, True))] = Field(
         description="one frequency or an array of them"
     )
-    level: Annotated[float, Quantity("dBm", -200.0, 80.0)] = Field(
-        default=-10.0, description="available power of the RF source"
+    level: Annotated[tuple[float, ...], Series(Quantity("dBm", -200.0, 80.0))] = Field(
+        default=(-10.0,), description="available power of the RF source, one level or an array of them"
     )
     impedance: Annotated[float, Quantity("ohm", 0.0, 1e5, True)] = Field(
         default=50.0, description="of the RF source and of every load"
@@ -148,12 +149,15 @@ class Junction(_Table):
         Every parameter of the part, in its unit.
     model : str or None
         A `.model` card that replaces the part's own.
+    ratings : JunctionRatings
+        What it stands at most.
     """
 
     name: str
     part: InstanceOf[Part]
     values: Annotated[Mapping[str, float], Frozen()]
     model: str | None = None
+    ratings: JunctionRatings = JunctionRatings()
 
 
 class Switch(_Table):
@@ -187,12 +191,15 @@ class Driver(_Table):
         Every supply and parameter of the part, in its unit.
     model : str or None
         A `.model` card that replaces the part's own.
+    ratings : DriverRatings
+        What it stands at most.
     """
 
     name: str
     part: InstanceOf[Part]
     values: Annotated[Mapping[str, float], Frozen()]
     model: str | None = None
+    ratings: DriverRatings = DriverRatings()
 
 
 class Measure(_Table):

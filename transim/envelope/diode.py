@@ -83,6 +83,8 @@ class DiodeLaw:
         self._depletion = Depletion(
             card["cjo"] * size, card["vj"], card["m"], card["fc"], kelvin=kelvin, nominal=nominal
         )
+        #: N Vt [V].
+        self.scale = card["n"] * vt
         #: Series resistance [ohm].
         self.resistance = card["rs"] * (1.0 + card["trs"] * (kelvin - nominal)) / size
 

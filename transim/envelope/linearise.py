@@ -9,7 +9,7 @@ P. A. Brennan, IEEE Trans. Circuits Syst. 22(6), 1975). With x the complex envel
 from __future__ import annotations
 
 from collections.abc import Collection, Iterable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
@@ -87,6 +87,29 @@ class Bias:
 
 
 @dataclass(frozen=True)
+class InnerJunction:
+    """A p-n junction inside a device, and where its RF voltage stands among the unknowns.
+
+    Attributes
+    ----------
+    device : str
+        Flattened name.
+    plus, minus : int
+        Places of its nodes in x; -1 is ground.
+    scale : float
+        N Vt [V]: an RF voltage well below it leaves the junction linear.
+    current : ndarray, shape (n,)
+        Slope times `scale`: its exponential current along the bias (of a transistor, the base's share) [A].
+    """
+
+    device: str
+    plus: int
+    minus: int
+    scale: float
+    current: Array
+
+
+@dataclass(frozen=True)
 class Network:
     """Matrices of the linear time-varying network.
 
@@ -102,6 +125,8 @@ class Network:
         What is added there, for each time point.
     time : ndarray, shape (n,)
         Time of the points [s].
+    junctions : tuple of InnerJunction
+        The p-n junctions of all devices.
     """
 
     unknowns: Mapping[str, int]
@@ -112,6 +137,7 @@ class Network:
     varying_g: Array
     varying_c: Array
     time: Array
+    junctions: tuple[InnerJunction, ...] = ()
 
     @property
     def size(self) -> int:
@@ -120,10 +146,14 @@ class Network:
 
     def at(self, points: npt.NDArray[np.intp]) -> Network:
         """Return the same network at some of its time points only."""
-        return Network(
-            self.unknowns, self.constant_g, self.constant_c, self.rows, self.columns,
-            self.varying_g[points], self.varying_c[points], self.time[points],
-        )  # fmt: skip
+        junctions = tuple(replace(junction, current=junction.current[points]) for junction in self.junctions)
+        return replace(
+            self,
+            varying_g=self.varying_g[points],
+            varying_c=self.varying_c[points],
+            time=self.time[points],
+            junctions=junctions,
+        )
 
     def scaled_changes(self) -> Array:
         """Return every entry that changes on a scale where equal distances are equal shares, shape (n, k or less).
@@ -176,6 +206,7 @@ class _Stamps:
         self.unknowns: dict[str, int] = {}
         self.constant: dict[str, dict[tuple[int, int], float]] = {"g": {}, "c": {}}
         self.varying: dict[str, dict[tuple[int, int], Array]] = {"g": {}, "c": {}}
+        self.junctions: list[InnerJunction] = []
 
     def place(self, key: str) -> int:
         return self.unknowns.setdefault(key, len(self.unknowns))
@@ -191,7 +222,7 @@ class _Stamps:
             table[row, column] = table.get((row, column), 0.0) + np.asarray(value)
         else:
             fixed = self.constant[kind]
-            fixed[row, column] = fixed.get((row, column), 0.0) + float(value)
+            fixed[row, column] = fixed.get((row, column), 0.0) + np.asarray(value).item()
 
     def transfer(
         self, out: tuple[str, str], control: tuple[str, str], value: float | Array, kind: str = "g"
@@ -234,6 +265,7 @@ class _Stamps:
             varying["g"],
             varying["c"],
             time,
+            tuple(self.junctions),
         )
 
 
@@ -349,6 +381,9 @@ def _stamp_diode(stamps: _Stamps, device: Device, bias: Bias, temperature: float
         inner = f"{device.name}#anode"
         stamps.admittance(anode, inner, 1.0 / law.resistance)
     stamps.admittance(inner, cathode, conductance)
+    stamps.junctions.append(
+        InnerJunction(device.name, stamps.node(inner), stamps.node(cathode), law.scale, conductance * law.scale)
+    )
     stamps.admittance(inner, cathode, capacitance, "c")
 
 
@@ -372,6 +407,8 @@ def _stamp_transistor(stamps: _Stamps, device: Device, bias: Bias, temperature: 
     if law.has_base_resistance:
         stamps.admittance(base, inner["base"], signal.base)
     b, c, e = inner["base"], inner["collector"], inner["emitter"]
+    for minus, scale, slope in ((e, law.scales[0], signal.pi), (c, law.scales[1], signal.mu)):
+        stamps.junctions.append(InnerJunction(device.name, stamps.node(b), stamps.node(minus), scale, slope * scale))
     stamps.admittance(b, e, signal.pi)
     stamps.admittance(b, e, signal.c_be, "c")
     stamps.admittance(b, c, signal.mu)

@@ -107,6 +107,8 @@ class TransistorLaw:
         self._be = Depletion(card["cje"] * self._size, card["vje"], card["mje"], card["fc"], **both)
         self._bc = Depletion(card["cjc"] * self._size, card["vjc"], card["mjc"], card["fc"], **both)
         self._cs = Depletion(card["cjs"] * self._size, card["vjs"], card["mjs"], 0.0, **both)
+        #: NF Vt and NR Vt [V].
+        self.scales = (card["nf"] * self._vt, card["nr"] * self._vt)
         #: Series resistances [ohm]; the base's part that does not depend on bias is inside `small_signal`.
         self.collector_resistance = card["rc"] / self._size
         self.emitter_resistance = card["re"] / self._size

@@ -4,10 +4,11 @@ Nothing here knows a deck or a circuit: a simulated cycle and an oscilloscope re
 """
 
 # Importing a module of figures enters them in the register, in the order of the imports.
-from transim.measure import pulse, settling, leakage, drive, static  # isort: skip
+from transim.measure import pulse, settling, leakage, drive, dissipation, rate, static, holdoff, large  # isort: skip
 from transim.measure.definitions import Definitions, Timing
 from transim.measure.limits import Judgement, Limit, Verdict, judge, verdict
 from transim.measure.metrics import METRICS, Figure, Metric, extract, metric
+from transim.measure.rating import Rating
 from transim.measure.record import Record
 from transim.measure.waveform import Waveform
 
@@ -18,16 +19,21 @@ __all__ = [
     "Judgement",
     "Limit",
     "Metric",
+    "Rating",
     "Record",
     "Timing",
     "Verdict",
     "Waveform",
+    "dissipation",
     "drive",
     "extract",
+    "holdoff",
     "judge",
+    "large",
     "leakage",
     "metric",
     "pulse",
+    "rate",
     "settling",
     "static",
     "verdict",

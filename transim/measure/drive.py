@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 from transim.errors import MeasurementError
+from transim.measure.cycle import period_mean
 from transim.measure.metrics import metric
 from transim.measure.pulse import off_time, on_time
 from transim.measure.record import Record
@@ -15,7 +18,9 @@ __all__ = [
     "driver_sink_peak",
     "driver_source_peak",
     "junction_charge",
+    "junction_current_peak",
     "junction_reverse",
+    "supply_current_peak",
 ]
 
 
@@ -141,11 +146,7 @@ def driver_power(record: Record) -> float:
     """
     if record.supply_power is None:
         raise MeasurementError("the driver has no supply")
-    timing = record.timing
-    cycle = record.supply_power.between(timing.start, timing.stop)
-    rest = max(0.0, timing.period - (timing.stop - timing.start))
-    energy = cycle.integral() + rest * float(cycle.value[-1].real)
-    return energy / (timing.stop - timing.start + rest)
+    return period_mean(record.supply_power, record.timing)
 
 
 @metric("junction_charge", unit="C", title="Junction charge when conducting")
@@ -198,6 +199,52 @@ def junction_reverse(record: Record) -> float:
     return max(0.0, *(wave.between(*cycle).extremes()[1] for wave in record.junction_reverse.values()))
 
 
+@metric("junction_current_peak", unit="A", title="Junction forward current, largest")
+def junction_current_peak(record: Record) -> float:
+    """Return the largest forward current of any junction in the cycle.
+
+    Parameters
+    ----------
+    record : Record
+        The cycle.
+
+    Returns
+    -------
+    float
+        Current into the anode, of a transistor through its base; displacement current included, 0 if no
+        junction ever conducts forward [A].
+
+    Raises
+    ------
+    MeasurementError
+        If no junction current is recorded or a sample is not finite.
+    """
+    return max(0.0, _largest(record, record.junction_current, "junction current"))
+
+
+@metric("supply_current_peak", unit="A", title="Supply current, largest of any supply")
+def supply_current_peak(record: Record) -> float:
+    """Return the largest current of either direction in any supply.
+
+    Parameters
+    ----------
+    record : Record
+        The cycle.
+
+    Returns
+    -------
+    float
+        Magnitude of the current [A].
+
+    Raises
+    ------
+    MeasurementError
+        If no supply current is recorded or a sample is not finite.
+    """
+    sizes = {name: wave.magnitude() for name, wave in record.supply_current.items()}
+    return _largest(record, sizes, "supply current")
+
+
 def _current(record: Record) -> Waveform:
     if record.drive_current is None:
         raise MeasurementError("no driver current in this record")
@@ -209,3 +256,10 @@ def _moved(record: Record, begin: float, end: float, *, outward: bool) -> float:
     current = _current(record)
     charge = current.between(begin, end).integral() if end > begin else 0.0
     return charge if outward else -charge
+
+
+def _largest(record: Record, waves: Mapping[str, Waveform], what: str) -> float:
+    if not waves:
+        raise MeasurementError(f"no {what} in this record")
+    cycle = record.timing.start, record.timing.stop
+    return max(wave.between(*cycle).extremes()[1] for wave in waves.values())

@@ -8,11 +8,13 @@ from dataclasses import dataclass
 from difflib import get_close_matches
 from typing import Literal
 
-from transim.errors import DesignError
+from transim.errors import DesignError, MeasurementError
 from transim.measure.metrics import METRICS, Figure
+from transim.measure.rating import Rating
+from transim.measure.record import Record
 from transim.quantities import format_quantity
 
-__all__ = ["Judgement", "Limit", "Verdict", "judge", "verdict"]
+__all__ = ["Judgement", "Limit", "Verdict", "judge", "judge_ratings", "verdict"]
 
 Verdict = Literal["pass", "fail", "undefined"]
 
@@ -77,6 +79,10 @@ class Judgement:
         Distance to the nearer bound, negative where that is missed, in the metric's unit.
     verdict : {"pass", "fail", "undefined"}
         The outcome.
+    unit : str or None
+        Unit of bounds, value and margin where `metric` is no metric but a rating; None: that of the metric.
+    note : str or None
+        Why a rating could not be judged.
     """
 
     metric: str
@@ -85,6 +91,8 @@ class Judgement:
     value: float | None
     margin: float | None
     verdict: Verdict
+    unit: str | None = None
+    note: str | None = None
 
 
 def judge(figures: Mapping[str, Figure], limits: Sequence[Limit]) -> tuple[Judgement, ...]:
@@ -104,6 +112,23 @@ def judge(figures: Mapping[str, Figure], limits: Sequence[Limit]) -> tuple[Judge
         verdict "undefined".
     """
     return tuple(_judge(figures.get(limit.metric), limit) for limit in limits)
+
+
+def judge_ratings(record: Record) -> tuple[Judgement, ...]:
+    """Hold the record's waveforms against the ratings of their components.
+
+    Parameters
+    ----------
+    record : Record
+        The cycle, with its ratings.
+
+    Returns
+    -------
+    tuple of Judgement
+        One for each rating, in their order; the metric is ``rating`` and its name. A peak is taken over the
+        whole transient, a mean over the period.
+    """
+    return tuple(_held(record, rating) for rating in record.ratings)
 
 
 def verdict(judgements: Iterable[Judgement]) -> Verdict:
@@ -137,3 +162,16 @@ def _judge(figure: Figure | None, limit: Limit) -> Judgement:
     margin = min(margins)
     outcome: Verdict = "pass" if margin >= 0.0 else "fail"
     return Judgement(limit.metric, limit.min, limit.max, value, margin, outcome)
+
+
+def _held(record: Record, rating: Rating) -> Judgement:
+    name, note, value = f"rating {rating.name}", None, None
+    try:
+        value = rating.value(record.timing)
+    except MeasurementError as reason:
+        note = reason.message
+    if value is None or not math.isfinite(value):
+        note = note or "the waveform gives no finite number"
+        return Judgement(name, None, rating.max, None, None, "undefined", rating.unit, note)
+    margin = rating.max - value
+    return Judgement(name, None, rating.max, value, margin, "pass" if margin >= 0.0 else "fail", rating.unit)

@@ -9,9 +9,13 @@ from types import MappingProxyType
 
 from transim.errors import MeasurementError
 from transim.measure.definitions import Definitions, Timing
+from transim.measure.rating import Rating
+from transim.measure.rf import LargeSignal, RfStress
 from transim.measure.waveform import Waveform
 
 __all__ = ["Record"]
+
+_WAVEFORMS = ("video", "junction_charge", "junction_reverse", "junction_current", "junction_power", "supply_current")
 
 
 @dataclass(frozen=True, eq=False, kw_only=True)
@@ -48,6 +52,20 @@ class Record:
         Stored charge of each junction, positive when forward biased [C].
     junction_reverse : mapping of str to Waveform
         Voltage across each junction, positive when reverse biased [V].
+    junction_current : mapping of str to Waveform
+        Current into the anode of each junction, of a transistor through its base, positive when forward [A].
+    junction_power : mapping of str to Waveform
+        Power into each junction [W].
+    driver_output_power : Waveform or None
+        Power out of the driver [W].
+    supply_current : mapping of str to Waveform
+        Current out of each supply [A].
+    ratings : tuple of Rating
+        Maximum ratings, each with the waveform that it applies to.
+    stress : RfStress or None
+        RF voltages and currents in the junctions at the stated level.
+    large : LargeSignal or None
+        What carrier-resolved runs show beside the envelope.
 
     Raises
     ------
@@ -70,11 +88,18 @@ class Record:
     supply_power: Waveform | None = None
     junction_charge: Mapping[str, Waveform] = field(default_factory=dict)
     junction_reverse: Mapping[str, Waveform] = field(default_factory=dict)
+    junction_current: Mapping[str, Waveform] = field(default_factory=dict)
+    junction_power: Mapping[str, Waveform] = field(default_factory=dict)
+    driver_output_power: Waveform | None = None
+    supply_current: Mapping[str, Waveform] = field(default_factory=dict)
+    ratings: tuple[Rating, ...] = ()
+    stress: RfStress | None = None
+    large: LargeSignal | None = None
 
     def __post_init__(self) -> None:
         for name in ("carrier", "impedance"):
             value = getattr(self, name)
             if not (math.isfinite(value) and value > 0.0):
                 raise MeasurementError(f"{name} must be a finite positive number, found {value}")
-        for name in ("video", "junction_charge", "junction_reverse"):
+        for name in _WAVEFORMS:
             object.__setattr__(self, name, MappingProxyType(dict(getattr(self, name))))

@@ -10,7 +10,7 @@ from transim.circuit.decks import Deck
 from transim.circuit.timeline import timeline_of
 from transim.design.model import Design, Driver
 from transim.quantities import format_quantity
-from transim.report.waveforms import carrier_name, write_waveforms
+from transim.report.waveforms import write_waveforms
 from transim.study.decks import carrier_decks, case_decks
 from transim.study.run import Outcome
 
@@ -56,11 +56,16 @@ def placed_decks(design: Design, driver: Driver, temperature: float) -> dict[str
     dict of str to Deck
         By file; the decks of each carrier have a folder of their own.
     """
-    placed = {f"{deck.name}.cir": deck for deck in case_decks(design, driver, temperature)}
+    decks = list(case_decks(design, driver, temperature))
     for frequency in design.carrier.frequency:
-        for deck in carrier_decks(design, driver, temperature, frequency):
-            placed[f"carrier_{carrier_name(frequency)}/{deck.name}.cir"] = deck
-    return placed
+        for level in design.carrier.level:
+            decks += carrier_decks(design, driver, temperature, frequency, level)
+    return {deck_file(deck): deck for deck in decks}
+
+
+def deck_file(deck: Deck) -> str:
+    """Return the file of a deck in its driver's folder."""
+    return f"{deck.group}/{deck.name}.cir" if deck.group else f"{deck.name}.cir"
 
 
 def write_cases(folder: Path, outcome: Outcome) -> None:
@@ -78,13 +83,7 @@ def write_cases(folder: Path, outcome: Outcome) -> None:
     for case in outcome.cases:
         place = folder / case_name(design, case.driver, case.temperature)
         driver = drivers[case.driver]
-        carriers = {f for analysis, f in case.envelopes if analysis == "carrier"}
-        files = {
-            deck.text: f"carrier_{carrier_name(frequency)}/{deck.name}.cir"
-            for frequency in carriers
-            for deck in carrier_decks(design, driver, case.temperature, frequency)
-        }
-        write_decks(place, {files.get(deck.text, f"{deck.name}.cir"): deck for deck in case.decks})
+        write_decks(place, {deck_file(deck): deck for deck in case.decks})
         write_waveforms(place, case, assemble(design, driver))
     (folder / "README.txt").write_text(_readme(design), encoding="utf-8")
 

@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
+from dataclasses import replace
 from pathlib import Path
 
 from transim.circuit.assemble import assemble
 from transim.circuit.decks import Deck, Origin, Tone, carrier_deck, static_deck, video_deck
 from transim.circuit.timeline import Timeline, timeline_of
 from transim.design.model import Design, Driver
+from transim.quantities import format_quantity
+from transim.study.stress import amplitude_of
 
 __all__ = ["carrier_decks", "carrier_timeline", "case_decks"]
 
@@ -65,7 +67,9 @@ def carrier_timeline(design: Design, frequency: float) -> Timeline:
     return timeline_of(design, settle=_SETTLING_PERIODS / frequency, overrun=_OVERRUN_PERIODS / frequency)
 
 
-def carrier_decks(design: Design, driver: Driver, temperature: float, frequency: float) -> Sequence[Deck]:
+def carrier_decks(
+    design: Design, driver: Driver, temperature: float, frequency: float, level: float
+) -> Sequence[Deck]:
     """Write the decks of the carrier analysis: two in quadrature, one without RF.
 
     Parameters
@@ -74,8 +78,8 @@ def carrier_decks(design: Design, driver: Driver, temperature: float, frequency:
         The design.
     driver : Driver
         One of its drivers.
-    temperature, frequency : float
-        [degC], [Hz].
+    temperature, frequency, level : float
+        [degC], [Hz], available power [dBm].
 
     Returns
     -------
@@ -89,13 +93,15 @@ def carrier_decks(design: Design, driver: Driver, temperature: float, frequency:
     """
     netlist, origin = assemble(design, driver), _origin(design, driver, temperature)
     timeline = carrier_timeline(design, frequency)
-    # available power of a source of amplitude E behind Z0 is E^2 / 8 Z0
-    watts = 1e-3 * 10.0 ** (design.carrier.level / 10.0)
-    amplitude = math.sqrt(8.0 * watts * design.carrier.impedance)
+    amplitude = amplitude_of(level, design.carrier.impedance)
     port = netlist.through[0]
+    group = f"carrier_{format_quantity(frequency, 'Hz', 12).replace(' ', '')}"
+    if len(design.carrier.level) > 1:
+        group += f"_{level:g}dBm"
     return [
-        carrier_deck(
-            netlist, design.control, timeline, design.numerics, origin, Tone(frequency, size, phase, port)
+        replace(
+            carrier_deck(netlist, design.control, timeline, design.numerics, origin, Tone(frequency, size, phase, port)),
+            group=group,
         )
         for size, phase in ((amplitude, 0.0), (amplitude, 90.0), (0.0, 0.0))
     ]

@@ -10,6 +10,7 @@ from transim.circuit.timeline import Timeline
 from transim.envelope.junction import Array
 from transim.envelope.stationary import Complex
 from transim.measure.record import Record
+from transim.measure.rf import LargeSignal, RfStress
 from transim.measure.waveform import Waveform
 from transim.study.case import Case
 
@@ -23,6 +24,9 @@ def record_of(
     envelope: Waveform,
     states: Complex,
     vectors: Mapping[str, Array],
+    *,
+    stress: RfStress | None = None,
+    large: LargeSignal | None = None,
 ) -> Record:
     """Collect the waveforms of one carrier.
 
@@ -40,6 +44,10 @@ def record_of(
         S in the settled states, command low first.
     vectors : mapping
         The video run, by name as ngspice prints it.
+    stress : RfStress or None
+        RF in the junctions, of the envelope analysis.
+    large : LargeSignal or None
+        Of the carrier analysis.
 
     Returns
     -------
@@ -78,6 +86,8 @@ def record_of(
         supply_power=power,
         junction_charge=probes["charge"],
         junction_reverse=probes["reverse"],
+        stress=stress,
+        large=large,
     )
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from types import MappingProxyType
 
 import numpy as np
 
@@ -21,8 +22,10 @@ from transim.measure.metrics import Figure, extract
 from transim.measure.record import Record
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
+from transim.study.carrier import run_carrier
 from transim.study.case import Case
 from transim.study.records import record_of
+from transim.study.stress import StressSolution, small_signal_warnings
 
 __all__ = ["CaseRun", "Result", "simulate"]
 
@@ -54,6 +57,10 @@ class Result:
         One for each limit of the design.
     method : str
         How the envelope was found, and why so.
+    level : float
+        Available power of the RF source [dBm].
+    warnings : tuple of str
+        Where the small-signal assumption does not hold at this level, and by how much.
     faults : tuple of str
         What makes the figures unfit to be judged; empty in a sound run.
     check : float or None
@@ -69,6 +76,8 @@ class Result:
     method: str
     faults: tuple[str, ...] = ()
     check: float | None = None
+    level: float = -10.0
+    warnings: tuple[str, ...] = ()
 
     @property
     def verdict(self) -> Verdict:
@@ -93,7 +102,9 @@ class CaseRun:
     video : Plot
         The video run.
     envelopes : mapping
-        Complex S21 against time by (analysis, carrier).
+        Complex S21 against time by (analysis, carrier); where the design has several levels, at the first.
+    level_envelopes : mapping
+        Complex S21 of every carrier-resolved run by (carrier, level).
     engine_seconds : float
         Time spent in ngspice [s].
     """
@@ -105,6 +116,7 @@ class CaseRun:
     video: Plot
     envelopes: Mapping[tuple[str, float], Waveform]
     engine_seconds: float
+    level_envelopes: Mapping[tuple[float, float], Waveform] = MappingProxyType({})
 
 
 def simulate(
@@ -145,14 +157,15 @@ def simulate(
     envelopes: dict[tuple[str, float], Waveform] = {}
     if "envelope" in analyses:
         _envelope(case, circuit, states, vectors, results, envelopes)
+    by_level: dict[tuple[float, float], Waveform] = {}
     if "carrier" in analyses:
-        _carrier(case, states, vectors, results, envelopes)
-    order = {
-        (name, f): k for k, (f, name) in enumerate((f, a) for f in design.carrier.frequency for a in analyses)
-    }
-    results.sort(key=lambda result: order[result.analysis, result.carrier])
+        _carrier(case, states, vectors, results, by_level)
+        first = design.carrier.level[0]
+        envelopes |= {("carrier", f): wave for (f, level), wave in by_level.items() if level == first}
+    carriers, levels = design.carrier.frequency, design.carrier.level
+    results.sort(key=lambda r: (carriers.index(r.carrier), levels.index(r.level), analyses.index(r.analysis)))
     return CaseRun(
-        driver.name, temperature, tuple(results), tuple(case.decks), video, envelopes, case.seconds
+        driver.name, temperature, tuple(results), tuple(case.decks), video, envelopes, case.seconds, by_level
     )
 
 
@@ -178,12 +191,17 @@ def _envelope(
         pair = solution.s[k, :, netlist.through[1], netlist.through[0]]
         waveform = Waveform(solution.time, pair, "1")
         envelopes["envelope", frequency] = waveform
-        record = record_of(case, case.timeline, frequency, waveform, states[:, k], vectors)
+        stress = StressSolution(
+            case, network, vectors, (solution.frozen[k, :, netlist.through[1], netlist.through[0]], points["check_end"]), frequency
+        )
         differences = {
             name: largest_difference(references[name][k], solution.frozen[k, point]) for name, point in points.items()
         }
         method = f"{solution.methods[k]}: {solution.reasons[k]}"
-        results.append(_result(case, record, "envelope", method, differences))
+        for level in design.carrier.level:
+            at_level = stress.at(level)
+            record = record_of(case, case.timeline, frequency, waveform, states[:, k], vectors, stress=at_level)
+            results.append(_result(case, record, "envelope", method, differences))
 
 
 def _check_points(case: Case, solution: Envelope) -> dict[str, int]:
@@ -210,18 +228,19 @@ def _carrier(
     states: Complex,
     vectors: Mapping[str, Array],
     results: list[Result],
-    envelopes: dict[tuple[str, float], Waveform],
+    envelopes: dict[tuple[float, float], Waveform],
 ) -> None:
     points = case.design.numerics.carrier_points
     for k, frequency in enumerate(case.design.carrier.frequency):
-        timeline, waveform = case.carrier(frequency)
-        # on the video run's time axis, so that all waveforms of a record share it
-        shift = timeline.lead - case.timeline.lead
-        waveform = Waveform(waveform.time - shift, waveform.value, "1")
-        envelopes["carrier", frequency] = waveform
-        record = record_of(case, case.timeline, frequency, waveform, states[:, k], vectors)
-        method = f"quadrature of two runs with {points} points a period, less one without RF"
-        results.append(_result(case, record, "carrier", method, {}))
+        quiet = None
+        for level in case.design.carrier.level:
+            run, quiet = run_carrier(case, frequency, level, quiet)
+            envelopes[frequency, level] = run.envelope
+            record = record_of(
+                case, case.timeline, frequency, run.envelope, states[:, k], vectors, large=run.large
+            )
+            method = f"quadrature of two runs with {points} points a period, less one without RF"
+            results.append(_result(case, record, "carrier", method, {}))
 
 
 def _result(case: Case, record: Record, analysis: str, method: str, differences: Mapping[str, float]) -> Result:
@@ -242,4 +261,6 @@ def _result(case: Case, record: Record, analysis: str, method: str, differences:
         method=method,
         faults=faults,
         check=max(differences.values()) if differences else None,
+        level=(record.stress or record.large).level,  # type: ignore[union-attr]
+        warnings=small_signal_warnings(record.stress) if record.stress else (),
     )

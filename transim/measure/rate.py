@@ -1,0 +1,203 @@
+"""Powers against the switching rate, and the highest rate at which ratings and settling hold."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+from transim.errors import MeasurementError
+from transim.measure.cycle import RateLaw, duty_cycle, rate_law
+from transim.measure.metrics import metric
+from transim.measure.rating import Rating
+from transim.measure.record import Record
+from transim.measure.settling import off_settling, on_settling
+from transim.quantities import format_quantity
+
+__all__ = ["RateBound", "RateStudy", "highest_rate", "rate_bound", "rate_study"]
+
+
+@dataclass(frozen=True)
+class RateBound:
+    """A highest switching rate and what sets it.
+
+    Parameters
+    ----------
+    rate : float
+        [Hz].
+    reason : str
+        ``on_settling``, ``off_settling`` or ``rating`` and its name.
+    """
+
+    rate: float
+    reason: str
+
+
+@dataclass(frozen=True)
+class RateStudy:
+    """How the powers of one driver depend on the switching rate, at the duty cycle of the command.
+
+    Parameters
+    ----------
+    duty : float
+        Share of the period in which the RF passes.
+    stated : float
+        The command's own rate [Hz].
+    laws : mapping of str to RateLaw
+        Mean powers [W]: ``junction_dissipation`` (the worst junction at the command's own rate),
+        ``driver_dissipation``, ``driver_power``; what is not recorded is left out.
+    settled : RateBound or None
+        Highest rate at which both intervals are long enough to settle; None where settling is undefined.
+    highest : RateBound or None
+        Highest rate at which the ratings hold too; None where there is no such rate.
+    note : str or None
+        Why there is none.
+    """
+
+    duty: float
+    stated: float
+    laws: Mapping[str, RateLaw]
+    settled: RateBound | None
+    highest: RateBound | None
+    note: str | None
+
+
+@metric("highest_rate", unit="Hz", title="Highest switching rate, ratings and settling met")
+def highest_rate(record: Record) -> float:
+    """Return the highest switching rate at which ratings and full settling both hold.
+
+    Parameters
+    ----------
+    record : Record
+        The cycle, with the ratings that are to hold.
+
+    Returns
+    -------
+    float
+        The rate at the command's own duty cycle [Hz].
+
+    Raises
+    ------
+    MeasurementError
+        If settling is undefined, or a rating is exceeded at every rate.
+    """
+    return rate_bound(record).rate
+
+
+def rate_bound(record: Record) -> RateBound:
+    """Return the highest switching rate at which ratings and full settling hold, and what sets it.
+
+    Parameters
+    ----------
+    record : Record
+        The cycle, with the ratings that are to hold.
+
+    Returns
+    -------
+    RateBound
+
+    Raises
+    ------
+    MeasurementError
+        If settling is undefined, or a rating is exceeded at every rate.
+
+    Notes
+    -----
+    At the rate f the RF passes for duty / f, which must not be shorter than `on_settling`, and is blocked
+    for (1 - duty) / f, not shorter than `off_settling`. Peaks do not depend on the rate while all settles;
+    means follow `RateLaw`.
+    """
+    bound = _settled(record)
+    least: tuple[float, Rating] | None = None
+    for rating in record.ratings:
+        if rating.kind == "peak":
+            if rating.value(record.timing) > rating.max:
+                raise _none_holds(rating, rating.value(record.timing), "at any rate")
+            continue
+        law = rate_law(rating.waveform, record.timing)
+        if law.slope > 0.0:
+            rate = (rating.max - law.idle) / law.slope
+            if rate <= 0.0:
+                raise _none_holds(rating, law.idle, "at the lowest rates already")
+            bound = min(bound, RateBound(rate, f"rating {rating.name}"), key=lambda one: one.rate)
+        elif law.idle > rating.max:
+            rate = (rating.max - law.idle) / law.slope if law.slope < 0.0 else math.inf
+            least = max(least or (0.0, rating), (rate, rating), key=lambda one: one[0])
+    if least is not None and least[0] > bound.rate:
+        raise _none_holds(least[1], rate_law(least[1].waveform, record.timing).at(bound.rate), "at any rate that settles")
+    return bound
+
+
+def rate_study(record: Record) -> RateStudy | None:
+    """Return how the powers depend on the switching rate.
+
+    Parameters
+    ----------
+    record : Record
+        The cycle.
+
+    Returns
+    -------
+    RateStudy or None
+        None where no power is recorded, or the cycle does not hold both edges.
+    """
+    timing = record.timing
+    try:
+        duty, laws = duty_cycle(timing), _laws(record)
+    except MeasurementError:
+        return None
+    if not laws:
+        return None
+    settled = highest = note = None
+    try:
+        settled = _settled(record)
+        highest = rate_bound(record)
+    except MeasurementError as reason:
+        note = reason.message
+    return RateStudy(duty, 1.0 / timing.period, laws, settled, highest, note)
+
+
+def _laws(record: Record) -> dict[str, RateLaw]:
+    timing = record.timing
+    laws = {}
+    if record.junction_power:
+        every = [rate_law(power, timing) for power in record.junction_power.values()]
+        laws["junction_dissipation"] = max(every, key=lambda law: law.at(1.0 / timing.period))
+    if record.supply_power is not None:
+        supplied = rate_law(record.supply_power, timing)
+        if record.driver_output_power is not None:
+            out = rate_law(record.driver_output_power, timing)
+            laws["driver_dissipation"] = RateLaw(
+                out.duty,
+                supplied.settled_on - out.settled_on,
+                supplied.settled_off - out.settled_off,
+                supplied.edge_on - out.edge_on,
+                supplied.edge_off - out.edge_off,
+                out.unit,
+            )
+        laws["driver_power"] = supplied
+    return laws
+
+
+def _settled(record: Record) -> RateBound:
+    """Return the highest rate at which both intervals are as long as their settling times."""
+    duty = duty_cycle(record.timing)
+    bounds = []
+    for name, function, share in (("on_settling", on_settling, duty), ("off_settling", off_settling, 1.0 - duty)):
+        try:
+            time = function(record)
+        except MeasurementError as reason:
+            raise MeasurementError(f"{name} is undefined: {reason.message}") from reason
+        if time > 0.0:
+            bounds.append(RateBound(share / time, name))
+    if not bounds:
+        raise MeasurementError("the RF settles before the command's edges, so that nothing bounds the rate")
+    return min(bounds, key=lambda one: one.rate)
+
+
+def _none_holds(rating: Rating, found: float, where: str) -> MeasurementError:
+    unit = rating.unit
+    return MeasurementError(
+        f"rating {rating.name} is exceeded {where}: {format_quantity(found, unit)},"
+        f" at most {format_quantity(rating.max, unit)}"
+    )

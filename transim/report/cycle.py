@@ -1,0 +1,403 @@
+"""The judged cycle of one case as traces to look at: command, driver, junctions, leakage, RF envelope."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from transim.circuit.assemble import assemble
+from transim.circuit.timeline import timeline_of
+from transim.measure.definitions import Definitions, Timing
+from transim.measure.spectrum import fourier_integral
+from transim.quantities import format_quantity
+from transim.report.waveforms import video_waveforms
+from transim.study.run import Outcome
+from transim.study.simulate import CaseRun, Result
+
+__all__ = ["Cycle", "Trace", "cycles_of", "edge_span", "lead_in", "thinned"]
+
+Array = npt.NDArray[np.float64]
+
+#: A trace counts as moving while it is further from its end value than this share of its range.
+_MOVING = 0.02
+
+
+@dataclass(frozen=True, eq=False)
+class Trace:
+    """A named quantity of one case against time.
+
+    Attributes
+    ----------
+    name : str
+        What a label says.
+    unit : str
+        Unit of `value`.
+    time : ndarray, shape (n,)
+        Instants [s]; zero is the 50 % point of the command's rising edge.
+    value : ndarray, shape (n,)
+        Real or complex samples.
+    """
+
+    name: str
+    unit: str
+    time: Array
+    value: npt.NDArray[np.float64] | npt.NDArray[np.complex128]
+
+    def magnitude(self) -> Trace:
+        """Return the magnitude, unit kept.
+
+        Returns
+        -------
+        Trace
+            On the same instants.
+        """
+        return Trace(self.name, self.unit, self.time, np.abs(self.value))
+
+    def level(self) -> Trace:
+        """Return 20 log10 of the magnitude.
+
+        Returns
+        -------
+        Trace
+            In dB; where the magnitude is zero, the smallest number that a float holds.
+        """
+        size = np.maximum(np.abs(self.value), np.finfo(float).tiny)
+        return Trace(self.name, "dB", self.time, 20.0 * np.log10(size))
+
+    def between(self, start: float, stop: float) -> Trace:
+        """Cut out an interval; its ends are interpolated.
+
+        Parameters
+        ----------
+        start, stop : float
+            The interval [s].
+
+        Returns
+        -------
+        Trace
+            The part of it that the trace covers.
+        """
+        start, stop = max(start, float(self.time[0])), min(stop, float(self.time[-1]))
+        inside = self.time[(self.time > start) & (self.time < stop)]
+        time = np.concatenate(([start], inside, [stop]))
+        return Trace(self.name, self.unit, time, np.interp(time, self.time, self.value))
+
+
+@dataclass(frozen=True, eq=False)
+class Cycle:
+    """What one driver at one temperature did in the judged cycle.
+
+    Attributes
+    ----------
+    title : str
+        Of the design.
+    driver : str
+        Name in the design.
+    temperature : float
+        [degC].
+    several : bool
+        Whether the design has more temperatures than this.
+    timing : Timing
+        Instants of the command; zero is the 50 % point of its rising edge.
+    impedance : float
+        Of every RF port [ohm].
+    definitions : Definitions
+        What the figures are counted from.
+    control, drive_voltage, drive_current : Trace
+        Command [V]; voltage [V] and current [A] where the driver feeds the path.
+    charges, currents, reverses : tuple of Trace
+        Of the junctions [C], [A], [V].
+    ports : tuple of Trace
+        Voltage at each RF port without RF [V].
+    envelopes : mapping
+        Complex S21 by (analysis, carrier).
+    results : tuple of Result
+        Figures for each carrier and analysis.
+    """
+
+    title: str
+    driver: str
+    temperature: float
+    several: bool
+    timing: Timing
+    impedance: float
+    definitions: Definitions
+    control: Trace
+    drive_voltage: Trace
+    drive_current: Trace
+    charges: tuple[Trace, ...]
+    currents: tuple[Trace, ...]
+    reverses: tuple[Trace, ...]
+    ports: tuple[Trace, ...]
+    envelopes: Mapping[tuple[str, float], Trace]
+    results: tuple[Result, ...]
+
+    @property
+    def name(self) -> str:
+        """Driver, and temperature where there are several."""
+        if not self.several:
+            return self.driver
+        return f"{self.driver}, {format_quantity(self.temperature, 'degC', 12)}"
+
+    def edge(self, edge: str) -> float:
+        """Return the 50 % point of an edge of the command.
+
+        Parameters
+        ----------
+        edge : {"on", "off"}
+            The edge that lets the RF pass, or the one that blocks it.
+
+        Returns
+        -------
+        float
+            [s].
+        """
+        return self.timing.on_edge if edge == "on" else self.timing.off_edge
+
+    def window(self, edge: str) -> tuple[float, float]:
+        """Return the interval of an edge, up to the next one.
+
+        Parameters
+        ----------
+        edge : {"on", "off"}
+            Which edge.
+
+        Returns
+        -------
+        tuple of float
+            [s].
+        """
+        return self.timing.on_window() if edge == "on" else self.timing.off_window()
+
+    def result(self, analysis: str, carrier: float) -> Result | None:
+        """Return the figures at a carrier.
+
+        Parameters
+        ----------
+        analysis : str
+            ``envelope`` or ``carrier``.
+        carrier : float
+            [Hz].
+
+        Returns
+        -------
+        Result or None
+            None where that was not run.
+        """
+        found = (result for result in self.results if (result.analysis, result.carrier) == (analysis, carrier))
+        return next(found, None)
+
+    def value(self, metric: str, analysis: str, carrier: float) -> float | None:
+        """Return one figure.
+
+        Parameters
+        ----------
+        metric, analysis : str
+            Its name, and how the envelope was found.
+        carrier : float
+            [Hz].
+
+        Returns
+        -------
+        float or None
+            In SI; None where it is undefined.
+        """
+        result = self.result(analysis, carrier)
+        figure = None if result is None else result.figures.get(metric)
+        return None if figure is None else figure.value
+
+    def full_level(self, analysis: str, carrier: float) -> float | None:
+        """Return |S21| of the full-on level, by the definitions.
+
+        Parameters
+        ----------
+        analysis : str
+            ``envelope`` or ``carrier``.
+        carrier : float
+            [Hz].
+
+        Returns
+        -------
+        float or None
+            None where it is not known.
+        """
+        if self.definitions.reference == "end_of_pulse":
+            envelope = self.envelopes[analysis, carrier]
+            return float(np.interp(self.window("on")[1], envelope.time, np.abs(envelope.value)))
+        loss = self.value("insertion_loss", analysis, carrier)
+        return None if loss is None else float(10.0 ** (-loss / 20.0))
+
+    def leakage_power(self, port: Trace, frequencies: Array) -> Array:
+        """Return the mean power of the leakage in the resolution bandwidth.
+
+        Parameters
+        ----------
+        port : Trace
+            Voltage at an RF port [V].
+        frequencies : ndarray, shape (n,)
+            Where [Hz].
+
+        Returns
+        -------
+        ndarray, shape (n,)
+            [dBm].
+
+        Notes
+        -----
+        As `video_inband`: a line of the repetition rate P carries 2 (P |V(f)|)^2/Z0, V(f) the Fourier integral
+        of one cycle less its voltage at the end; times max(1, B/P) in the resolution bandwidth B.
+        """
+        cycle = port.between(self.timing.start, self.timing.stop)
+        rate, moved = 1.0 / self.timing.period, cycle.value.real - cycle.value.real[-1]
+        size = np.array([abs(fourier_integral(cycle.time, moved, float(f))) for f in frequencies])
+        power = 2.0 * (rate * size) ** 2 / self.impedance
+        power = power * max(1.0, self.definitions.resolution_bandwidth / rate)
+        return np.asarray(10.0 * np.log10(np.maximum(power, 1e-30) / 1e-3))
+
+
+def cycles_of(outcome: Outcome) -> tuple[Cycle, ...]:
+    """Return the judged cycle of every case.
+
+    Parameters
+    ----------
+    outcome : Outcome
+        The run of a design.
+
+    Returns
+    -------
+    tuple of Cycle
+        In the order of the cases.
+    """
+    return tuple(_cycle(outcome, case) for case in outcome.cases)
+
+
+def _cycle(outcome: Outcome, case: CaseRun) -> Cycle:
+    design = outcome.design
+    driver = next(driver for driver in design.drivers if driver.name == case.driver)
+    timeline = timeline_of(design)
+    timing = timeline.timing(bool(design.switch.path.passes))
+    zero = timeline.rising
+    waves = video_waveforms(case.video, assemble(design, driver))
+    time = waves["time"][0] - zero
+
+    def trace(key: str, name: str) -> Trace:
+        samples, unit = waves[key]
+        return Trace(name, unit, time, samples).between(timing.start - zero, timing.stop - zero)
+
+    def group(prefix: str) -> tuple[Trace, ...]:
+        return tuple(trace(key, key.removeprefix(prefix)) for key in waves if key.startswith(prefix))
+
+    envelopes = {
+        key: Trace(_envelope_label(*key), "1", wave.time - zero, wave.value) for key, wave in case.envelopes.items()
+    }
+    return Cycle(
+        title=design.title,
+        driver=case.driver,
+        temperature=case.temperature,
+        several=len(design.environment.temperature) > 1,
+        timing=Timing(
+            on_edge=timing.on_edge - zero,
+            off_edge=timing.off_edge - zero,
+            edge=timing.edge,
+            start=timing.start - zero,
+            stop=timing.stop - zero,
+            period=timing.period,
+        ),
+        impedance=design.carrier.impedance,
+        definitions=design.definitions,
+        control=trace("control", "command"),
+        drive_voltage=trace("driver_voltage", "driver output"),
+        drive_current=trace("driver_current", "driver output"),
+        charges=group("charge_"),
+        currents=group("current_"),
+        reverses=group("reverse_"),
+        ports=group("port_"),
+        envelopes=envelopes,
+        results=case.results,
+    )
+
+
+def _envelope_label(analysis: str, carrier: float) -> str:
+    text = format_quantity(carrier, "Hz", 12)
+    return f"{text}, resolved" if analysis == "carrier" else text
+
+
+def edge_span(cycle: Cycle, edge: str, traces: Sequence[Trace], metrics: Sequence[float | None] = ()) -> float:
+    """Return how long after an edge there is something to see.
+
+    Parameters
+    ----------
+    cycle : Cycle
+        The cycle.
+    edge : {"on", "off"}
+        Which edge.
+    traces : sequence of Trace
+        Real traces that are shown.
+    metrics : sequence of float or None
+        Instants that must be in sight, counted from the edge [s].
+
+    Returns
+    -------
+    float
+        From the edge's 50 % point [s]: until every trace stays within 2 % of its range around its end value.
+    """
+    start, stop = cycle.window(edge)
+    zero = cycle.edge(edge)
+    last = [2.0 * cycle.timing.edge, *(value for value in metrics if value is not None)]
+    for trace in traces:
+        part = trace.between(start, stop)
+        value = part.value.real
+        away = np.flatnonzero(np.abs(value - value[-1]) > _MOVING * np.ptp(trace.value.real))
+        if away.size:
+            last.append(float(part.time[min(away[-1] + 1, value.size - 1)]) - zero)
+    return float(min(1.15 * max(last), stop - zero))
+
+
+def lead_in(cycle: Cycle, edge: str, span: float) -> float:
+    """Return where a look at an edge begins.
+
+    Parameters
+    ----------
+    cycle : Cycle
+        The cycle.
+    edge : {"on", "off"}
+        Which edge.
+    span : float
+        How long after the edge the look ends [s].
+
+    Returns
+    -------
+    float
+        From the edge's 50 % point, negative [s]: a tenth of `span`, but never before the cycle.
+    """
+    return max(-0.1 * span, cycle.timing.start - cycle.edge(edge))
+
+
+def thinned(trace: Trace, points: int) -> Trace:
+    """Leave out samples that the eye does not miss: every stretch keeps its first, lowest and highest one.
+
+    Parameters
+    ----------
+    trace : Trace
+        Real samples.
+    points : int
+        At most so many are kept, at least 8.
+
+    Returns
+    -------
+    Trace
+        The trace itself where it is short enough.
+    """
+    count = trace.time.size
+    if count <= max(points, 8):
+        return trace
+    bounds = np.linspace(0, count - 1, max((points - 1) // 3, 2) + 1).astype(int)
+    kept = {count - 1}
+    for first, last in zip(bounds[:-1], bounds[1:], strict=True):
+        part = trace.value.real[first:last]
+        kept |= {int(first), int(first + np.argmin(part)), int(first + np.argmax(part))}
+    index = np.array(sorted(kept))
+    return Trace(trace.name, trace.unit, trace.time[index], trace.value[index])

@@ -1,0 +1,121 @@
+"""Figures of the settled states: loss and isolation of all drivers against frequency, with their limits."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from transim.measure.limits import Limit
+from transim.measure.metrics import METRICS
+from transim.quantities import format_quantity
+from transim.report.cycle import Cycle
+from transim.report.style import axis_scale, draw_series, drawn, label_lines, name_axis, new_figure
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+    from matplotlib.figure import Figure
+
+__all__ = ["shade_limit", "static_figure"]
+
+_SHOWN = ("insertion_loss", "isolation", "return_loss_on", "return_loss_off")
+
+
+@drawn
+def static_figure(cycles: Sequence[Cycle], limits: Sequence[Limit]) -> Figure:
+    """Draw loss, isolation and match of the settled states against frequency.
+
+    Parameters
+    ----------
+    cycles : sequence of Cycle
+        One case of each driver, at one temperature.
+    limits : sequence of Limit
+        Of the design; what a limit forbids is shaded.
+
+    Returns
+    -------
+    Figure
+        The carriers of the design are the marks; straight lines join them.
+    """
+    first = cycles[0]
+    carriers = np.array(sorted({frequency for _, frequency in first.envelopes}))
+    figure, panels = new_figure(
+        first.title,
+        f"settled states at {format_quantity(first.temperature, 'degC', 12)}, at the carriers of the design;"
+        " hatched: outside a limit",
+        2,
+        2,
+        height=2.4,
+        sharex="all",
+    )
+    scale, unit = axis_scale("Hz", carriers)
+    by_name = {limit.metric: limit for limit in limits}
+    for axes, metric in zip(panels.ravel(), _SHOWN, strict=True):
+        lines = []
+        for place, cycle in enumerate(cycles):
+            values = [_value(cycle, metric, float(carrier)) for carrier in carriers]
+            lines.append(draw_series(axes, place, carriers * scale, np.array(values), cycle.driver, markevery=1))
+        _frame_frequencies(axes, carriers * scale)
+        axes.margins(y=0.25)
+        axes.set_title(METRICS[metric].title)
+        name_axis(axes, "y", metric.replace("_", " "), "dB")
+        if metric in by_name:
+            shade_limit(axes, by_name[metric].min, by_name[metric].max)
+        label_lines(axes, lines)
+    for axes in panels[-1]:
+        name_axis(axes, "x", "frequency", unit)
+    return figure
+
+
+def shade_limit(axes: Axes, low: float | None, high: float | None, side: str = "y") -> None:
+    """Hatch what a limit forbids, and widen the panel so that the limit is in sight.
+
+    Parameters
+    ----------
+    axes : Axes
+        A panel with its data.
+    low, high : float or None
+        Bounds in the units of the axis.
+    side : {"x", "y"}
+        The axis that the limit is on.
+    """
+    bottom, top = getattr(axes, f"get_{side}lim")()
+    bounds = [bound for bound in (low, high) if bound is not None and math.isfinite(bound)]
+    room = 0.12 * (max([top, *bounds]) - min([bottom, *bounds]))
+    bottom = min([bottom, *(bound - room for bound in bounds)])
+    top = max([top, *(bound + room for bound in bounds)])
+    getattr(axes, f"set_{side}lim")(bottom, top)
+    span, line = (axes.axhspan, axes.axhline) if side == "y" else (axes.axvspan, axes.axvline)
+    for bound, far in ((low, bottom), (high, top)):
+        if bound is None or not math.isfinite(bound):
+            continue
+        span(
+            min(bound, far), max(bound, far), facecolor="#eceef1", edgecolor="#9aa3ad", hatch="///", linewidth=0.0,
+            zorder=0.3, label="_forbidden",
+        )  # fmt: skip
+        line(bound, color="black", linewidth=1.0, label="_limit")
+
+
+def _value(cycle: Cycle, metric: str, carrier: float) -> float:
+    for analysis, frequency in cycle.envelopes:
+        value = cycle.value(metric, analysis, carrier) if frequency == carrier else None
+        if value is not None:
+            return value
+    return math.nan
+
+
+def _frame_frequencies(axes: Axes, carriers: np.ndarray) -> None:
+    low, high = float(carriers.min()), float(carriers.max())
+    if high > 4.0 * low:
+        axes.set_xscale("log")
+        axes.set_xlim(low / 1.3, high * 1.3)
+    else:
+        margin = 0.1 * (high - low) or 0.1 * high
+        axes.set_xlim(low - margin, high + margin)
+    if carriers.size <= 8:
+        axes.set_xticks(carriers, [f"{value:g}" for value in carriers])
+    else:
+        axes.xaxis.set_major_formatter(lambda value, _: f"{value:g}")
+    axes.xaxis.set_minor_formatter(lambda _value, _place: "")

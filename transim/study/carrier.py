@@ -1,0 +1,125 @@
+"""Carrier-resolved runs of a case: the envelope at the real level, and what the RF does to bias and junctions."""
+
+from __future__ import annotations
+
+import os
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+
+import numpy as np
+
+from transim.circuit.assemble import JunctionPlace
+from transim.circuit.timeline import Timeline
+from transim.engine.rawfile import Plot
+from transim.envelope.carrier import extract_envelope
+from transim.envelope.junction import Array
+from transim.measure.rf import LargeSignal
+from transim.measure.waveform import Waveform
+from transim.study.case import Case
+from transim.study.decks import carrier_decks, carrier_timeline
+from transim.study.stress import amplitude_of
+
+__all__ = ["CarrierRun", "run_carrier"]
+
+
+@dataclass(frozen=True)
+class CarrierRun:
+    """Carrier-resolved runs at one carrier and level.
+
+    Attributes
+    ----------
+    envelope : Waveform
+        Complex S of the through pair, on the video run's time axis.
+    large : LargeSignal
+        Bias, dissipation and levels with the RF on.
+    """
+
+    envelope: Waveform
+    large: LargeSignal
+
+
+def run_carrier(case: Case, frequency: float, level: float, quiet: Plot | None = None) -> tuple[CarrierRun, Plot]:
+    """Run the carrier analysis at one carrier and level.
+
+    Parameters
+    ----------
+    case : Case
+        The circuit.
+    frequency, level : float
+        Carrier [Hz] and available power [dBm].
+    quiet : Plot or None
+        The run without RF at this carrier, if there is one already.
+
+    Returns
+    -------
+    tuple of CarrierRun and Plot
+        And the run without RF, which other levels share.
+    """
+    design, netlist = case.design, case.netlist
+    timeline = carrier_timeline(design, frequency)
+    decks = carrier_decks(design, case.driver, case.temperature, frequency, level)
+    with ThreadPoolExecutor(max_workers=min(3, os.cpu_count() or 1)) as pool:
+        plots = [done.plots[0] for done in pool.map(case.run, decks if quiet is None else decks[:2])]
+    first, second = plots[:2]
+    quiet = plots[2] if quiet is None else quiet
+    amplitude = amplitude_of(level, design.carrier.impedance)
+    node = f"v({netlist.ports[netlist.through[1]].node})"
+    runs = tuple((np.real(plot["time"]), np.real(plot[node])) for plot in (first, second, quiet))
+    time, envelope = extract_envelope(runs, frequency, design.numerics.carrier_points)
+    on_video_axis = case.timeline.lead - timeline.lead
+    waveform = Waveform(time + on_video_axis, 2.0 * envelope / amplitude, "1")
+    large = _large_signal(case, timeline, (first, second, quiet), frequency, level)
+    return CarrierRun(waveform, large), quiet
+
+
+def _large_signal(
+    case: Case, timeline: Timeline, plots: tuple[Plot, Plot, Plot], frequency: float, level: float
+) -> LargeSignal:
+    # three periods before each edge of the command: an even mean without the carrier
+    span = 3.0 / frequency
+    before_rise = timeline.rising - timeline.edge / 2.0
+    before_fall = timeline.falling - timeline.edge / 2.0
+    shifts = []
+    for stop in (before_rise, before_fall):
+        means = [_mean(plot, "v(bias)", stop - span, stop) for plot in plots]
+        shifts.append(0.5 * (means[0] + means[1]) - means[2])
+    powers = {
+        place.instance: _period_mean(plots[0], _junction_power(plots[0], place), 1.0 / frequency)
+        for place in case.netlist.junctions
+    }
+    offset = case.timeline.lead - timeline.lead
+    return LargeSignal(
+        level=level,
+        bias_shift_low=shifts[0],
+        bias_shift_high=shifts[1],
+        junction_power={name: Waveform(time + offset, power, "W") for name, (time, power) in powers.items()},
+    )
+
+
+def _mean(plot: Plot, name: str, start: float, stop: float) -> float:
+    wave = Waveform(np.real(plot["time"]), np.real(plot[name]), "V").between(start, stop)
+    return float(np.real(wave.integral())) / (stop - start)
+
+
+def _junction_power(plot: Plot, place: JunctionPlace) -> Array:
+    """Return the power into a junction [W]: every terminal's voltage to the last one times its current."""
+    last = list(place.nodes.values())[-1]
+    total = np.zeros(plot.data.shape[0])
+    for terminal, source in place.ammeters.items():
+        total += (_voltage(plot, place.nodes[terminal]) - _voltage(plot, last)) * np.real(plot[f"i({source})"])
+    return total
+
+
+def _voltage(plot: Plot, node: str) -> Array:
+    return np.zeros(plot.data.shape[0]) if node == "0" else np.real(plot[f"v({node})"])
+
+
+def _period_mean(plot: Plot, value: Array, period: float) -> tuple[Array, Array]:
+    """Return the mean over one period around each of four instants a period."""
+    time = np.real(plot["time"])
+    advancing = np.concatenate([[True], np.diff(time) > 0.0])
+    time, value = time[advancing], value[advancing]
+    area = np.concatenate([[0.0], np.cumsum(0.5 * (value[1:] + value[:-1]) * np.diff(time))])
+    centre = np.arange(time[0] + period / 2.0, time[-1] - period / 2.0, period / 4.0)
+    ends = [np.interp(centre + shift, time, area) for shift in (-period / 2.0, period / 2.0)]
+    return centre, (ends[1] - ends[0]) / period
