@@ -3,7 +3,10 @@
 Outside reference: POSIX rename and the file system itself.
 """
 
+import os
+import signal
 import stat
+from pathlib import Path
 
 import pytest
 
@@ -98,6 +101,22 @@ def test_force_replaces_own_files_and_keeps_the_others(out):
     assert not (out / "slow").exists()
     run(out, force=True, fast__a_txt="3")
     assert content(out) == {"mine.txt": "mine", "fast/mine.txt": "mine too", "fast/a.txt": "3"}
+
+
+def test_a_signal_among_the_moves_waits_until_all_are_in_place(out, monkeypatch):
+    run(out, a_txt="1", b_txt="1")
+    real = Path.replace
+
+    def disturbed(self, target):
+        if self.name == "a.txt":
+            os.kill(os.getpid(), signal.SIGINT)
+        return real(self, target)
+
+    monkeypatch.setattr(Path, "replace", disturbed)
+    with pytest.raises(KeyboardInterrupt):
+        run(out, force=True, a_txt="2", b_txt="2")
+    assert content(out) == {"a.txt": "2", "b.txt": "2"}
+    assert names(out.parent) == ["out"]
 
 
 @pytest.mark.parametrize("obstacle", ["a_txt", "a_txt__below_txt", "gate"])

@@ -73,6 +73,8 @@ def run_and_report(console: Console, request: RunRequest) -> int:
     started = time.perf_counter()
     from transim.design.toml import read_design
     from transim.engine import find_engine
+    from transim.report.cautions import caution_lines
+    from transim.report.ratings import rating_tables
     from transim.report.tables import metric_tables
     from transim.report.verdicts import head_lines, verdict_lines
     from transim.study.run import choose_drivers, run_design

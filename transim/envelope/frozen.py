@@ -20,6 +20,8 @@ __all__ = ["changing_points", "solve_frozen"]
 _BATCH = 2048
 #: Change of an entry that asks for a new solution; linear interpolation then errs by its square.
 _SHARE = 2e-3
+#: Time points that are compared at once.
+_AHEAD = 8
 #: An inner part worse than this is not eliminated.
 _WORST_CONDITION = 1e12
 
@@ -41,12 +43,22 @@ def changing_points(network: Network, share: float = _SHARE) -> npt.NDArray[np.i
         flat stretch stays flat.
     """
     scaled = network.scaled_changes()
+    jumps = (np.abs(np.diff(scaled, axis=0)).max(axis=1, initial=0.0) > share).tolist()
     points = [0]
-    last = scaled[0]
-    for point in range(1, len(scaled)):
-        if np.abs(scaled[point] - last).max(initial=0.0) > share:
-            points += [point - 1, point]
-            last = scaled[point]
+    point, ahead = 1, _AHEAD
+    while point < len(scaled):
+        if points[-1] == point - 1 and jumps[point - 1]:
+            points.append(point)
+            point += 1
+            continue
+        # where nothing has moved, look further ahead each time
+        moved = np.abs(scaled[point : point + ahead] - scaled[points[-1]]).max(axis=1, initial=0.0) > share
+        step = int(moved.argmax())
+        if moved[step]:
+            points += [point + step - 1, point + step]
+            point, ahead = point + step + 1, _AHEAD
+        else:
+            point, ahead = point + ahead, 2 * ahead
     points.append(len(scaled) - 1)
     return np.unique(np.array(points, dtype=np.intp))
 

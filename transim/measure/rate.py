@@ -124,7 +124,8 @@ def rate_bound(record: Record) -> RateBound:
             rate = (rating.max - law.idle) / law.slope if law.slope < 0.0 else math.inf
             least = max(least or (0.0, rating), (rate, rating), key=lambda one: one[0])
     if least is not None and least[0] > bound.rate:
-        raise _none_holds(least[1], rate_law(least[1].waveform, record.timing).at(bound.rate), "at any rate that settles")
+        found = rate_law(least[1].waveform, record.timing).at(bound.rate)
+        raise _none_holds(least[1], found, "at any rate that settles")
     return bound
 
 

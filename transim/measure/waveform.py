@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Literal
 
 import numpy as np
@@ -54,6 +54,7 @@ class Waveform:
     time: Real
     value: Samples
     unit: str
+    _cuts: dict[tuple[float, float], Waveform] = field(init=False, repr=False)
 
     def __post_init__(self) -> None:
         time = np.array(self.time, dtype=np.float64)
@@ -72,6 +73,7 @@ class Waveform:
         value.setflags(write=False)
         object.__setattr__(self, "time", time)
         object.__setattr__(self, "value", value)
+        object.__setattr__(self, "_cuts", {})
 
     def at(self, instant: float) -> complex:
         """Return the value at one instant, linear between samples.
@@ -112,13 +114,18 @@ class Waveform:
         MeasurementError
             If the interval is empty or leaves the waveform, or a sample is not finite.
         """
+        # the metrics ask for the same few intervals again and again
+        if (start, stop) in self._cuts:
+            return self._cuts[start, stop]
         if not start < stop:
             raise MeasurementError(f"empty interval at {format_quantity(start, 's')}", span=(start, stop))
         self._inside(start, stop)
-        start, stop = max(start, float(self.time[0])), min(stop, float(self.time[-1]))
-        inner = self.time[(self.time > start) & (self.time < stop)]
-        time = np.concatenate(([start], inner, [stop]))
-        return Waveform(time, np.interp(time, self.time, self._finite()), self.unit)
+        first, last = max(start, float(self.time[0])), min(stop, float(self.time[-1]))
+        inner = self.time[(self.time > first) & (self.time < last)]
+        time = np.concatenate(([first], inner, [last]))
+        cut = Waveform(time, np.interp(time, self.time, self._finite()), self.unit)
+        self._cuts[start, stop] = cut
+        return cut
 
     def magnitude(self) -> Waveform:
         """Return the magnitude of the samples.
@@ -320,8 +327,9 @@ class Waveform:
         return Waveform(*single_pole(self.time, self._real(), bandwidth), self.unit)
 
     def _finite(self) -> Samples:
-        bad = np.flatnonzero(~np.isfinite(self.value))
-        if bad.size:
+        finite = np.isfinite(self.value)
+        if not finite.all():
+            bad = np.flatnonzero(~finite)
             at = format_quantity(float(self.time[bad[0]]), "s")
             raise MeasurementError(f"the sample at {at} is not a finite number")
         return self.value

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
@@ -396,8 +397,8 @@ def thinned(trace: Trace, points: int) -> Trace:
         return trace
     bounds = np.linspace(0, count - 1, max((points - 1) // 3, 2) + 1).astype(int)
     kept = {count - 1}
-    for first, last in zip(bounds[:-1], bounds[1:], strict=True):
+    for first, last in itertools.pairwise(bounds.tolist()):
         part = trace.value.real[first:last]
-        kept |= {int(first), int(first + np.argmin(part)), int(first + np.argmax(part))}
+        kept |= {first, first + int(np.argmin(part)), first + int(np.argmax(part))}
     index = np.array(sorted(kept))
     return Trace(trace.name, trace.unit, trace.time[index], trace.value[index])

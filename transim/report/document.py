@@ -94,6 +94,8 @@ def run_document(outcome: Outcome, seconds: float) -> Document:
     dict
         ``results`` holds one entry for each driver, temperature, carrier and analysis.
     """
+    from transim.report.cautions import cautions
+
     design = outcome.design
     return {
         "format": FORMAT,
@@ -103,6 +105,7 @@ def run_document(outcome: Outcome, seconds: float) -> Document:
         "seconds": round(seconds, 3),
         "definitions": asdict(design.definitions),
         "verdict": outcome.verdict,
+        "cautions": list(cautions(outcome)),
         "results": [_result(result) for result in outcome.results],
     }
 
@@ -125,6 +128,7 @@ def limit_document(limit: Limit | Judgement) -> Document:
 
 
 def _result(result: Result) -> Document:
+    from transim.report.ratings import rates_document
     from transim.report.tables import verdict_word
 
     limits = [
@@ -133,8 +137,10 @@ def _result(result: Result) -> Document:
             "value": judgement.value,
             "margin": judgement.margin,
             "verdict": verdict_word(result, judgement).lower(),
+            # a rating is no metric: unit and reason stand here
+            **({"rating": True, "unit": judgement.unit, "note": judgement.note} if judgement.unit else {}),
         }
-        for judgement in result.judgements
+        for judgement in (*result.judgements, *result.ratings)
     ]
     return {
         "driver": result.driver,
@@ -147,6 +153,7 @@ def _result(result: Result) -> Document:
         "verdict": result.verdict,
         "metrics": {name: asdict(figure) for name, figure in result.figures.items()},
         "limits": limits,
+        "switching_rate": rates_document(result.rates),
     }
 
 

@@ -122,7 +122,8 @@ def spectrum_figure(cycle: Cycle) -> Figure:
     figure, panels = new_figure(
         cycle.title,
         f"driver {cycle.name}: spectrum of the video leakage; mean power in a resolution bandwidth of"
-        f" {format_quantity(band, 'Hz')}, a pulse every {format_quantity(cycle.timing.period, 's')}; circles: video_inband, at the carrier itself",
+        f" {format_quantity(band, 'Hz')}, a pulse every {format_quantity(cycle.timing.period, 's')};"
+        " circles: video_inband, at the carrier itself",
         height=3.6,
     )
     axes = panels[0, 0]

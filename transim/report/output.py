@@ -181,11 +181,19 @@ def _undisturbed() -> Iterator[None]:
     if threading.current_thread() is not threading.main_thread():
         yield
         return
-    before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT, signal.SIGTERM})
+    caught: list[int] = []
+    # a signal mask would not do: numpy's own threads take the signal, and Python handles it here all the same
+    before = {
+        number: signal.signal(number, lambda number, _frame: caught.append(number))
+        for number in (signal.SIGINT, signal.SIGTERM)
+    }
     try:
         yield
     finally:
-        signal.pthread_sigmask(signal.SIG_SETMASK, before)
+        for number, handler in before.items():
+            signal.signal(number, handler)
+        if caught:
+            signal.raise_signal(caught[0])
 
 
 @contextlib.contextmanager

@@ -123,7 +123,7 @@ class Window:
 
 
 @drawn
-def sweep_figure(title: str, parameter: Quantity, curves: Sequence[Quantity], bounds: Bounds) -> Figure:
+def sweep_figure(title: str, parameter: Quantity, name: str, curves: Sequence[Quantity], bounds: Bounds) -> Figure:
     """Draw one figure of merit against a parameter.
 
     Parameters
@@ -132,6 +132,8 @@ def sweep_figure(title: str, parameter: Quantity, curves: Sequence[Quantity], bo
         Of the design.
     parameter : Quantity
         What was swept, values of shape (n,).
+    name : str
+        Of the figure.
     curves : sequence of Quantity
         Of one unit, each of shape (n,); the name is that of the line: a driver or a carrier. Where a value is
         NaN, the line is interrupted.
@@ -142,10 +144,9 @@ def sweep_figure(title: str, parameter: Quantity, curves: Sequence[Quantity], bo
     -------
     Figure
     """
-    what = curves[0].name if len(curves) == 1 else "sweep"
-    figure, panels = new_figure(title, f"{what} against {parameter.name}", height=3.8)
+    figure, panels = new_figure(title, f"{name} against {parameter.name}", height=3.8)
     axes = panels[0, 0]
-    across, x_unit = axis_scale(parameter.unit, parameter.values)
+    across, x_unit = _parameter_scale(parameter.unit, parameter.values)
     up, y_unit = axis_scale(curves[0].unit, *(curve.values[np.isfinite(curve.values)] for curve in curves))
     x = parameter.values * across
     _space(axes, "x", x)
@@ -155,7 +156,7 @@ def sweep_figure(title: str, parameter: Quantity, curves: Sequence[Quantity], bo
     axes.margins(y=0.12)
     shade_limit(axes, *bounds.scaled(up))
     name_axis(axes, "x", parameter.name, x_unit)
-    name_axis(axes, "y", curves[0].name if len(curves) == 1 else "value", y_unit)
+    name_axis(axes, "y", name, y_unit)
     label_lines(axes, lines)
     return figure
 
@@ -183,8 +184,8 @@ def sweep_map_figure(title: str, x: Quantity, y: Quantity, z: Quantity, feasible
     """
     figure, panels = new_figure(title, f"{z.name} over {x.name} and {y.name}; hatched: a limit is missed", height=4.6)
     axes = panels[0, 0]
-    across, x_unit = axis_scale(x.unit, x.values)
-    up, y_unit = axis_scale(y.unit, y.values)
+    across, x_unit = _parameter_scale(x.unit, x.values)
+    up, y_unit = _parameter_scale(y.unit, y.values)
     known = z.values[np.isfinite(z.values)]
     scale, z_unit = axis_scale(z.unit, known)
     _space(axes, "x", x.values * across)
@@ -250,7 +251,7 @@ def tune_figure(title: str, windows: Sequence[Window]) -> Figure:
         height=0.95,
     )
     for axes, window in zip(panels[:, 0], windows, strict=True):
-        scale, unit = axis_scale(window.unit, *window.allowed)
+        scale, unit = _parameter_scale(window.unit, np.array(window.allowed))
         low, high = (bound * scale for bound in window.allowed)
         _space(axes, "x", np.array([low, high]))
         axes.set_xlim(low, high)
@@ -312,16 +313,27 @@ def spread_figure(title: str, values: Quantity, bounds: Bounds, nominal: float |
             bbox={"boxstyle": "round,pad=0.15", "facecolor": "white", "edgecolor": "none", "alpha": 0.85},
         )
     shade_limit(axes, *bounds.scaled(scale), side="x")
+    axes.set_ylim(0.0, 1.18 * axes.dataLim.ymax if good.size else 1.0)
     axes.yaxis.get_major_locator().set_params(integer=True)  # type: ignore[attr-defined]
     axes.set_ylabel("samples [1]")
     name_axis(axes, "x", values.name, unit)
     return figure
 
 
+def _steep(values: Array) -> bool:
+    """Tell whether an axis is logarithmic: all values positive, and over more than a decade."""
+    good = values[np.isfinite(values)]
+    return bool(good.size and good.min() > 0.0 and good.max() > 10.0 * good.min())
+
+
+def _parameter_scale(unit: str, values: Array) -> tuple[float, str]:
+    """Choose the prefix of an axis; a logarithmic one has no 0.01 nF, but 10 pF."""
+    return axis_scale(unit, float(np.nanmin(values))) if _steep(values) else axis_scale(unit, values)
+
+
 def _space(axes: Axes, side: str, values: Array) -> None:
     """Choose a logarithmic axis where the values span more than a decade."""
-    good = values[np.isfinite(values)]
-    if good.size and good.min() > 0.0 and good.max() > 10.0 * good.min():
+    if _steep(values):
         getattr(axes, f"set_{side}scale")("log")
         axis = axes.xaxis if side == "x" else axes.yaxis
         axis.set_major_formatter(lambda value, _: f"{value:g}")
@@ -333,7 +345,7 @@ def _borders(centres: Array) -> Array:
     if centres.size == 1:
         half = abs(centres[0]) / 2.0 or 0.5
         return np.array([centres[0] - half, centres[0] + half])
-    steep = centres.min() > 0.0 and centres.max() > 10.0 * centres.min()
+    steep = _steep(centres)
     line = np.log(centres) if steep else centres
     middle = (line[:-1] + line[1:]) / 2.0
     edges = np.concatenate(([2.0 * line[0] - middle[0]], middle, [2.0 * line[-1] - middle[-1]]))

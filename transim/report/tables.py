@@ -12,7 +12,7 @@ from transim.report.layout import GAP, WIDTH, Column, align, wrap
 from transim.study.run import Outcome
 from transim.study.simulate import Result
 
-__all__ = ["limit_text", "metric_tables", "verdict_word"]
+__all__ = ["limit_text", "metric_tables", "side_by_side", "verdict_word"]
 
 
 def limit_text(limit: Limit | Judgement) -> str:
@@ -28,7 +28,7 @@ def limit_text(limit: Limit | Judgement) -> str:
     str
         For example ``at most 500 ns``.
     """
-    unit = METRICS[limit.metric].unit
+    unit = (limit.unit if isinstance(limit, Judgement) else None) or METRICS[limit.metric].unit
     if limit.min is None or limit.max is None:
         bound = limit.max if limit.min is None else limit.min
         word = "at most" if limit.min is None else "at least"
@@ -83,7 +83,7 @@ def _group(group: Sequence[Result], limits: Sequence[Limit]) -> Iterator[str]:
     others = tuple(name for name in METRICS if name not in limited)
     if limited:
         bounds = Column("limit", tuple(limit_text(limit) for limit in limits))
-        yield from _side_by_side(
+        yield from side_by_side(
             Column("with a limit", limited), [_judged(result) for result in group], bounds
         )
         yield ""
@@ -93,7 +93,7 @@ def _group(group: Sequence[Result], limits: Sequence[Limit]) -> Iterator[str]:
     names = Column(heading, others)
     # the titles are worth a column only where no table has to be split for them
     fits = sum(column.width + len(GAP) for column in (names, *columns, titles)) <= WIDTH
-    yield from _side_by_side(names, columns, titles if fits else None)
+    yield from side_by_side(names, columns, titles if fits else None)
     reasons = _reasons(group)
     if reasons:
         yield ""
@@ -119,8 +119,23 @@ def _value(result: Result, name: str) -> str:
     return "-" if figure.value is None else format_quantity(figure.value, figure.unit)
 
 
-def _side_by_side(names: Column, columns: Sequence[Column], last: Column | None) -> Iterator[str]:
-    """Set the columns of the drivers between names and last column, in several tables where they do not fit."""
+def side_by_side(names: Column, columns: Sequence[Column], last: Column | None) -> Iterator[str]:
+    """Set the columns of the drivers between names and last column, in several tables where they do not fit.
+
+    Parameters
+    ----------
+    names : Column
+        Begins each table.
+    columns : sequence of Column
+        Of the drivers.
+    last : Column or None
+        Ends each table.
+
+    Yields
+    ------
+    str
+        Lines of text.
+    """
     ends = [names] if last is None else [names, last]
     room = WIDTH - sum(column.width + len(GAP) for column in ends)
     rest = list(columns)

@@ -10,11 +10,19 @@ from transim.measure.limits import Judgement, Verdict
 from transim.measure.metrics import METRICS
 from transim.quantities import format_quantity
 from transim.report.layout import wrap
+from transim.report.ratings import first_results
 from transim.report.tables import limit_text, verdict_word
 from transim.study.run import Outcome
 from transim.study.simulate import Result
 
-__all__ = ["definition_lines", "head_lines", "joined_verdict", "verdict_lines"]
+__all__ = [
+    "closest_sentence",
+    "definition_lines",
+    "head_lines",
+    "joined_verdict",
+    "overall_sentence",
+    "verdict_lines",
+]
 
 _LEVELS = {"voltage": "-20 and -0.915 dB", "power": "-10 and -0.458 dB"}
 _REFERENCES = {"static": "static on state", "end_of_pulse": "end of the on interval"}
@@ -85,13 +93,10 @@ def verdict_lines(outcome: Outcome) -> list[str]:
         verdict on the whole run.
     """
     lines = []
-    drivers = tuple(dict.fromkeys(case.driver for case in outcome.cases))
-    verdicts: dict[str, Verdict] = {}
-    for driver in drivers:
+    for driver in dict.fromkeys(case.driver for case in outcome.cases):
         results = [result for result in outcome.results if result.driver == driver]
-        verdicts[driver] = joined_verdict(results)
-        lines += [*_driver(driver, results, verdicts[driver]), ""]
-    return [*lines, *wrap(_overall(outcome, verdicts))]
+        lines += [*_driver(driver, results, joined_verdict(results)), ""]
+    return [*lines, *wrap(overall_sentence(outcome))]
 
 
 def joined_verdict(results: Sequence[Result]) -> Verdict:
@@ -113,8 +118,24 @@ def joined_verdict(results: Sequence[Result]) -> Verdict:
     return "undefined" if "undefined" in found else "pass"
 
 
-def _overall(outcome: Outcome, verdicts: dict[str, Verdict]) -> str:
-    if not outcome.design.limits:
+def overall_sentence(outcome: Outcome) -> str:
+    """Write the verdict on the whole run, and which drivers it is due to.
+
+    Parameters
+    ----------
+    outcome : Outcome
+        The run of a design.
+
+    Returns
+    -------
+    str
+        For example ``Verdict: PASS; every limit is met``.
+    """
+    results: dict[str, list[Result]] = {}
+    for result in outcome.results:
+        results.setdefault(result.driver, []).append(result)
+    verdicts = {driver: joined_verdict(own) for driver, own in results.items()}
+    if not outcome.design.limits and not any(result.ratings for result in outcome.results):
         return f"Verdict: {outcome.verdict.upper()}; the design sets no limits"
     same = [driver for driver, verdict in verdicts.items() if verdict == outcome.verdict]
     what = {
@@ -136,10 +157,9 @@ def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterato
     )
     several = len({result.temperature for result in results}) > 1
     places = {id(result): _place(result, several) for result in results}
-    known = [pair for pair in judged if pair[1].margin is not None and not pair[0].faults]
-    if known:
-        result, judgement = min(known, key=lambda pair: _relative(pair[1]))
-        yield from wrap(_margin(judgement, places[id(result)]), "  ")
+    closest = closest_sentence(results)
+    if closest is not None:
+        yield from wrap(closest, "  ")
     for result, judgement in judged:
         if judgement.value is None:
             note = result.figures[judgement.metric].note
@@ -154,6 +174,28 @@ def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterato
         found = f"by {format_quantity(max(checks), 'dB', 2)} at most" if max(checks) > _SMALLEST else ""
         found = found or f"by less than {format_quantity(_SMALLEST, 'dB')}"
         yield from wrap(f"check: S differs from ngspice's own .ac at the same biases {found}", "  ")
+
+
+def closest_sentence(results: Sequence[Result]) -> str | None:
+    """Write which limit is missed most, or is met with the least margin, as a share of the limit.
+
+    Parameters
+    ----------
+    results : sequence of Result
+        Of one driver.
+
+    Returns
+    -------
+    str or None
+        None where nothing can be judged.
+    """
+    several = len({result.temperature for result in results}) > 1
+    judged = ((result, judgement) for result in results for judgement in result.judgements)
+    known = [pair for pair in judged if pair[1].margin is not None and not pair[0].faults]
+    if not known:
+        return None
+    result, judgement = min(known, key=lambda pair: _relative(pair[1]))
+    return _margin(judgement, _place(result, several))
 
 
 _COUNTED = {"PASS": "met", "FAIL": "missed", "UNDEFINED": "undefined"}

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 
@@ -13,6 +14,15 @@ from transim.measure.record import Record
 from transim.measure.rf import LargeSignal, RfStress
 from transim.measure.waveform import Waveform
 from transim.study.case import Case
+from transim.study.ratings import ratings_of
+from transim.study.terminals import (
+    driver_output_power,
+    junction_at,
+    junction_currents,
+    junction_powers,
+    polarity,
+    supply_currents,
+)
 
 __all__ = ["record_of"]
 
@@ -59,18 +69,21 @@ def record_of(
     on, off = (states[1], states[0]) if passes else (states[0], states[1])
     time = vectors["time"]
     probes: dict[str, dict[str, Waveform]] = {"charge": {}, "reverse": {}}
+    signs = {place.instance: polarity(junction_at(design, place)) for place in netlist.junctions}
     for probe in netlist.probes:
         if probe.quantity in probes:
             total = sum((scale * _vector(vectors, name) for scale, name in probe.terms), np.zeros(time.size))
             found = probes[probe.quantity]
             name = probe.junction if probe.junction not in found else f"{probe.junction} {len(found) + 1}"
+            if probe.quantity == "reverse":
+                total = signs[probe.junction] * total
             found[name] = Waveform(time, np.asarray(total), "C" if probe.quantity == "charge" else "V")
     power = None
     if netlist.supplies:
         rails = [name.removeprefix("vsupply_") for name in netlist.supplies]
         delivered = [-vectors[f"v({rail})"] * vectors[f"i(vsupply_{rail})"] for rail in rails]
         power = Waveform(time, np.sum(delivered, axis=0), "W")
-    return Record(
+    record = Record(
         timing=timeline.timing(passes),
         definitions=design.definitions,
         carrier=frequency,
@@ -86,9 +99,14 @@ def record_of(
         supply_power=power,
         junction_charge=probes["charge"],
         junction_reverse=probes["reverse"],
+        junction_current=junction_currents(case, vectors),
+        junction_power=junction_powers(case, vectors),
+        driver_output_power=driver_output_power(vectors),
+        supply_current=supply_currents(case, vectors),
         stress=stress,
         large=large,
     )
+    return replace(record, ratings=ratings_of(case, record))
 
 
 def _vector(vectors: Mapping[str, Array], name: str) -> Array:

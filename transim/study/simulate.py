@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
-from types import MappingProxyType
+from dataclasses import dataclass, field
+from typing import Literal
 
 import numpy as np
 
@@ -17,8 +17,9 @@ from transim.envelope.junction import Array
 from transim.envelope.linearise import Bias, linearise, saved_vectors
 from transim.envelope.method import Envelope, solve_envelope
 from transim.envelope.stationary import Complex, largest_difference
-from transim.measure.limits import Judgement, Verdict, judge, verdict
+from transim.measure.limits import Judgement, Verdict, judge, judge_ratings, verdict
 from transim.measure.metrics import Figure, extract
+from transim.measure.rate import RateStudy, rate_study
 from transim.measure.record import Record
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
@@ -61,10 +62,16 @@ class Result:
         Available power of the RF source [dBm].
     warnings : tuple of str
         Where the small-signal assumption does not hold at this level, and by how much.
+    ratings : tuple of Judgement
+        One for each rating of the junctions and of the driver, from the run without RF.
+    rates : RateStudy or None
+        Powers against the switching rate, and the highest rate.
     faults : tuple of str
         What makes the figures unfit to be judged; empty in a sound run.
     check : float or None
-        Largest difference of the envelope to ngspice's AC analysis at four biases [dB].
+        Largest difference of the envelope to ngspice's AC analysis at the biases that were checked [dB].
+    checked : tuple of str
+        These biases, in words.
     """
 
     driver: str
@@ -78,11 +85,14 @@ class Result:
     check: float | None = None
     level: float = -10.0
     warnings: tuple[str, ...] = ()
+    checked: tuple[str, ...] = ()
+    ratings: tuple[Judgement, ...] = ()
+    rates: RateStudy | None = None
 
     @property
     def verdict(self) -> Verdict:
-        """Verdict over all limits; undefined where the run has a fault."""
-        return "undefined" if self.faults else verdict(self.judgements)
+        """Verdict over all limits and ratings; undefined where the run has a fault."""
+        return "undefined" if self.faults else verdict((*self.judgements, *self.ratings))
 
 
 @dataclass(frozen=True)
@@ -116,11 +126,17 @@ class CaseRun:
     video: Plot
     envelopes: Mapping[tuple[str, float], Waveform]
     engine_seconds: float
-    level_envelopes: Mapping[tuple[float, float], Waveform] = MappingProxyType({})
+    level_envelopes: Mapping[tuple[float, float], Waveform] = field(default_factory=dict)
 
 
 def simulate(
-    design: Design, driver: Driver, temperature: float, engine: Engine, analyses: Sequence[str]
+    design: Design,
+    driver: Driver,
+    temperature: float,
+    engine: Engine,
+    analyses: Sequence[str],
+    *,
+    checks: Literal["all", "start"] = "all",
 ) -> CaseRun:
     """Simulate one driver at one temperature and all carriers.
 
@@ -136,6 +152,9 @@ def simulate(
         ngspice.
     analyses : sequence of str
         ``envelope``, ``carrier`` or both.
+    checks : {"all", "start"}
+        Biases at which the envelope is compared with ngspice's AC analysis: ``all`` four of them, or only the
+        ``start``, which needs no deck of its own.
 
     Returns
     -------
@@ -156,7 +175,7 @@ def simulate(
     results: list[Result] = []
     envelopes: dict[tuple[str, float], Waveform] = {}
     if "envelope" in analyses:
-        _envelope(case, circuit, states, vectors, results, envelopes)
+        _envelope(case, circuit, states, vectors, results, envelopes, checks=checks)
     by_level: dict[tuple[float, float], Waveform] = {}
     if "carrier" in analyses:
         _carrier(case, states, vectors, results, by_level)
@@ -176,6 +195,8 @@ def _envelope(
     vectors: Mapping[str, Array],
     results: list[Result],
     envelopes: dict[tuple[str, float], Waveform],
+    *,
+    checks: str,
 ) -> None:
     design, netlist = case.design, case.netlist
     frequencies = design.carrier.frequency
@@ -184,7 +205,8 @@ def _envelope(
     )
     solution = solve_envelope(network, netlist.ports, frequencies, netlist.through, design.numerics.solution)
     points = _check_points(case, solution)
-    references = {name: case.check(name, circuit, vectors, point) for name, point in points.items()}
+    judged = points if checks == "all" else {}
+    references = {name: case.check(name, circuit, vectors, point) for name, point in judged.items()}
     # before the first edge the bias is ngspice's own operating point
     points["check_start"], references["check_start"] = 0, states[0]
     for k, frequency in enumerate(frequencies):
@@ -195,7 +217,7 @@ def _envelope(
             case, network, vectors, (solution.frozen[k, :, netlist.through[1], netlist.through[0]], points["check_end"]), frequency
         )
         differences = {
-            name: largest_difference(references[name][k], solution.frozen[k, point]) for name, point in points.items()
+            name: largest_difference(references[name][k], solution.frozen[k, points[name]]) for name in references
         }
         method = f"{solution.methods[k]}: {solution.reasons[k]}"
         for level in design.carrier.level:
@@ -261,6 +283,9 @@ def _result(case: Case, record: Record, analysis: str, method: str, differences:
         method=method,
         faults=faults,
         check=max(differences.values()) if differences else None,
+        checked=tuple(_CHECKS[name] for name in differences),
         level=(record.stress or record.large).level,  # type: ignore[union-attr]
         warnings=small_signal_warnings(record.stress) if record.stress else (),
+        ratings=judge_ratings(record),
+        rates=rate_study(record),
     )

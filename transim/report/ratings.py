@@ -1,0 +1,175 @@
+"""Ratings and powers of a run as plain text: the drivers side by side, a table a temperature."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from typing import Any
+
+from transim.measure.limits import Judgement
+from transim.measure.rate import RateStudy
+from transim.quantities import format_quantity
+from transim.report.layout import Column, wrap
+from transim.report.tables import limit_text, side_by_side, verdict_word
+from transim.study.run import Outcome
+from transim.study.simulate import Result
+
+__all__ = ["first_results", "rate_rows", "rates_document", "rating_tables"]
+
+#: Rates that are listed, as multiples of the command's own.
+_MULTIPLES = (0.1, 1.0, 2.0, 5.0, 10.0)
+_POWERS = {"junction_dissipation": "junction", "driver_dissipation": "driver", "driver_power": "supplies"}
+
+
+def first_results(results: Sequence[Result]) -> list[Result]:
+    """Return one result for each driver and temperature: ratings do not depend on the carrier.
+
+    Parameters
+    ----------
+    results : sequence of Result
+        Of a run.
+
+    Returns
+    -------
+    list of Result
+        The first of each.
+    """
+    found: dict[tuple[str, float], Result] = {}
+    for result in results:
+        found.setdefault((result.driver, result.temperature), result)
+    return list(found.values())
+
+
+def rating_tables(outcome: Outcome) -> list[str]:
+    """Write ratings and powers of all drivers.
+
+    Parameters
+    ----------
+    outcome : Outcome
+        The run of a design.
+
+    Returns
+    -------
+    list of str
+        For each temperature: the ratings with value, margin and verdict, where there are any; then the powers
+        against the switching rate and the highest rate. Empty where a run gave neither.
+    """
+    lines: list[str] = []
+    for temperature in dict.fromkeys(result.temperature for result in outcome.results):
+        everything = [result for result in outcome.results if result.temperature == temperature]
+        group, place = first_results(everything), format_quantity(temperature, "degC", 12)
+        if any(result.ratings for result in group):
+            lines += [f"Ratings at {place}, without RF; (margin as share of the limit)", "", *_ratings(group), ""]
+        if any(result.rates for result in group):
+            lines += [*_rates(group, everything, place), ""]
+    return lines[:-1]
+
+
+def rate_rows(study: RateStudy) -> list[float]:
+    """Return the switching rates that are worth a row.
+
+    Parameters
+    ----------
+    study : RateStudy
+        Of one result.
+
+    Returns
+    -------
+    list of float
+        Multiples of the command's own rate at which the RF settles, and its own rate in any case [Hz].
+    """
+    ceiling = 0.0 if study.settled is None else study.settled.rate
+    return [m * study.stated for m in _MULTIPLES if m == 1.0 or m * study.stated <= ceiling]
+
+
+def rates_document(study: RateStudy | None) -> dict[str, Any] | None:
+    """Return the powers against the switching rate for a JSON document.
+
+    Parameters
+    ----------
+    study : RateStudy or None
+        Of one result.
+
+    Returns
+    -------
+    dict or None
+        Duty cycle, highest rate with what limits it, and for each power its settled values [W], the energies of
+        the edges [J] and its values at a few rates [Hz].
+    """
+    if study is None:
+        return None
+    rates = rate_rows(study)
+    return {
+        "duty": study.duty,
+        "highest": None if study.highest is None else study.highest.rate,
+        "limited_by": None if study.highest is None else study.highest.reason,
+        "note": study.note,
+        "rates": rates,
+        "powers": {
+            name: {
+                "settled_on": law.settled_on,
+                "settled_off": law.settled_off,
+                "on_edge_energy": law.edge_on,
+                "off_edge_energy": law.edge_off,
+                "values": [law.at(rate) for rate in rates],
+            }
+            for name, law in study.laws.items()
+        },
+    }
+
+
+def _ratings(group: Sequence[Result]) -> Iterator[str]:
+    rows: dict[str, Judgement] = {}
+    for result in group:
+        rows |= {judgement.metric: judgement for judgement in result.ratings}
+    names = Column("rating", tuple(name.removeprefix("rating ") for name in rows))
+    bounds = Column("limit", tuple(limit_text(judgement) for judgement in rows.values()))
+    yield from side_by_side(names, [_judged(result, list(rows)) for result in group if result.ratings], bounds)
+
+
+def _judged(result: Result, rows: Sequence[str]) -> Column:
+    known = {judgement.metric: judgement for judgement in result.ratings}
+    values = {name: _value(judgement) for name, judgement in known.items()}
+    width = max(map(len, values.values()))
+    cells = (f"{values[name]:>{width}} {verdict_word(result, known[name])}" if name in known else "" for name in rows)
+    return Column(result.driver.rjust(width), tuple(cells))
+
+
+def _value(judgement: Judgement) -> str:
+    if judgement.value is None or judgement.margin is None or judgement.max is None:
+        return "-"
+    share = 100.0 * judgement.margin / judgement.max
+    return f"{format_quantity(judgement.value, judgement.unit or '1')} ({share:.0f} %)"
+
+
+def _rates(group: Sequence[Result], everything: Sequence[Result], place: str) -> Iterator[str]:
+    studies = {result.driver: result.rates for result in group if result.rates is not None}
+    first = next(iter(studies.values()))
+    yield from wrap(
+        f"Mean power without RF against the switching rate at {place}, duty cycle {100.0 * first.duty:.4g} %:"
+        f" worst {' / '.join(_POWERS.values())}"
+    )
+    yield ""
+    rates = sorted({rate for study in studies.values() for rate in rate_rows(study)})
+    names = Column("rate", tuple(format_quantity(rate, "Hz") for rate in rates), right=True)
+    columns = [Column(driver, tuple(_cell(study, rate) for rate in rates)) for driver, study in studies.items()]
+    yield from side_by_side(names, columns, None)
+    yield ""
+    for driver in studies:
+        yield from wrap(_highest(driver, everything), "  ")
+
+
+def _cell(study: RateStudy, rate: float) -> str:
+    if rate not in rate_rows(study):
+        return "not settled"
+    found = (study.laws.get(name) for name in _POWERS)
+    return " / ".join("-" if law is None else format_quantity(law.at(rate), "W", 3) for law in found)
+
+
+def _highest(driver: str, results: Sequence[Result]) -> str:
+    """Say which rate is the highest that holds for all carriers, and what sets it."""
+    studies = [result.rates for result in results if result.driver == driver and result.rates is not None]
+    for study in studies:
+        if study.highest is None:
+            return f"{driver}: no highest rate, {study.note}"
+    bound = min((study.highest for study in studies if study.highest is not None), key=lambda one: one.rate)
+    return f"{driver}: highest rate {format_quantity(bound.rate, 'Hz')}, set by {bound.reason}"
