@@ -107,15 +107,15 @@ class Netlist:
         return tuple(vectors)
 
 
-def assemble(design: Design, driver: Driver) -> Netlist:
+def assemble(design: Design, driver: Driver | None) -> Netlist:
     """Put path, junctions and one driver together.
 
     Parameters
     ----------
     design : Design
         Read and checked.
-    driver : Driver
-        One of its drivers.
+    driver : Driver or None
+        One of its drivers; None: a current source ``iholding`` of 0 A feeds the bias entry.
 
     Returns
     -------
@@ -133,15 +133,10 @@ def assemble(design: Design, driver: Driver) -> Netlist:
         )
     circuit = SpiceCircuit("transim")
     circuit.raw_spice = _subcircuits(design, driver)
-    supplies = []
-    for supply in driver.part.supplies:
-        circuit.V(f"supply_{supply.name}", supply.name, circuit.gnd, deck_number(driver.values[supply.name]))
-        supplies.append(f"vsupply_{supply.name}".lower())
-    arguments = {p.name: driver.values[p.name] for p in driver.part.parameters}
-    command = {"control_low": design.control.low, "control_high": design.control.high}
-    arguments |= {name: command[name] for name in driver.part.reserved}
-    wires = [_terminal(name, {"out": "drive"}) for name in driver.part.terminals]
-    circuit.X("driver", driver.part.name, *wires, **_texts(arguments))
+    if driver is None:
+        circuit.I("holding", circuit.gnd, "drive", "0")
+    else:
+        _feed(circuit, design, driver)
     # an ammeter: its current is what the driver delivers
     circuit.V("drive", "drive", path.bias[0], "0")
     circuit.X("path", path.name, *path.terminals, **_texts(design.switch.values))
@@ -153,24 +148,33 @@ def assemble(design: Design, driver: Driver) -> Netlist:
     lines = str(circuit).splitlines()
     body = "\n".join(line for line in lines if line and not line.startswith(".title"))
     through = (path.ports.index(path.through[0]), path.ports.index(path.through[1]))
+    supplies = () if driver is None else tuple(f"vsupply_{supply.name}".lower() for supply in driver.part.supplies)
     places = _junctions(design)
     probes = tuple(probe for place in places for probe in _probes(design, place))
-    return Netlist(body + "\n", tuple(ports), through, places, probes, tuple(supplies))
+    return Netlist(body + "\n", tuple(ports), through, places, probes, supplies)
 
 
-def _terminal(name: str, renamed: Mapping[str, str]) -> str:
-    return renamed.get(name, name)
+def _feed(circuit: SpiceCircuit, design: Design, driver: Driver) -> None:
+    """Add a driver with its supplies; its output is the node ``drive``."""
+    for supply in driver.part.supplies:
+        circuit.V(f"supply_{supply.name}", supply.name, circuit.gnd, deck_number(driver.values[supply.name]))
+    arguments = {p.name: driver.values[p.name] for p in driver.part.parameters}
+    command = {"control_low": design.control.low, "control_high": design.control.high}
+    arguments |= {name: command[name] for name in driver.part.reserved}
+    wires = ["drive" if name == "out" else name for name in driver.part.terminals]
+    circuit.X("driver", driver.part.name, *wires, **_texts(arguments))
 
 
 def _texts(values: Mapping[str, float]) -> dict[str, str]:
     return {name: deck_number(value) for name, value in values.items()}
 
 
-def _subcircuits(design: Design, driver: Driver) -> str:
+def _subcircuits(design: Design, driver: Driver | None) -> str:
     """Return the text of every part once, and a subcircuit for each slot that holds the chosen junction."""
     parts: dict[str, str] = {}
-    for part, card in ((design.switch.path, None), (driver.part, driver.model)):
-        parts[part.name] = _body(part, card)
+    parts[design.switch.path.name] = _body(design.switch.path, None)
+    if driver is not None:
+        parts[driver.part.name] = _body(driver.part, driver.model)
     for slot in design.switch.path.slots:
         junction = design.switch.junctions[slot.name]
         name = _junction_name(junction)

@@ -10,7 +10,17 @@ from transim.circuit.timeline import Timeline
 from transim.design.model import Control, Numerics
 from transim.quantities import deck_number, format_quantity
 
-__all__ = ["Deck", "Origin", "Tone", "carrier_deck", "deck_head", "static_deck", "video_deck"]
+__all__ = [
+    "Deck",
+    "Origin",
+    "Tone",
+    "carrier_deck",
+    "deck_head",
+    "option_cards",
+    "quiet_ports",
+    "static_deck",
+    "video_deck",
+]
 
 _UNITS = (
     "Units: V, A, s, Hz, ohm, F, H, C; node 0 is ground; the driver's current is i(vdrive), "
@@ -79,7 +89,8 @@ def deck_head(name: str, origin: Origin, what: Sequence[str], writes_raw: bool) 
     return "\n".join(lines) + "\n"
 
 
-def _options(numerics: Numerics, temperature: float, method: str) -> str:
+def option_cards(numerics: Numerics, temperature: float, method: str) -> str:
+    """Return the option cards: tolerance, integration method and temperature [degC]."""
     return (
         f".options reltol={deck_number(numerics.reltol)} method={method} noacct\n"
         f".options temp={deck_number(temperature)}\n"
@@ -101,7 +112,8 @@ def _command(control: Control, timeline: Timeline) -> str:
     return f"Vcontrol ctl 0 DC {deck_number(control.low)} PULSE({text})\n"
 
 
-def _quiet_ports(ports: Sequence[RfPort]) -> str:
+def quiet_ports(ports: Sequence[RfPort]) -> str:
+    """Return the RF sources of all ports, silent until a control block alters them."""
     return "".join(f"{port.source} e{port.node} 0 DC 0 AC 0\n" for port in ports)
 
 
@@ -163,8 +175,8 @@ def static_deck(
         deck_head("static", origin, what, True)
         + netlist.text
         + f"Vcontrol ctl 0 DC {deck_number(control.low)}\n"
-        + _quiet_ports(netlist.ports)
-        + _options(numerics, origin.temperature, "gear")
+        + quiet_ports(netlist.ports)
+        + option_cards(numerics, origin.temperature, "gear")
         + script
         + "\n.end\n"
     )
@@ -206,8 +218,8 @@ def video_deck(
         deck_head("video", origin, what, False)
         + netlist.text
         + _command(control, timeline)
-        + _quiet_ports(netlist.ports)
-        + _options(numerics, origin.temperature, "gear")
+        + quiet_ports(netlist.ports)
+        + option_cards(numerics, origin.temperature, "gear")
         + f".save all {' '.join(dict.fromkeys((*netlist.saved, *saved)))}".rstrip()
         + f"\n.tran {deck_number(step)} {deck_number(timeline.stop)} 0 {deck_number(step)}\n.end\n"
     )
@@ -276,7 +288,7 @@ def carrier_deck(
         + netlist.text
         + _command(control, timeline)
         + sources
-        + _options(numerics, origin.temperature, "trap")
+        + option_cards(numerics, origin.temperature, "trap")
         + ".options vntol=1e-9 abstol=1e-14 chgtol=1e-18\n"
         + f".save {' '.join(_carrier_vectors(netlist))}"
         + f"\n.tran {deck_number(step)} {deck_number(timeline.stop)} 0 {deck_number(step)}\n.end\n"

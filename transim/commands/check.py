@@ -117,6 +117,10 @@ def _part(component: Junction | Driver) -> Iterator[str]:
         silenced = component.part.model.parameters
         yield from wrap(f"model card of its own: {component.model}", "  ", "    ")
     yield from _settings(component.part, component.values, silenced)
+    ratings = component.ratings
+    texts = [f"{key} {format_quantity(value, ratings.unit(key))}" for key, value in ratings.stated.items()]
+    if texts:
+        yield from wrap(f"ratings: at most {', '.join(texts)}", "  ", "    ")
 
 
 def _settings(part: Part, values: Mapping[str, float], silenced: tuple[str, ...] = ()) -> list[str]:
@@ -209,4 +213,5 @@ def _component(component: Junction | Driver) -> dict[str, Any]:
         "part": component.part.name,
         "values": dict(component.values),
         "model": component.model,
+        "ratings": component.ratings.stated,
     }

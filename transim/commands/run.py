@@ -94,6 +94,8 @@ def run_and_report(console: Console, request: RunRequest) -> int:
 
             write_cases(folder, outcome)
             (folder / "result.json").write_text(json_text(document), encoding="utf-8")
-    console.write([*head_lines(outcome), "", *metric_tables(outcome), "", *verdict_lines(outcome)])
+    blocks = (head_lines, metric_tables, rating_tables, caution_lines, verdict_lines)
+    texts = [lines for block in blocks if (lines := block(outcome))]
+    console.write([line for lines in texts for line in (*lines, "")][:-1])
     console.document(document)
     return EXIT[outcome.verdict]

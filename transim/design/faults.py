@@ -8,7 +8,7 @@ from typing import TypeVar
 
 from pydantic import BaseModel, ValidationError
 
-from transim.design.fields import FROM_FILE, ElementErrors, Kind, shown
+from transim.design.fields import FROM_FILE, ElementErrors, Kind, shown, table_keys
 from transim.design.locate import KeyPath, Locations, dotted
 from transim.errors import DesignError, InvalidDesign
 from transim.parts.nearest import nearest_name
@@ -164,9 +164,9 @@ class Faults:
     def _explain(self, model: type[BaseModel], path: KeyPath, kind: str, cause: object) -> None:
         """Add one of pydantic's errors in our own words."""
         if kind == "extra_forbidden":
-            self.unknown(path, model.model_fields)
+            self.unknown(path, table_keys(model))
         elif kind == "missing":
-            field = model.model_fields[str(path[-1])]
+            field = table_keys(model)[str(path[-1])]
             kinds = [entry.expected for entry in field.metadata if hasattr(entry, "expected")]
             self.missing(path, kinds[0] if kinds else str(field.description))
         elif isinstance(cause, ElementErrors):

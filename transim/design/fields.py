@@ -11,7 +11,8 @@ import re
 from dataclasses import dataclass
 from typing import Any, Protocol, TypeVar
 
-from pydantic import GetCoreSchemaHandler, ValidationInfo
+from pydantic import BaseModel, GetCoreSchemaHandler, ValidationInfo
+from pydantic.fields import FieldInfo
 from pydantic_core import CoreSchema, core_schema
 
 from transim.errors import DesignError
@@ -19,7 +20,7 @@ from transim.parts.nearest import nearest_name
 from transim.parts.part import Parameter
 from transim.quantities import UNITS, format_quantity, format_range, parse_quantity
 
-__all__ = ["FROM_FILE", "Choice", "Count", "ElementErrors", "Kind", "Line", "Quantity", "Series", "shown"]
+__all__ = ["FROM_FILE", "Choice", "Count", "ElementErrors", "Kind", "Line", "Quantity", "Series", "shown", "table_keys"]
 
 _CONTROL = re.compile("[\\x00-\\x1f\\x7f-\\x9f\\u2028\\u2029]")
 
@@ -396,3 +397,19 @@ class Line(_Checked):
                 found=shown(raw),
             )
         return raw
+
+
+def table_keys(model: type[BaseModel]) -> dict[str, FieldInfo]:
+    """Return the fields of a table by their keys in a design file.
+
+    Parameters
+    ----------
+    model : type of BaseModel
+        The table.
+
+    Returns
+    -------
+    dict of str to FieldInfo
+        A key that is a word of Python (`from`) belongs to a field of another name.
+    """
+    return {field.alias or name: field for name, field in model.model_fields.items()}

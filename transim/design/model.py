@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Annotated, Literal
@@ -27,6 +28,7 @@ __all__ = [
     "Measure",
     "Numerics",
     "Source",
+    "Static",
     "Switch",
 ]
 
@@ -292,6 +294,58 @@ class Numerics(_Table):
     )
 
 
+class Static(_Table):
+    """The table `[static]`: the settled states against frequency and against the holding current.
+
+    Parameters
+    ----------
+    start, stop : float
+        Ends of the frequency range [Hz]; keys `from` and `to`.
+    points : int
+        Points in a decade, evenly spaced over the logarithm; both ends are among them.
+    bias_sweep : tuple of float
+        Holding currents into the bias entry in place of the driver [A]; empty: none.
+    """
+
+    start: Annotated[float, Quantity("Hz", 0.0, 1e12, True)] = Field(
+        alias="from", description="lowest frequency of the sweep"
+    )
+    stop: Annotated[float, Quantity("Hz", 0.0, 1e12, True)] = Field(
+        alias="to", description="highest frequency of the sweep, above from"
+    )
+    points: Annotated[int, Count(1, 1000)] = Field(
+        default=20, validate_default=True, description="points per decade, as ngspice's .ac dec counts them"
+    )
+    bias_sweep: Annotated[tuple[float, ...], Series(Quantity("A", -1e3, 1e3))] = Field(
+        default=(), description="holding currents into the bias entry in place of the driver, one or an array of them"
+    )
+
+    @field_validator("stop")
+    @classmethod
+    def _stop_above_start(cls, stop: float, info: ValidationInfo) -> float:
+        start = info.data.get("start")
+        if start is not None and stop <= start:
+            raise DesignError(
+                "the sweep must end above its lowest frequency",
+                expected=f"more than {format_quantity(start, 'Hz')}",
+                found=format_quantity(stop, "Hz"),
+            )
+        return stop
+
+    @field_validator("points")
+    @classmethod
+    def _one_step_at_least(cls, points: int, info: ValidationInfo) -> int:
+        start, stop = info.data.get("start"), info.data.get("stop")
+        # with less than one step in the range ngspice never ends
+        if start is not None and stop is not None and points * math.log10(stop / start) < 1.0:
+            raise DesignError(
+                "the range from .. to is narrower than one step",
+                expected=f"at least {math.ceil(1.0 / math.log10(stop / start))} points a decade, or a wider range",
+                found=str(points),
+            )
+        return points
+
+
 class Source(_Table):
     """Where a design comes from.
 
@@ -330,6 +384,8 @@ class Design(_Table):
         Temperatures.
     numerics : Numerics
         How finely the circuit is simulated.
+    static : Static or None
+        Frequencies and currents at which the settled states are swept; None: they are not.
     source : Source
         Where the design comes from.
     """
@@ -343,4 +399,5 @@ class Design(_Table):
     definitions: InstanceOf[Definitions] = _STANDARD
     environment: Environment = Environment()
     numerics: Numerics = Numerics()
+    static: Static | None = None
     source: Source

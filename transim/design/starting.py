@@ -7,9 +7,10 @@ from typing import Any
 
 from pydantic import BaseModel
 
-from transim.design.fields import Choice, Count, Quantity, Series
+from transim.design.fields import Choice, Count, Quantity, Series, table_keys
 from transim.design.limits import Unitful
-from transim.design.model import Carrier, Control, Environment, Measure, Numerics
+from transim.design.model import Carrier, Control, Environment, Measure, Numerics, Static
+from transim.design.ratings import DriverRatings, JunctionRatings
 from transim.errors import DesignError
 from transim.parts.catalogue import Catalogue
 from transim.parts.part import Parameter, Part, Slot
@@ -25,7 +26,12 @@ _LIMITS = {
     "insertion_loss": '{ max = "1.5 dB" }',
     "isolation": '{ min = "20 dB" }',
 }
-_LARGER_IS_BETTER = ("isolation", "return_loss")
+_STATIC: dict[str, str | list[str]] = {
+    "from": "1 MHz",
+    "to": "1 GHz",
+    "bias_sweep": ["10 uA", "100 uA", "1 mA", "10 mA"],
+}
+_LARGER_IS_BETTER = ("isolation", "return_loss", "highest_rate")
 _PREFERRED_JUNCTION = "pin_lumped"
 
 
@@ -88,6 +94,8 @@ def starting_design(
     lines += ["", "[measure]  # definitions that the metrics use", *_table(Measure, {})]
     lines += ["", "[environment]", *_table(Environment, {})]
     lines += ["", "[numerics]", *_table(Numerics, {})]
+    lines += ["", "# [static]  # settled states against frequency, and against the holding current"]
+    lines += [f"# {entry}" for entry in _table(Static, _STATIC)]
     return "\n".join(lines) + "\n"
 
 
@@ -120,7 +128,7 @@ def _given(value: str | list[str]) -> str:
 
 def _table(model: type[BaseModel], given: Mapping[str, str | list[str]]) -> Iterable[str]:
     """Write every key of a table that has a model."""
-    for key, field in model.model_fields.items():
+    for key, field in table_keys(model).items():
         kinds = (entry for entry in field.metadata if isinstance(entry, Quantity | Series | Count | Choice))
         kind = next(kinds)
         meaning = str(field.description)
@@ -154,6 +162,10 @@ def _part_entries(part: Part) -> Iterable[str]:
         meaning = f"file with one .model card of kind {kinds}; it replaces parameters"
         yield _entry("model", '"device.lib"', meaning, active=False)
     yield from _parameters(part.settings.values())
+    ratings = DriverRatings if part.role == "driver" else JunctionRatings
+    without = () if part.supplies or part.role != "driver" else ("dissipation", "supply_current")
+    entries = (f'{key} = "{UNITS[ratings.unit(key)].example}"' for key in ratings.model_fields if key not in without)
+    yield _entry("ratings", f"{{ {', '.join(entries)} }}", "what it stands at most, any of these", active=False)
 
 
 def _slot_entries(path: Part, names: Mapping[tuple[str, ...], str]) -> Iterable[str]:

@@ -12,7 +12,7 @@ from transim.design.components import Components
 from transim.design.faults import Faults
 from transim.design.fields import Line
 from transim.design.limits import Unitful, read_limits
-from transim.design.model import Carrier, Control, Design, Environment, Measure, Numerics, Source
+from transim.design.model import Carrier, Control, Design, Environment, Measure, Numerics, Source, Static
 from transim.design.starting import starting_design
 from transim.errors import DesignError, InvalidDesign, NetlistError
 from transim.parts.catalogue import Catalogue, load_catalogue
@@ -22,7 +22,7 @@ __all__ = ["read_design", "starting_design"]
 #: What may stand at the top level of a design file.
 TOP_LEVEL = (
     "title", "parts", "control", "carrier", "switch", "junction", "driver", "limits", "measure",
-    "environment", "numerics",
+    "environment", "numerics", "static", "sweep", "tune", "spread",
 )  # fmt: skip
 _REQUIRED = {
     "control": "a table [control] with low, high, period, on_for and edge",
@@ -78,8 +78,9 @@ def read_design(
             ("measure", Measure),
             ("environment", Environment),
             ("numerics", Numerics),
+            ("static", Static),
         )
-        if (name in document or name not in _REQUIRED)
+        if (name in document or name not in (*_REQUIRED, "static"))
         and (table := faults.table((name,), document.get(name, {}))) is not None
     }
     switch = components.switch(document.get("switch"), document.get("junction", {}))
@@ -87,7 +88,7 @@ def read_design(
     limits = read_limits(faults, document.get("limits", {}), _known_metrics() if metrics is None else metrics)
     faults.report()
     measure = tables.pop("measure")
-    return Design.model_validate(
+    design = Design.model_validate(
         {
             **tables,
             "title": title,
@@ -98,6 +99,11 @@ def read_design(
             "source": Source(path=file, text=text),
         }
     )
+    from transim.design.vary import check_studies
+
+    check_studies(faults, document, design)
+    faults.report()
+    return design
 
 
 def _known_metrics() -> Mapping[str, Unitful]:

@@ -104,7 +104,7 @@ class DiodeLaw:
 
 
 def _breakdown(voltage: float, current: float, saturation: float, scale: float, vt: float) -> float:
-    """Return the knee voltage at which the breakdown exponential of slope `scale` has to start to carry IBV at BV [V]."""
+    """Return the voltage at which breakdown, an exponential of slope `scale`, has to start to carry IBV at BV [V]."""
     if voltage <= 0.0:
         return 0.0
     if current < saturation * voltage / vt:

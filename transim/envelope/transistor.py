@@ -72,7 +72,8 @@ class TransistorLaw:
     Notes
     -----
     H. K. Gummel, H. C. Poon, Bell Syst. Tech. J. 49(5), 827-852, 1970; P. Antognetti, G. Massobrio,
-    Semiconductor Device Modeling with SPICE, 1988, chapter 2. Voltages are those of an NPN; for a PNP they are the negative ones.
+    Semiconductor Device Modeling with SPICE, 1988, chapter 2. Voltages are those of an NPN; for a PNP
+    they are the negative ones.
     """
 
     def __init__(self, device: Device, temperature: float) -> None:

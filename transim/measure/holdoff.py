@@ -66,7 +66,12 @@ def _smallest(record: Record, off: bool, figure: Callable[[JunctionRf], float | 
     return min(values)
 
 
-@metric("holdoff_peak_margin", unit="V", title="Reverse bias above the RF peak, junctions that are off")
+@metric(
+    "holdoff_peak_margin",
+    unit="V",
+    title="Reverse bias above the RF peak, junctions that are off",
+    analysis="envelope",
+)
 def holdoff_peak_margin(record: Record) -> float:
     """Return the smallest difference of reverse bias and RF peak voltage of any junction that is off [V].
 
@@ -78,7 +83,12 @@ def holdoff_peak_margin(record: Record) -> float:
     )
 
 
-@metric("holdoff_bias_margin", unit="V", title="Reverse bias above the smallest that holds off the RF")
+@metric(
+    "holdoff_bias_margin",
+    unit="V",
+    title="Reverse bias above the smallest that holds off the RF",
+    analysis="envelope",
+)
 def holdoff_bias_margin(record: Record) -> float:
     """Return the smallest difference of reverse bias and the bias that `smallest_reverse_bias` asks for [V]."""
 
@@ -90,7 +100,12 @@ def holdoff_bias_margin(record: Record) -> float:
     return _smallest(record, True, margin, "no junction whose part has a width is off in either state")
 
 
-@metric("charge_margin", unit="1", title="Stored charge over that of the RF, junctions that are on")
+@metric(
+    "charge_margin",
+    unit="1",
+    title="Stored charge over that of the RF, junctions that are on",
+    analysis="envelope",
+)
 def charge_margin(record: Record) -> float:
     """Return the smallest 2 pi f Q / Ipk of any junction that is on (in steady state Q = IF tau).
 
@@ -108,7 +123,12 @@ def charge_margin(record: Record) -> float:
     return _smallest(record, False, margin, "no junction with a known charge is on in either state")
 
 
-@metric("rf_modulation", unit="1", title="RF across conducting junctions in N Vt, during transitions")
+@metric(
+    "rf_modulation",
+    unit="1",
+    title="RF across conducting junctions in N Vt, during transitions",
+    analysis="envelope",
+)
 def rf_modulation(record: Record) -> float:
     """Return the largest RF amplitude across a conducting junction while RF goes from 10 to 90 %, in units of N Vt.
 

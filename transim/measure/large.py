@@ -30,41 +30,56 @@ def _large(record: Record) -> LargeSignal:
     return record.large
 
 
-@metric("level_loss", unit="dB", title="Loss at the stated level, end of the on interval")
+@metric("level_loss", unit="dB", title="Loss at the stated level, end of the on interval", analysis="carrier")
 def level_loss(record: Record) -> float:
     """Return the loss at the end of the on interval at the real level [dB]."""
     _large(record)
     return _decibels(abs(complex(on_envelope(record).value[-1])))
 
 
-@metric("level_isolation", unit="dB", title="Isolation at the stated level, end of the off interval")
+@metric(
+    "level_isolation",
+    unit="dB",
+    title="Isolation at the stated level, end of the off interval",
+    analysis="carrier",
+)
 def level_isolation(record: Record) -> float:
     """Return the isolation at the end of the off interval at the real level [dB]."""
     _large(record)
     return _decibels(abs(complex(off_envelope(record).value[-1])))
 
 
-@metric("on_compression", unit="dB", title="Loss at the stated level above the small-signal loss")
+@metric(
+    "on_compression",
+    unit="dB",
+    title="Loss at the stated level above the small-signal loss",
+    analysis="carrier",
+)
 def on_compression(record: Record) -> float:
     """Return by how much the loss at the real level exceeds that of the static on state [dB]."""
     return level_loss(record) - _decibels(abs(static_on(record)))
 
 
-@metric("bias_shift_on", unit="V", title="Mean bias moved by the RF, RF on")
+@metric("bias_shift_on", unit="V", title="Mean bias moved by the RF, RF on", analysis="carrier")
 def bias_shift_on(record: Record) -> float:
     """Return the change of the mean voltage at the bias entry by the RF, before RF is switched off [V]."""
     large = _large(record)
     return large.bias_shift_high if record.biased_passes else large.bias_shift_low
 
 
-@metric("bias_shift_off", unit="V", title="Mean bias moved by the RF, RF off")
+@metric("bias_shift_off", unit="V", title="Mean bias moved by the RF, RF off", analysis="carrier")
 def bias_shift_off(record: Record) -> float:
     """Return the change of the mean voltage at the bias entry by the RF, before RF is switched on [V]."""
     large = _large(record)
     return large.bias_shift_low if record.biased_passes else large.bias_shift_high
 
 
-@metric("hot_switching_peak", unit="W", title="Power into a junction, largest mean over a carrier period")
+@metric(
+    "hot_switching_peak",
+    unit="W",
+    title="Power into a junction, largest mean over a carrier period",
+    analysis="carrier",
+)
 def hot_switching_peak(record: Record) -> float:
     """Return the largest power into any junction during the cycle, as mean over one carrier period [W]."""
     start, stop = record.timing.start, record.timing.stop
@@ -75,7 +90,12 @@ def hot_switching_peak(record: Record) -> float:
     return max(peaks)
 
 
-@metric("hot_switching_energy", unit="J", title="Energy into a junction while RF is between 10 and 90 %")
+@metric(
+    "hot_switching_energy",
+    unit="J",
+    title="Energy into a junction while RF is between 10 and 90 %",
+    analysis="carrier",
+)
 def hot_switching_energy(record: Record) -> float:
     """Return the energy that goes into the worst junction while RF is between 10 and 90 %, both edges [J]."""
     large, timing = _large(record), record.timing

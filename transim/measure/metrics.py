@@ -29,12 +29,25 @@ class Metric:
         What stands in a table.
     function : callable
         Takes a `Record`, returns the value, raises MeasurementError where there is none.
+    analysis : str or None
+        The one analysis, ``envelope`` or ``carrier``, that can know it; None: any.
     """
 
     name: str
     unit: str
     title: str
     function: Measurement
+    analysis: str | None = None
+
+    def serves(self, analysis: str) -> bool:
+        """Tell whether an analysis can know this metric.
+
+        Parameters
+        ----------
+        analysis : str
+            ``envelope`` or ``carrier``.
+        """
+        return self.analysis in (None, analysis)
 
 
 @dataclass(frozen=True)
@@ -62,7 +75,7 @@ _metrics: dict[str, Metric] = {}
 METRICS: Mapping[str, Metric] = MappingProxyType(_metrics)
 
 
-def metric(name: str, *, unit: str, title: str) -> Callable[[Measurement], Measurement]:
+def metric(name: str, *, unit: str, title: str, analysis: str | None = None) -> Callable[[Measurement], Measurement]:
     """Enter a function in the register.
 
     Parameters
@@ -73,6 +86,8 @@ def metric(name: str, *, unit: str, title: str) -> Callable[[Measurement], Measu
         Unit of its value.
     title : str
         What stands in a table.
+    analysis : str or None
+        The one analysis that can know it; None: any.
 
     Returns
     -------
@@ -88,7 +103,7 @@ def metric(name: str, *, unit: str, title: str) -> Callable[[Measurement], Measu
     def enter(function: Measurement) -> Measurement:
         if name in _metrics:
             raise ValueError(f"metric {name} is registered twice")
-        _metrics[name] = Metric(name, unit, title, function)
+        _metrics[name] = Metric(name, unit, title, function, analysis)
         return function
 
     return enter

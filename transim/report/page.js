@@ -18,13 +18,11 @@
       const step = Math.min(width / 2, view === "left" ? start - first : last - end) * (view === "left" ? -1 : 1);
       [start, end] = [start + step, end + step];
     } else {
-      // the command rises at 0 and falls at the other edge
       const on = Number(section.dataset.on), off = Number(section.dataset.off);
-      const scale = Math.max(on, off) > 0 ? Number(section.dataset.scale) : 1;
-      const begin = (view === "on" ? on : off) * scale, other = (view === "on" ? off : on) * scale;
+      const [begin, other] = view === "on" ? [on, off] : [off, on];
       const stop = other > begin ? other : last;
-      const pre = Math.min((stop - begin) * 0.05, begin - first);
-      [start, end] = [begin - pre, begin + (stop - begin) * 0.4];
+      start = begin - 0.05 * (stop - begin);
+      end = begin + 0.5 * (stop - begin);
     }
     range.setv({start: Math.max(first, start), end: Math.min(last, end)});
   }

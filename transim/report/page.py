@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 from transim import __version__
 from transim.errors import OutputError
 from transim.report.cycle import cycles_of
-from transim.report.panels import embed_panels, key_of, panels_of, thinned_note
+from transim.report.panels import embed_panels, key_of, panels_of, thinned_note, time_scale
 from transim.report.summary import (
     cautions,
     deck_rows,
@@ -64,7 +64,7 @@ def page_text(outcome: Outcome) -> str:
     cycles = cycles_of(outcome)
     panels = panels_of(cycles)
     script, groups = embed_panels(panels, cycles, _piece("reading.js"))
-    design = outcome.design
+    design, scale = outcome.design, time_scale(cycles)[0]
     # what bokeh makes is HTML already; its data are JSON in which < > & and quotes are escaped
     return _template().render(
         title=design.title,
@@ -85,7 +85,7 @@ def page_text(outcome: Outcome) -> str:
             for group in groups
         ],
         thinned=thinned_note(panels, cycles),
-        edges={"on": cycles[0].timing.on_edge, "off": cycles[0].timing.off_edge},
+        edges={"on": cycles[0].timing.on_edge * scale, "off": cycles[0].timing.off_edge * scale},
         definitions=definition_lines(design.definitions),
         settings=definition_rows(design),
         components=setting_tables(design),

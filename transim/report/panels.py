@@ -16,7 +16,7 @@ if TYPE_CHECKING:
     from bokeh.models import Range1d, Span
     from bokeh.plotting import figure as Plot
 
-__all__ = ["MOST_POINTS", "Panel", "embed_panels", "key_of", "panels_of", "thinned_note"]
+__all__ = ["MOST_POINTS", "Panel", "embed_panels", "key_of", "panels_of", "thinned_note", "time_scale"]
 
 #: Most samples of one trace on a page, and of all traces together.
 MOST_POINTS, _ALL_POINTS = 5000, 120_000
@@ -131,14 +131,14 @@ def embed_panels(panels: Sequence[Panel], cycles: Sequence[Cycle], code: str) ->
     groups : list of dict
         ``name`` and ``panels`` of each heading; a panel has ``name`` and ``div``, the element it appears in.
     """
+    from bokeh.document import Document
     from bokeh.embed import components
     from bokeh.models import CustomJS, Range1d, Span
 
-    start = min(cycle.timing.start for cycle in cycles)
-    stop = max(cycle.timing.stop for cycle in cycles)
-    times, unit = axis_scale("s", start, stop)
-    time = Range1d(start * times, stop * times, bounds=(start * times, stop * times), name="time")
-    cursor = Span(dimension="height", line_color="black", line_dash="dotted", line_width=1, name="cursor")
+    times, unit = time_scale(cycles)
+    span = (cycles[0].timing.start * times, cycles[0].timing.stop * times)
+    time = Range1d(*span, bounds=span, name="time")
+    cursor = Span(dimension="height", line_color="black", line_dash="dotted", line_width=1, visible=False)
     plots = []
     for panel in panels:
         plot = _plot(panel, cycles, time, cursor, (times, unit))
@@ -146,6 +146,11 @@ def embed_panels(panels: Sequence[Panel], cycles: Sequence[Cycle], code: str) ->
         for event in ("mousemove", "tap"):
             plot.js_on_event(event, reading)
         plots.append(plot)
+    document = Document()
+    # held, or every panel that is added has the whole document searched again
+    with document.models.freeze():
+        for plot in plots:
+            document.add_root(plot)
     script, divs = components(plots, wrap_script=True)
     groups: list[dict[str, Any]] = []
     for panel, div in zip(panels, divs, strict=True):
@@ -153,6 +158,22 @@ def embed_panels(panels: Sequence[Panel], cycles: Sequence[Cycle], code: str) ->
             groups.append({"name": panel.group, "panels": []})
         groups[-1]["panels"].append({"name": panel.name, "div": div})
     return script, groups
+
+
+def time_scale(cycles: Sequence[Cycle]) -> tuple[float, str]:
+    """Return the scale of the time axis, which all cases of a design share.
+
+    Parameters
+    ----------
+    cycles : sequence of Cycle
+        The cases.
+
+    Returns
+    -------
+    float, str
+        What to multiply seconds with, and the unit.
+    """
+    return axis_scale("s", cycles[0].timing.start, cycles[0].timing.stop)
 
 
 def _plot(
@@ -172,7 +193,7 @@ def _plot(
             zoom,
             PanTool(dimensions="width"),
             WheelZoomTool(dimensions="width", modifiers="ctrl"),
-            CrosshairTool(overlay=[cursor]),
+            CrosshairTool(overlay=cursor),
         ],
         active_drag=zoom,
         toolbar_location=None,
@@ -180,6 +201,7 @@ def _plot(
         y_axis_label=f"[{symbol}]",
         output_backend="canvas",
         tags=[symbol, unit],
+        min_border_left=66,
         min_border_right=12,
         lod_threshold=None,
     )
@@ -194,11 +216,15 @@ def _plot(
             name=cycles[k].name if len(panel.traces) > 1 else panel.name,
             tags=["trace", k if len(panel.traces) > 1 else -1],
         )
-    for k, instant, value in panel.marks:
+    for k in dict.fromkeys(mark[0] for mark in panel.marks):
         plot.scatter(
-            [instant * times], [value * scale], size=6, line_color=COLOURS[k % len(COLOURS)], fill_color="white",
-            name="mark", tags=["mark", k],
-        )  # fmt: skip
+            [instant * times for place, instant, _ in panel.marks if place == k],
+            [value * scale for place, _, value in panel.marks if place == k],
+            size=6,
+            line_color=COLOURS[k % len(COLOURS)],
+            fill_color="white",
+            tags=["mark", k],
+        )
     _dress(plot, panel)
     return plot
 

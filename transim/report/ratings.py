@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+import math
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from typing import Any
 
 from transim.measure.limits import Judgement
@@ -58,7 +59,8 @@ def rating_tables(outcome: Outcome) -> list[str]:
         everything = [result for result in outcome.results if result.temperature == temperature]
         group, place = first_results(everything), format_quantity(temperature, "degC", 12)
         if any(result.ratings for result in group):
-            lines += [f"Ratings at {place}, without RF; (margin as share of the limit)", "", *_ratings(group), ""]
+            head = f"Ratings at {place}, without RF: worst place, margin in percent of the limit"
+            lines += [head, "", *_ratings(group)]
         if any(result.rates for result in group):
             lines += [*_rates(group, everything, place), ""]
     return lines[:-1]
@@ -118,19 +120,47 @@ def rates_document(study: RateStudy | None) -> dict[str, Any] | None:
 
 
 def _ratings(group: Sequence[Result]) -> Iterator[str]:
+    """Write junctions side by side, for each key its worst place, then drivers in a list."""
+    worst = {result.driver: _worst(result) for result in group if result.ratings}
     rows: dict[str, Judgement] = {}
-    for result in group:
-        rows |= {judgement.metric: judgement for judgement in result.ratings}
-    names = Column("rating", tuple(name.removeprefix("rating ") for name in rows))
+    for own in worst.values():
+        rows |= own
+    junctions = {name: judgement for name, judgement in rows.items() if name.startswith("junction.")}
+    if junctions:
+        columns = [_judged(result, junctions, worst[result.driver]) for result in group if result.driver in worst]
+        yield from side_by_side(*_ends(junctions, columns))
+        yield ""
+    drivers = {name: judgement for name, judgement in rows.items() if name not in junctions}
+    if drivers:
+        cells = [_judged(result, drivers, worst[result.driver]).cells for result in group if result.driver in worst]
+        only = tuple(next(cell for cell in row if cell.strip()).strip() for row in zip(*cells, strict=True))
+        yield from side_by_side(*_ends(drivers, [Column("value", only)]))
+        yield ""
+
+
+def _ends(rows: Mapping[str, Judgement], columns: Sequence[Column]) -> tuple[Column, Sequence[Column], Column]:
     bounds = Column("limit", tuple(limit_text(judgement) for judgement in rows.values()))
-    yield from side_by_side(names, [_judged(result, list(rows)) for result in group if result.ratings], bounds)
+    return Column("rating", tuple(rows)), columns, bounds
 
 
-def _judged(result: Result, rows: Sequence[str]) -> Column:
-    known = {judgement.metric: judgement for judgement in result.ratings}
-    values = {name: _value(judgement) for name, judgement in known.items()}
-    width = max(map(len, values.values()))
-    cells = (f"{values[name]:>{width}} {verdict_word(result, known[name])}" if name in known else "" for name in rows)
+def _worst(result: Result) -> dict[str, Judgement]:
+    """Return the judgement with the least margin for each key of the design; one that is undefined first of all."""
+    found: dict[str, Judgement] = {}
+    for judgement in result.ratings:
+        key = judgement.metric.removeprefix("rating ").partition(" ")[0]
+        if key not in found or _order(judgement) < _order(found[key]):
+            found[key] = judgement
+    return found
+
+
+def _order(judgement: Judgement) -> float:
+    return -math.inf if judgement.margin is None else judgement.margin
+
+
+def _judged(result: Result, rows: Iterable[str], worst: Mapping[str, Judgement]) -> Column:
+    values = {name: _value(judgement) for name, judgement in worst.items() if name in rows}
+    width = max(map(len, values.values()), default=0)
+    cells = (f"{values[name]:>{width}} {verdict_word(result, worst[name])}" if name in values else "" for name in rows)
     return Column(result.driver.rjust(width), tuple(cells))
 
 
@@ -145,8 +175,8 @@ def _rates(group: Sequence[Result], everything: Sequence[Result], place: str) ->
     studies = {result.driver: result.rates for result in group if result.rates is not None}
     first = next(iter(studies.values()))
     yield from wrap(
-        f"Mean power without RF against the switching rate at {place}, duty cycle {100.0 * first.duty:.4g} %:"
-        f" worst {' / '.join(_POWERS.values())}"
+        f"Mean power at {place}, without RF, against the switching rate at a duty cycle of"
+        f" {100.0 * first.duty:.4g} %: worst {' / '.join(_POWERS.values())}"
     )
     yield ""
     rates = sorted({rate for study in studies.values() for rate in rate_rows(study)})

@@ -102,30 +102,29 @@ def figure_tables(outcome: Outcome) -> list[Row]:
     Returns
     -------
     list of dict
-        ``place``, ``drivers`` and ``rows`` of ``metric``, ``title``, ``cells`` (texts) and ``notes``: why a
-        figure is undefined.
+        ``place``, ``drivers``, ``rows`` of ``metric``, ``title``, ``cells`` (texts) and ``notes`` (why a figure
+        is undefined), and ``absent``: the metrics that no driver has, by the reason.
     """
     tables = []
     for place, group in _groups(outcome).items():
+        everyone = [result.driver for result in group]
         rows = []
+        absent: dict[str, list[str]] = {}
         for name, metric in METRICS.items():
-            figures = [(result.driver, result.figures[name]) for result in group if name in result.figures]
-            if len(figures) < len(group):
+            if any(name not in result.figures for result in group):
                 continue
-            notes: dict[str, list[str]] = {}
-            for driver, figure in figures:
+            why: dict[str, list[str]] = {}
+            for result in group:
+                figure = result.figures[name]
                 if figure.value is None:
-                    notes.setdefault(figure.note or "no reason is known", []).append(driver)
-            everyone = [result.driver for result in group]
-            rows.append(
-                {
-                    "metric": name,
-                    "title": metric.title,
-                    "cells": [_value(result, name) for result in group],
-                    "notes": [note if who == everyone else f"{', '.join(who)}: {note}" for note, who in notes.items()],
-                }
-            )
-        tables.append({"place": place, "drivers": [result.driver for result in group], "rows": rows})
+                    why.setdefault(figure.note or "no reason is known", []).append(result.driver)
+            if len(why) == 1 and everyone in why.values():
+                absent.setdefault(*why, []).append(name)
+                continue
+            notes = [f"{', '.join(who)}: {note}" for note, who in why.items()]
+            cells = [_value(result, name) for result in group]
+            rows.append({"metric": name, "title": metric.title, "cells": cells, "notes": notes})
+        tables.append({"place": place, "drivers": everyone, "rows": rows, "absent": absent})
     return tables
 
 

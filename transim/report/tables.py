@@ -65,22 +65,26 @@ def metric_tables(outcome: Outcome) -> list[str]:
     Returns
     -------
     list of str
-        For each temperature, carrier and analysis: the metrics that have a limit, then the others, then
+        For each temperature, carrier, level and analysis: the metrics that have a limit, then the others, then
         the reasons of those that are undefined.
     """
-    groups: dict[tuple[float, float, str], list[Result]] = {}
+    groups: dict[tuple[float, float, float, str], list[Result]] = {}
     for result in outcome.results:
-        groups.setdefault((result.temperature, result.carrier, result.analysis), []).append(result)
+        key = (result.temperature, result.carrier, result.level, result.analysis)
+        groups.setdefault(key, []).append(result)
     lines: list[str] = []
-    for (temperature, carrier, analysis), group in groups.items():
-        place = f"{format_quantity(carrier, 'Hz', 12)} and {format_quantity(temperature, 'degC', 12)}"
+    for (temperature, carrier, level, analysis), group in groups.items():
+        at = [format_quantity(carrier, "Hz", 12), format_quantity(level, "dBm", 12)]
+        place = f"{', '.join(at)} and {format_quantity(temperature, 'degC', 12)}"
         lines += [f"At {place}, {analysis} analysis", "", *_group(group, outcome.design.limits), ""]
     return lines[:-1]
 
 
 def _group(group: Sequence[Result], limits: Sequence[Limit]) -> Iterator[str]:
     limited = tuple(dict.fromkeys(limit.metric for limit in limits))
-    others = tuple(name for name in METRICS if name not in limited)
+    analysis = group[0].analysis
+    # a metric of the other analysis alone would only fill a row with its absence
+    others = tuple(name for name, entry in METRICS.items() if name not in limited and entry.serves(analysis))
     if limited:
         bounds = Column("limit", tuple(limit_text(limit) for limit in limits))
         yield from side_by_side(
@@ -153,7 +157,8 @@ def _reasons(group: Sequence[Result]) -> list[str]:
     metrics: dict[tuple[str, str], list[str]] = {}
     for result in group:
         for name, figure in result.figures.items():
-            if figure.value is None:
+            wanted = METRICS[name].serves(result.analysis) or any(j.metric == name for j in result.judgements)
+            if figure.value is None and wanted:
                 metrics.setdefault((figure.note or "no reason is known", result.driver), []).append(name)
     drivers: dict[tuple[str, str], list[str]] = {}
     for (note, driver), names in metrics.items():

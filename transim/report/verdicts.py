@@ -149,12 +149,11 @@ def overall_sentence(outcome: Outcome) -> str:
 
 
 def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterator[str]:
-    judged = [(result, judgement) for result in results for judgement in result.judgements]
-    words = [verdict_word(result, judgement) for result, judgement in judged]
-    counts = [f"{text} {words.count(word)}" for word, text in _COUNTED.items() if words.count(word)]
-    yield from wrap(
-        f"{driver}: {verdict.upper()}; limits {', '.join(counts)}" if judged else f"{driver}: no limits to judge"
-    )
+    judged = _pairs(results)
+    limits = [pair for pair in judged if pair[1].unit is None]
+    ratings = [pair for pair in judged if pair[1].unit is not None]
+    counts = [f"{name} {_counted(pairs)}" for name, pairs in (("limits", limits), ("ratings", ratings)) if pairs]
+    yield from wrap(f"{driver}: {'; '.join([verdict.upper(), *counts])}" if judged else f"{driver}: no limits to judge")
     several = len({result.temperature for result in results}) > 1
     places = {id(result): _place(result, several) for result in results}
     closest = closest_sentence(results)
@@ -162,13 +161,17 @@ def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterato
         yield from wrap(closest, "  ")
     for result, judgement in judged:
         if judgement.value is None:
-            note = result.figures[judgement.metric].note
-            yield from wrap(f"undefined: {judgement.metric} at {places[id(result)]}, {note}", "  ")
+            note = result.figures[judgement.metric].note if judgement.unit is None else judgement.note
+            yield from wrap(f"undefined: {judgement.metric} {_where(judgement, places[id(result)])}, {note}", "  ")
     for result in results:
         for fault in result.faults:
             yield from wrap(f"fault at {places[id(result)]}: {fault}", "  ")
     for result in results:
-        yield from wrap(f"{result.analysis} at {places[id(result)]}: {result.method}", "  ")
+        for warning in result.warnings:
+            yield from wrap(f"warning at {places[id(result)]}: {warning}", "  ")
+    methods = {f"{result.analysis} at {places[id(result)]}": result.method for result in results}
+    for place, method in methods.items():
+        yield from wrap(f"{place}: {method}", "  ")
     checks = [result.check for result in results if result.check is not None]
     if checks:
         found = f"by {format_quantity(max(checks), 'dB', 2)} at most" if max(checks) > _SMALLEST else ""
@@ -190,12 +193,26 @@ def closest_sentence(results: Sequence[Result]) -> str | None:
         None where nothing can be judged.
     """
     several = len({result.temperature for result in results}) > 1
-    judged = ((result, judgement) for result in results for judgement in result.judgements)
-    known = [pair for pair in judged if pair[1].margin is not None and not pair[0].faults]
+    known = [pair for pair in _pairs(results) if pair[1].margin is not None and not pair[0].faults]
     if not known:
         return None
     result, judgement = min(known, key=lambda pair: _relative(pair[1]))
-    return _margin(judgement, _place(result, several))
+    return _margin(judgement, _where(judgement, _place(result, several)))
+
+
+def _pairs(results: Sequence[Result]) -> list[tuple[Result, Judgement]]:
+    """Return every limit with its result, then every rating once: it does not depend on the carrier."""
+    limits = [(result, judgement) for result in results for judgement in result.judgements]
+    return [*limits, *((result, rating) for result in first_results(results) for rating in result.ratings)]
+
+
+def _counted(pairs: Sequence[tuple[Result, Judgement]]) -> str:
+    words = [verdict_word(result, judgement) for result, judgement in pairs]
+    return ", ".join(f"{text} {words.count(word)}" for word, text in _COUNTED.items() if words.count(word))
+
+
+def _where(judgement: Judgement, place: str) -> str:
+    return f"at {place}" if judgement.unit is None else "without RF"
 
 
 _COUNTED = {"PASS": "met", "FAIL": "missed", "UNDEFINED": "undefined"}
@@ -223,13 +240,13 @@ def _relative(judgement: Judgement) -> float:
 
 
 def _margin(judgement: Judgement, place: str) -> str:
-    unit = METRICS[judgement.metric].unit
+    unit = judgement.unit or METRICS[judgement.metric].unit
     value, margin = judgement.value or 0.0, judgement.margin or 0.0
     share = _relative(judgement)
     percent = f" ({abs(100.0 * share):.3g} %)" if math.isfinite(share) and unit not in ("dB", "dBm") else ""
     word = "worst" if margin < 0.0 else "closest"
     side = "outside" if margin < 0.0 else "inside"
     return (
-        f"{word}: {judgement.metric} at {place} is {format_quantity(value, unit)}, that is"
+        f"{word}: {judgement.metric} {place} is {format_quantity(value, unit)}, that is"
         f" {format_quantity(abs(margin), unit)}{percent} {side} its limit of {limit_text(judgement)}"
     )

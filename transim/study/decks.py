@@ -8,19 +8,20 @@ from pathlib import Path
 
 from transim.circuit.assemble import assemble
 from transim.circuit.decks import Deck, Origin, Tone, carrier_deck, static_deck, video_deck
+from transim.circuit.settled import bias_deck, sweep_deck
 from transim.circuit.timeline import Timeline, timeline_of
 from transim.design.model import Design, Driver
 from transim.quantities import format_quantity
 from transim.study.stress import amplitude_of
 
-__all__ = ["carrier_decks", "carrier_timeline", "case_decks"]
+__all__ = ["bias_sweep_decks", "carrier_decks", "carrier_timeline", "case_decks"]
 
 #: Carrier periods before the first edge for the start-up to die away, and after the judged cycle.
 _SETTLING_PERIODS, _OVERRUN_PERIODS = 20.0, 2.0
 
 
-def case_decks(design: Design, driver: Driver, temperature: float) -> tuple[Deck, Deck]:
-    """Write the static and the video deck.
+def case_decks(design: Design, driver: Driver, temperature: float) -> tuple[Deck, ...]:
+    """Write the static and the video deck, and the sweep deck where the design asks for it.
 
     Parameters
     ----------
@@ -34,7 +35,7 @@ def case_decks(design: Design, driver: Driver, temperature: float) -> tuple[Deck
     Returns
     -------
     tuple of Deck
-        Static and video; the video deck of an envelope analysis saves some device currents more.
+        Static, video, sweep; the video deck of an envelope analysis saves some device currents more.
 
     Raises
     ------
@@ -43,10 +44,43 @@ def case_decks(design: Design, driver: Driver, temperature: float) -> tuple[Deck
     """
     netlist, origin = assemble(design, driver), _origin(design, driver, temperature)
     control, numerics = design.control, design.numerics
-    return (
+    decks = [
         static_deck(netlist, control, design.carrier.frequency, numerics, origin),
         video_deck(netlist, control, timeline_of(design), numerics, origin),
-    )
+    ]
+    if design.static is not None:
+        decks.append(sweep_deck(netlist, control, design.static, numerics, origin))
+    return tuple(decks)
+
+
+def bias_sweep_decks(design: Design) -> tuple[Deck, ...]:
+    """Write the decks that step the holding current; they belong to no driver.
+
+    Parameters
+    ----------
+    design : Design
+        The design.
+
+    Returns
+    -------
+    tuple of Deck
+        One for each temperature; none where the design does not ask for it.
+
+    Raises
+    ------
+    TopologyError
+        If the path has no single bias entry.
+    """
+    static = design.static
+    if static is None or not static.bias_sweep:
+        return ()
+    netlist, carriers = assemble(design, None), design.carrier.frequency
+    file = Path(design.source.path).name
+    origins = [
+        Origin(design.title, file, "none, a current source in its place", temperature)
+        for temperature in design.environment.temperature
+    ]
+    return tuple(bias_deck(netlist, static, carriers, design.numerics, origin) for origin in origins)
 
 
 def carrier_timeline(design: Design, frequency: float) -> Timeline:
@@ -98,13 +132,9 @@ def carrier_decks(
     group = f"carrier_{format_quantity(frequency, 'Hz', 12).replace(' ', '')}"
     if len(design.carrier.level) > 1:
         group += f"_{level:g}dBm"
-    return [
-        replace(
-            carrier_deck(netlist, design.control, timeline, design.numerics, origin, Tone(frequency, size, phase, port)),
-            group=group,
-        )
-        for size, phase in ((amplitude, 0.0), (amplitude, 90.0), (0.0, 0.0))
-    ]
+    tones = [Tone(frequency, size, phase, port) for size, phase in ((amplitude, 0.0), (amplitude, 90.0), (0.0, 0.0))]
+    decks = [carrier_deck(netlist, design.control, timeline, design.numerics, origin, tone) for tone in tones]
+    return [replace(deck, group=group) for deck in decks]
 
 
 def _origin(design: Design, driver: Driver, temperature: float) -> Origin:

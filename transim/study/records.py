@@ -7,7 +7,6 @@ from dataclasses import replace
 
 import numpy as np
 
-from transim.circuit.timeline import Timeline
 from transim.envelope.junction import Array
 from transim.envelope.stationary import Complex
 from transim.measure.record import Record
@@ -29,14 +28,11 @@ __all__ = ["record_of"]
 
 def record_of(
     case: Case,
-    timeline: Timeline,
     frequency: float,
     envelope: Waveform,
     states: Complex,
     vectors: Mapping[str, Array],
-    *,
-    stress: RfStress | None = None,
-    large: LargeSignal | None = None,
+    rf: RfStress | LargeSignal | None = None,
 ) -> Record:
     """Collect the waveforms of one carrier.
 
@@ -44,8 +40,6 @@ def record_of(
     ----------
     case : Case
         The circuit.
-    timeline : Timeline
-        Of the waveforms.
     frequency : float
         Carrier [Hz].
     envelope : Waveform
@@ -54,10 +48,8 @@ def record_of(
         S in the settled states, command low first.
     vectors : mapping
         The video run, by name as ngspice prints it.
-    stress : RfStress or None
-        RF in the junctions, of the envelope analysis.
-    large : LargeSignal or None
-        Of the carrier analysis.
+    rf : RfStress, LargeSignal or None
+        RF in the junctions, by the envelope or by the carrier analysis.
 
     Returns
     -------
@@ -84,7 +76,7 @@ def record_of(
         delivered = [-vectors[f"v({rail})"] * vectors[f"i(vsupply_{rail})"] for rail in rails]
         power = Waveform(time, np.sum(delivered, axis=0), "W")
     record = Record(
-        timing=timeline.timing(passes),
+        timing=case.timeline.timing(passes),
         definitions=design.definitions,
         carrier=frequency,
         impedance=design.carrier.impedance,
@@ -103,8 +95,8 @@ def record_of(
         junction_power=junction_powers(case, vectors),
         driver_output_power=driver_output_power(vectors),
         supply_current=supply_currents(case, vectors),
-        stress=stress,
-        large=large,
+        stress=rf if isinstance(rf, RfStress) else None,
+        large=rf if isinstance(rf, LargeSignal) else None,
     )
     return replace(record, ratings=ratings_of(case, record))
 

@@ -9,7 +9,9 @@ from transim.design.model import Design, Driver
 from transim.engine.ngspice import Engine
 from transim.errors import DesignError
 from transim.measure.limits import Verdict
+from transim.measure.sweep import BiasSweep
 from transim.parts.nearest import nearest_name
+from transim.study.settled import run_bias_sweeps
 from transim.study.simulate import CaseRun, Result, simulate
 
 __all__ = ["ANALYSES", "Outcome", "Progress", "choose_drivers", "run_design"]
@@ -33,11 +35,17 @@ class Outcome:
         For example ``ngspice 39``.
     cases : tuple of CaseRun
         One for each driver and temperature.
+    bias_sweeps : tuple of BiasSweep
+        One for each temperature, where the design asks for them.
+    bias_seconds : float
+        Time that ngspice took for these [s].
     """
 
     design: Design
     engine: str
     cases: tuple[CaseRun, ...]
+    bias_sweeps: tuple[BiasSweep, ...] = ()
+    bias_seconds: float = 0.0
 
     @property
     def results(self) -> tuple[Result, ...]:
@@ -55,7 +63,7 @@ class Outcome:
     @property
     def engine_seconds(self) -> float:
         """Time spent in ngspice [s]."""
-        return sum(case.engine_seconds for case in self.cases)
+        return sum(case.engine_seconds for case in self.cases) + self.bias_seconds
 
 
 def run_design(
@@ -99,9 +107,10 @@ def run_design(
         if progress is not None:
             progress(done, len(todo), f"{driver.name} at {temperature:g} degC")
         cases.append(simulate(design, driver, temperature, engine, ANALYSES[analysis]))
+    sweeps, seconds = run_bias_sweeps(design, engine)
     if progress is not None:
         progress(len(todo), len(todo), "")
-    return Outcome(design, f"ngspice {engine.version}", tuple(cases))
+    return Outcome(design, f"ngspice {engine.version}", tuple(cases), sweeps, seconds)
 
 
 def choose_drivers(design: Design, names: Sequence[str]) -> list[Driver]:

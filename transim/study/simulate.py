@@ -21,11 +21,13 @@ from transim.measure.limits import Judgement, Verdict, judge, judge_ratings, ver
 from transim.measure.metrics import Figure, extract
 from transim.measure.rate import RateStudy, rate_study
 from transim.measure.record import Record
+from transim.measure.sweep import StaticSweep
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
 from transim.study.carrier import run_carrier
 from transim.study.case import Case
 from transim.study.records import record_of
+from transim.study.settled import run_static_sweep
 from transim.study.stress import StressSolution, small_signal_warnings
 
 __all__ = ["CaseRun", "Result", "simulate"]
@@ -117,6 +119,8 @@ class CaseRun:
         Complex S21 of every carrier-resolved run by (carrier, level).
     engine_seconds : float
         Time spent in ngspice [s].
+    static : StaticSweep or None
+        Both settled states against frequency, where the design asks for it.
     """
 
     driver: str
@@ -127,6 +131,7 @@ class CaseRun:
     envelopes: Mapping[tuple[str, float], Waveform]
     engine_seconds: float
     level_envelopes: Mapping[tuple[float, float], Waveform] = field(default_factory=dict)
+    static: StaticSweep | None = None
 
 
 def simulate(
@@ -183,8 +188,17 @@ def simulate(
         envelopes |= {("carrier", f): wave for (f, level), wave in by_level.items() if level == first}
     carriers, levels = design.carrier.frequency, design.carrier.level
     results.sort(key=lambda r: (carriers.index(r.carrier), levels.index(r.level), analyses.index(r.analysis)))
+    static = run_static_sweep(case)
     return CaseRun(
-        driver.name, temperature, tuple(results), tuple(case.decks), video, envelopes, case.seconds, by_level
+        driver=driver.name,
+        temperature=temperature,
+        results=tuple(results),
+        decks=tuple(case.decks),
+        video=video,
+        envelopes=envelopes,
+        engine_seconds=case.seconds,
+        level_envelopes=by_level,
+        static=static,
     )
 
 
@@ -213,16 +227,15 @@ def _envelope(
         pair = solution.s[k, :, netlist.through[1], netlist.through[0]]
         waveform = Waveform(solution.time, pair, "1")
         envelopes["envelope", frequency] = waveform
-        stress = StressSolution(
-            case, network, vectors, (solution.frozen[k, :, netlist.through[1], netlist.through[0]], points["check_end"]), frequency
-        )
+        through = solution.frozen[k, :, netlist.through[1], netlist.through[0]]
+        stress = StressSolution(case, network, vectors, (through, points["check_end"]), frequency)
         differences = {
             name: largest_difference(references[name][k], solution.frozen[k, points[name]]) for name in references
         }
         method = f"{solution.methods[k]}: {solution.reasons[k]}"
         for level in design.carrier.level:
             at_level = stress.at(level)
-            record = record_of(case, case.timeline, frequency, waveform, states[:, k], vectors, stress=at_level)
+            record = record_of(case, frequency, waveform, states[:, k], vectors, at_level)
             results.append(_result(case, record, "envelope", method, differences))
 
 
@@ -258,9 +271,7 @@ def _carrier(
         for level in case.design.carrier.level:
             run, quiet = run_carrier(case, frequency, level, quiet)
             envelopes[frequency, level] = run.envelope
-            record = record_of(
-                case, case.timeline, frequency, run.envelope, states[:, k], vectors, large=run.large
-            )
+            record = record_of(case, frequency, run.envelope, states[:, k], vectors, run.large)
             method = f"quadrature of two runs with {points} points a period, less one without RF"
             results.append(_result(case, record, "carrier", method, {}))
 

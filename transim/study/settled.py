@@ -1,0 +1,130 @@
+"""Settled states beyond the carriers: swept over frequency by case, and over the holding current without a driver."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from transim.circuit.assemble import Netlist, assemble
+from transim.circuit.decks import Deck
+from transim.circuit.settled import sweep_deck
+from transim.design.model import Design
+from transim.engine.ngspice import Engine
+from transim.engine.rawfile import Plot
+from transim.errors import RawFileError
+from transim.measure.sweep import Array, BiasSweep, StaticSweep, attenuation
+from transim.study.case import Case
+from transim.study.decks import bias_sweep_decks
+
+__all__ = ["run_bias_sweeps", "run_static_sweep"]
+
+
+def run_static_sweep(case: Case) -> StaticSweep | None:
+    """Sweep both settled states of a case over frequency.
+
+    Parameters
+    ----------
+    case : Case
+        One driver at one temperature.
+
+    Returns
+    -------
+    StaticSweep or None
+        None where the design has no table `[static]`.
+
+    Raises
+    ------
+    EngineError
+        If the deck fails.
+    """
+    design, netlist = case.design, case.netlist
+    if design.static is None:
+        return None
+    deck = sweep_deck(netlist, design.control, design.static, design.numerics, case.origin)
+    plots = case.run(deck).plots
+    count = len(netlist.ports)
+    if len(plots) != 2 * count:
+        raise RawFileError(f"expected {2 * count} AC plots of {deck.name}, found {len(plots)}")
+    low, high = (_scattering(plots[state * count : (state + 1) * count], netlist) for state in range(2))
+    on, off = (high, low) if design.switch.path.passes else (low, high)
+    return StaticSweep(
+        frequency=np.real(plots[0]["frequency"]),
+        on=on,
+        off=off,
+        ports=tuple(port.node for port in netlist.ports),
+        through=netlist.through,
+        impedance=design.carrier.impedance,
+    )
+
+
+def run_bias_sweeps(design: Design, engine: Engine) -> tuple[tuple[BiasSweep, ...], float]:
+    """Step the holding current at every temperature.
+
+    Parameters
+    ----------
+    design : Design
+        The design; it says which currents.
+    engine : Engine
+        ngspice.
+
+    Returns
+    -------
+    sweeps : tuple of BiasSweep
+        One for each temperature; none where the design does not ask for them.
+    seconds : float
+        Time spent in ngspice [s].
+
+    Raises
+    ------
+    EngineError
+        If a deck fails.
+    """
+    decks = bias_sweep_decks(design)
+    if not decks:
+        return (), 0.0
+    netlist, seconds, sweeps = assemble(design, None), 0.0, []
+    for deck, temperature in zip(decks, design.environment.temperature, strict=True):
+        done = engine.run(deck.text, name=deck.name, timeout=design.numerics.timeout, writes_raw=True)
+        seconds += done.seconds
+        sweeps.append(_bias_sweep(design, netlist, deck, done.plots, temperature))
+    return tuple(sweeps), seconds
+
+
+def _scattering(plots: tuple[Plot, ...], netlist: Netlist) -> np.ndarray[tuple[int, ...], np.dtype[np.complex128]]:
+    """Return S of one state from one plot an excited port, shape (n, p, p)."""
+    count = len(netlist.ports)
+    s = np.empty((plots[0]["frequency"].size, count, count), dtype=complex)
+    for column, (plot, source) in enumerate(zip(plots, netlist.ports, strict=True)):
+        for row, port in enumerate(netlist.ports):
+            scale = 2.0 * np.sqrt(source.impedance / port.impedance)
+            s[:, row, column] = scale * plot[f"v({port.node})"] - (row == column)
+    return s
+
+
+def _bias_sweep(
+    design: Design, netlist: Netlist, deck: Deck, plots: tuple[Plot, ...], temperature: float
+) -> BiasSweep:
+    currents, carriers = design.static.bias_sweep if design.static else (), design.carrier.frequency
+    each = 1 + len(carriers)
+    if len(plots) != each * len(currents):
+        raise RawFileError(f"expected {each * len(currents)} plots of {deck.name}, found {len(plots)}")
+    points, first, second = plots[::each], *(netlist.ports[place] for place in netlist.through)
+    # the wave at the far port against the one that the source sends
+    scale = 2.0 * np.sqrt(first.impedance / second.impedance)
+    s = np.array(
+        [[scale * plots[k * each + 1 + j][f"v({second.node})"][0] for j in range(len(carriers))] for k in range(len(currents))]
+    )
+    charge = {
+        probe.junction: np.array([sum(scale * _vector(plot, name) for scale, name in probe.terms) for plot in points])
+        for probe in netlist.probes
+        if probe.quantity == "charge"
+    }
+    voltage: Array = np.array([_vector(plot, "v(drive)") for plot in points])
+    return BiasSweep(temperature, carriers, np.array(currents), voltage, attenuation(s), charge)
+
+
+def _vector(plot: Plot, name: str) -> float:
+    """Find a vector at an operating point; ngspice prints device quantities with the letter of their kind around."""
+    for known in (name, f"i({name})", f"v({name})"):
+        if known in plot.names:
+            return float(np.real(plot[known][0]))
+    raise RawFileError(f"ngspice did not write {name}")
