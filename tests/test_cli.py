@@ -190,7 +190,10 @@ def test_check_names_everything_that_the_file_sets(call, example):
         assert table["part"] in out
     for table in (document["switch"], *document["junction"].values(), *document["driver"].values()):
         for key, value in table.items():
-            if key not in ("path", "junction", "part"):
+            if isinstance(value, dict):
+                flowed = " ".join(out.split())
+                assert all(f"{name} {bound}" in flowed for name, bound in value.items())
+            elif key not in ("path", "junction", "part"):
                 assert_row(out, key, value)
     for metric, bounds in document["limits"].items():
         assert METRICS[metric].title in out

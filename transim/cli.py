@@ -155,6 +155,37 @@ def _run(console: Any, design: Path, **options: Any) -> int:
     return run_and_report(console, RunRequest(design, **options))
 
 
+@_transim.command("measure", short_help="Measure an oscilloscope record.")
+@click.argument("file", type=_PATH)
+@click.option("--command", metavar="COLUMN", required=True, help="Column of the logic command, by name or number.")
+@click.option("--rf", metavar="COLUMN", help="Column of the RF, or of its detector.")
+@click.option("--leakage", metavar="[PORT=]COLUMN", multiple=True, help="Column of a port's leakage, RF off.")
+@click.option("--time", metavar="COLUMN", help="Column of time, where its name or unit does not say so.")
+@click.option("--interval", metavar="TIME", help='Time between two rows, such as "2 ns", where no column has it.')
+@click.option(
+    "--detector",
+    type=click.Choice(["carrier", "linear", "square", "log"]),
+    default="carrier",
+    show_default=True,
+    help="What the RF column is: the RF itself, or a detector's output.",
+)
+@click.option("--slope", metavar="VOLTS", help='Of a logarithmic detector, per dB, such as "25 mV" or "-20 mV".')
+@click.option("--zero", metavar="VOLTS", help="Output of a linear or square-law detector without RF; 0 V if not given.")
+@click.option("--through", metavar="VOLTS", help="What the RF column reads with a straight connection (peak volts).")
+@click.option("--carrier", metavar="FREQUENCY", help="Of the RF; found in the record of a carrier if not given.")
+@click.option("--impedance", metavar="OHMS", help="That leakage is measured across; 50 ohm if not given.")
+@click.option("--period", metavar="TIME", help="From one pulse to the next, where the record has one pulse.")
+@click.option("--passes", type=click.Choice(["high", "low"]), help="Command while RF passes; seen from the RF if not given.")
+@click.option("--pulse", type=click.IntRange(1), metavar="N", help="Which pulse is measured; else the last whole one.")
+@click.option("--design", "design_file", type=_PATH, metavar="FILE", help="Design with definitions and limits.")
+@_common
+def _measure(console: Any, **options: Any) -> int:
+    """Take the figures of a run from FILE, separated text as oscilloscopes write it, each with its uncertainty."""
+    from transim.commands.measure import MeasureRequest, measure_record
+
+    return measure_record(console, MeasureRequest(**options))
+
+
 @_transim.command("engine", short_help="Say which ngspice is used, and test it.")
 @_ngspice
 @_common

@@ -11,6 +11,7 @@
     |  |- LinearisationError                    an element that the envelope solver refuses, by name
     |  `- RecordError                           file, line: measured data that cannot be used
     |- OutputError                     exit 2   a result folder or file that cannot be written
+    |- StudyError                      exit 2   a study that cannot start here or go on: another one, no cluster
     |- EngineError                     exit 3   command, return code, log tail, deck kept at
     |  |- EngineNotFound
     |  |- DeckRejected
@@ -44,6 +45,7 @@ __all__ = [
     "OutputError",
     "QuantityError",
     "RawFileError",
+    "StudyError",
     "RecordError",
     "TopologyError",
     "TransimError",
@@ -236,6 +238,12 @@ class RecordError(NetlistError):
 
 class OutputError(TransimError):
     """A result folder or file that cannot be written, or would be overwritten."""
+
+    exit_code = 2
+
+
+class StudyError(TransimError):
+    """A study that cannot be started or gone on with: another one in its folder, or workers that cannot be reached."""
 
     exit_code = 2
 

@@ -175,12 +175,24 @@ def _runs(design: Design) -> Iterator[str]:
     yield "  static    both control states: operating point and S-parameters at every carrier"
     yield "  video     the control pulse without RF"
     yield "  check_*   envelope analysis: S-parameters by ngspice at single biases of the video run"
+    yield from _sweeps(design)
     for frequency in design.carrier.frequency:
         steps = carrier_timeline(design, frequency).stop * frequency * design.numerics.carrier_points
         yield (
             f"  carrier_* carrier analysis at {format_quantity(frequency, 'Hz', 12)}: three decks of about"
             f" {float(f'{steps:.2g}'):.0f} time steps"
         )
+
+
+def _sweeps(design: Design) -> Iterator[str]:
+    static = design.static
+    if static is None:
+        return
+    ends = [format_quantity(value, "Hz", 12) for value in (static.start, static.stop)]
+    yield f"  sweep     both control states from {ends[0]} to {ends[1]}, {static.points} points a decade"
+    if static.bias_sweep:
+        currents = ", ".join(format_quantity(value, "A", 12) for value in static.bias_sweep)
+        yield from wrap(f"  bias_*    once a temperature, without a driver: holding currents of {currents}", "", " " * 12)
 
 
 def _times(count: int, noun: str) -> str:
@@ -204,6 +216,7 @@ def _document(design: Design) -> dict[str, Any]:
         "drivers": [_component(driver) for driver in design.drivers],
         "limits": [limit_document(limit) for limit in design.limits],
         "temperature": list(design.environment.temperature),
+        "static": None if design.static is None else design.static.model_dump(by_alias=True),
     }
 
 

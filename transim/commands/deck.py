@@ -43,7 +43,8 @@ def write_design_decks(
         If the folder is not empty, or cannot be written.
     """
     from transim.design.toml import read_design
-    from transim.report.cases import case_name, placed_decks, write_decks
+    from transim.report.cases import case_name, deck_file, placed_decks, write_decks
+    from transim.study.decks import bias_sweep_decks
     from transim.study.run import choose_drivers
 
     design = read_design(design_file)
@@ -55,6 +56,9 @@ def write_design_decks(
                 decks = placed_decks(design, driver, temperature)
                 write_decks(folder / name, decks)
                 written += [f"{name}/{file}" for file in decks]
+        shared = {deck_file(deck): deck for deck in bias_sweep_decks(design)}
+        write_decks(folder, shared)
+        written += shared
     count = f"{len(written)} decks in {out}; the head of each says how to run it in plain ngspice"
     console.write([*written, count])
     console.document({"format": FORMAT, "folder": str(out), "decks": written})

@@ -75,6 +75,7 @@ def run_and_report(console: Console, request: RunRequest) -> int:
     from transim.engine import find_engine
     from transim.report.cautions import caution_lines
     from transim.report.ratings import rating_tables
+    from transim.report.settled import settled_lines
     from transim.report.tables import metric_tables
     from transim.report.verdicts import head_lines, verdict_lines
     from transim.study.run import choose_drivers, run_design
@@ -94,7 +95,7 @@ def run_and_report(console: Console, request: RunRequest) -> int:
 
             write_cases(folder, outcome)
             (folder / "result.json").write_text(json_text(document), encoding="utf-8")
-    blocks = (head_lines, metric_tables, rating_tables, caution_lines, verdict_lines)
+    blocks = (head_lines, metric_tables, rating_tables, settled_lines, caution_lines, verdict_lines)
     texts = [lines for block in blocks if (lines := block(outcome))]
     console.write([line for lines in texts for line in (*lines, "")][:-1])
     console.document(document)

@@ -4,11 +4,13 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+import numpy as np
+
 from transim.errors import MeasurementError
 from transim.measure.definitions import Timing
 from transim.measure.waveform import Waveform
 
-__all__ = ["RateLaw", "duty_cycle", "period_mean", "rate_law"]
+__all__ = ["RateLaw", "duty_cycle", "period_mean", "rate_law", "settling_after"]
 
 
 @dataclass(frozen=True)
@@ -23,6 +25,8 @@ class RateLaw:
         The quantity at the end of the interval in which the RF passes, and of the other [`unit`].
     edge_on, edge_off : float
         Integral of what it exceeds these by, from the begin of each edge on [`unit` s].
+    most_on, most_off : float
+        Largest value that these integrals pass through on their way, at least 0 [`unit` s].
     unit : str
         Unit of the quantity.
 
@@ -37,6 +41,8 @@ class RateLaw:
     settled_off: float
     edge_on: float
     edge_off: float
+    most_on: float
+    most_off: float
     unit: str
 
     @property
@@ -48,6 +54,11 @@ class RateLaw:
     def slope(self) -> float:
         """Integral that one whole cycle adds: for a power, the energy of both edges [`unit` s]."""
         return self.edge_on + self.edge_off
+
+    @property
+    def most(self) -> float:
+        """Most that one cycle adds where its intervals are cut short before all has settled [`unit` s]."""
+        return self.most_on + self.most_off
 
     def at(self, rate: float) -> float:
         """Return the mean at a switching rate.
@@ -63,6 +74,21 @@ class RateLaw:
             The mean [`unit`].
         """
         return self.idle + rate * self.slope
+
+    def ceiling(self, rate: float) -> float:
+        """Return what the mean stays below at a rate at which not all settles.
+
+        Parameters
+        ----------
+        rate : float
+            Cycles a second [Hz].
+
+        Returns
+        -------
+        float
+            Settled values and the most that a cut interval can add [`unit`].
+        """
+        return self.idle + rate * self.most
 
 
 def duty_cycle(timing: Timing) -> float:
@@ -135,10 +161,56 @@ def rate_law(wave: Waveform, timing: Timing) -> RateLaw:
     MeasurementError
         If an edge lies outside the cycle, the waveform does not cover it, is complex or not finite.
     """
-    settled, extra = [], []
+    settled, extra, most = [], [], []
     for begin, end in (timing.on_window(), timing.off_window()):
         window = wave.between(begin, end)
         last = float(window.value[-1].real)
         settled.append(last)
         extra.append(window.integral() - last * (end - begin))
-    return RateLaw(duty_cycle(timing), settled[0], settled[1], extra[0], extra[1], wave.unit)
+        excess = window.value.real - last
+        steps = np.diff(window.time) * (excess[:-1] + excess[1:]) / 2.0
+        most.append(max(0.0, float(np.cumsum(steps).max())))
+    return RateLaw(
+        duty=duty_cycle(timing),
+        settled_on=settled[0],
+        settled_off=settled[1],
+        edge_on=extra[0],
+        edge_off=extra[1],
+        most_on=most[0],
+        most_off=most[1],
+        unit=wave.unit,
+    )
+
+
+def settling_after(wave: Waveform, timing: Timing, share: float) -> tuple[float, float]:
+    """Return how long a quantity takes to settle after each edge.
+
+    Parameters
+    ----------
+    wave : Waveform
+        A quantity that covers the judged cycle.
+    timing : Timing
+        Of the cycle.
+    share : float
+        Half width of the band around the value at the end of each interval, as a share of the larger of both.
+
+    Returns
+    -------
+    tuple of float
+        Time from the 50 % point of the edge that lets the RF pass, and of the other, to the last entry into the
+        band; 0 if it never leaves the band [s].
+
+    Raises
+    ------
+    MeasurementError
+        If an edge lies outside the cycle, the waveform does not cover it, is complex or not finite.
+    """
+    windows = [wave.between(*window) for window in (timing.on_window(), timing.off_window())]
+    ends = [float(window.value[-1].real) for window in windows]
+    band = share * max(map(abs, ends))
+    entries = [window.last_entry(end - band, end + band) for window, end in zip(windows, ends, strict=True)]
+    edges = (timing.on_edge, timing.off_edge)
+    on, off = (
+        0.0 if entry is None else max(0.0, entry - edge) for entry, edge in zip(entries, edges, strict=True)
+    )
+    return on, off

@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+import numpy as np
+
 from transim.errors import MeasurementError
 from transim.measure.cycle import period_mean
 from transim.measure.metrics import metric
 from transim.measure.record import Record
+from transim.measure.waveform import Waveform
 
-__all__ = ["driver_dissipation", "junction_dissipation"]
+__all__ = ["driver_dissipation", "junction_dissipation", "kept_power"]
 
 
 @metric("junction_dissipation", unit="W", title="Junction dissipation, worst junction")
@@ -54,9 +57,30 @@ def driver_dissipation(record: Record) -> float:
     MeasurementError
         If the driver has no supply, its output power is not recorded or a sample is not finite.
     """
+    return period_mean(kept_power(record), record.timing)
+
+
+def kept_power(record: Record) -> Waveform:
+    """Return the power that stays in the driver.
+
+    Parameters
+    ----------
+    record : Record
+        The cycle.
+
+    Returns
+    -------
+    Waveform
+        Power of all supplies less the power out of the driver, on the instants of the former [W].
+
+    Raises
+    ------
+    MeasurementError
+        If the driver has no supply, its output power is not recorded, or the two are complex.
+    """
     if record.supply_power is None:
         raise MeasurementError("the driver has no supply")
     if record.driver_output_power is None:
         raise MeasurementError("no driver output power in this record")
-    delivered = period_mean(record.driver_output_power, record.timing)
-    return period_mean(record.supply_power, record.timing) - delivered
+    supplied, out = record.supply_power, record.driver_output_power
+    return Waveform(supplied.time, supplied.value - np.interp(supplied.time, out.time, out.value), "W")

@@ -7,7 +7,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 
 from transim.errors import MeasurementError
-from transim.measure.cycle import RateLaw, duty_cycle, rate_law
+from transim.measure.cycle import RateLaw, duty_cycle, rate_law, settling_after
+from transim.measure.dissipation import kept_power
 from transim.measure.metrics import metric
 from transim.measure.rating import Rating
 from transim.measure.record import Record
@@ -15,6 +16,9 @@ from transim.measure.settling import off_settling, on_settling
 from transim.quantities import format_quantity
 
 __all__ = ["RateBound", "RateStudy", "highest_rate", "rate_bound", "rate_study"]
+
+#: Share of its settled value within which a power or charge has settled.
+_SETTLED = 0.02
 
 
 @dataclass(frozen=True)
@@ -52,6 +56,8 @@ class RateStudy:
         Highest rate at which the ratings hold too; None where there is no such rate.
     note : str or None
         Why there is none.
+    held : float
+        Rate up to which powers and stored charges settle within 2 %, so that the laws hold [Hz].
     """
 
     duty: float
@@ -60,6 +66,7 @@ class RateStudy:
     settled: RateBound | None
     highest: RateBound | None
     note: str | None
+    held: float
 
 
 @metric("highest_rate", unit="Hz", title="Highest switching rate, ratings and settling met")
@@ -105,28 +112,45 @@ def rate_bound(record: Record) -> RateBound:
     -----
     At the rate f the RF passes for duty / f, which must not be shorter than `on_settling`, and is blocked
     for (1 - duty) / f, not shorter than `off_settling`. Peaks do not depend on the rate while all settles;
-    means follow `RateLaw`.
+    means follow `RateLaw` up to the rate at which powers and charges still settle. Above it the most that
+    its edges can add is counted instead: energy that a junction's charge would return is not.
     """
-    bound = _settled(record)
-    least: tuple[float, Rating] | None = None
+    bound, held = _settled(record), _held(record)
     for rating in record.ratings:
         if rating.kind == "peak":
             if rating.value(record.timing) > rating.max:
                 raise _none_holds(rating, rating.value(record.timing), "at any rate")
             continue
         law = rate_law(rating.waveform, record.timing)
-        if law.slope > 0.0:
-            rate = (rating.max - law.idle) / law.slope
-            if rate <= 0.0:
-                raise _none_holds(rating, law.idle, "at the lowest rates already")
-            bound = min(bound, RateBound(rate, f"rating {rating.name}"), key=lambda one: one.rate)
-        elif law.idle > rating.max:
-            rate = (rating.max - law.idle) / law.slope if law.slope < 0.0 else math.inf
-            least = max(least or (0.0, rating), (rate, rating), key=lambda one: one[0])
-    if least is not None and least[0] > bound.rate:
-        found = rate_law(least[1].waveform, record.timing).at(bound.rate)
-        raise _none_holds(least[1], found, "at any rate that settles")
+        if law.idle >= rating.max:
+            raise _none_holds(rating, law.idle, "at the lowest rates already")
+        bound = min(bound, RateBound(_highest(law, rating.max, held), f"rating {rating.name}"), key=_rate)
     return bound
+
+
+def _highest(law: RateLaw, most: float, held: float) -> float:
+    """Return the rate at which a mean reaches its maximum."""
+    room = most - law.idle
+    rate = room / law.slope if law.slope > 0.0 else math.inf
+    if rate <= held:
+        return rate
+    return max(held, room / law.most) if law.most > 0.0 else math.inf
+
+
+def _held(record: Record) -> float:
+    """Return the rate up to which powers and charges settle within both intervals."""
+    timing, duty = record.timing, duty_cycle(record.timing)
+    powers = [wave for wave in (record.supply_power, record.driver_output_power) if wave is not None]
+    times = [
+        settling_after(wave, timing, _SETTLED)
+        for wave in (*record.junction_charge.values(), *record.junction_power.values(), *powers)
+    ]
+    on, off = (max((pair[k] for pair in times), default=0.0) for k in (0, 1))
+    return min(duty / on if on > 0.0 else math.inf, (1.0 - duty) / off if off > 0.0 else math.inf)
+
+
+def _rate(bound: RateBound) -> float:
+    return bound.rate
 
 
 def rate_study(record: Record) -> RateStudy | None:
@@ -144,7 +168,7 @@ def rate_study(record: Record) -> RateStudy | None:
     """
     timing = record.timing
     try:
-        duty, laws = duty_cycle(timing), _laws(record)
+        duty, laws, held = duty_cycle(timing), _laws(record), _held(record)
     except MeasurementError:
         return None
     if not laws:
@@ -155,7 +179,7 @@ def rate_study(record: Record) -> RateStudy | None:
         highest = rate_bound(record)
     except MeasurementError as reason:
         note = reason.message
-    return RateStudy(duty, 1.0 / timing.period, laws, settled, highest, note)
+    return RateStudy(duty, 1.0 / timing.period, laws, settled, highest, note, held)
 
 
 def _laws(record: Record) -> dict[str, RateLaw]:
@@ -165,18 +189,9 @@ def _laws(record: Record) -> dict[str, RateLaw]:
         every = [rate_law(power, timing) for power in record.junction_power.values()]
         laws["junction_dissipation"] = max(every, key=lambda law: law.at(1.0 / timing.period))
     if record.supply_power is not None:
-        supplied = rate_law(record.supply_power, timing)
         if record.driver_output_power is not None:
-            out = rate_law(record.driver_output_power, timing)
-            laws["driver_dissipation"] = RateLaw(
-                out.duty,
-                supplied.settled_on - out.settled_on,
-                supplied.settled_off - out.settled_off,
-                supplied.edge_on - out.edge_on,
-                supplied.edge_off - out.edge_off,
-                out.unit,
-            )
-        laws["driver_power"] = supplied
+            laws["driver_dissipation"] = rate_law(kept_power(record), timing)
+        laws["driver_power"] = rate_law(record.supply_power, timing)
     return laws
 
 
@@ -193,7 +208,7 @@ def _settled(record: Record) -> RateBound:
             bounds.append(RateBound(share / time, name))
     if not bounds:
         raise MeasurementError("the RF settles before the command's edges, so that nothing bounds the rate")
-    return min(bounds, key=lambda one: one.rate)
+    return min(bounds, key=_rate)
 
 
 def _none_holds(rating: Rating, found: float, where: str) -> MeasurementError:

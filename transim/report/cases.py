@@ -10,8 +10,9 @@ from transim.circuit.decks import Deck
 from transim.circuit.timeline import timeline_of
 from transim.design.model import Design, Driver
 from transim.quantities import format_quantity
+from transim.report.settled import write_bias_sweeps, write_static_sweep
 from transim.report.waveforms import write_waveforms
-from transim.study.decks import carrier_decks, case_decks
+from transim.study.decks import bias_sweep_decks, carrier_decks, case_decks
 from transim.study.run import Outcome
 
 __all__ = ["case_name", "placed_decks", "write_cases", "write_decks"]
@@ -85,6 +86,12 @@ def write_cases(folder: Path, outcome: Outcome) -> None:
         driver = drivers[case.driver]
         write_decks(place, {deck_file(deck): deck for deck in case.decks})
         write_waveforms(place, case, assemble(design, driver))
+        if case.static is not None:
+            title = f"{design.title}; driver {case.driver} at {format_quantity(case.temperature, 'degC', 12)}"
+            write_static_sweep(place, case.static, title)
+    write_bias_sweeps(folder, outcome.bias_sweeps)
+    if outcome.bias_sweeps:
+        write_decks(folder, {deck_file(deck): deck for deck in bias_sweep_decks(design)})
     (folder / "README.txt").write_text(_readme(design), encoding="utf-8")
 
 
@@ -114,13 +121,16 @@ _README = """\
 Results of: {title}
 
 result.json       every figure with its limit and verdict; SI units
+bias_*.csv        attenuation, voltage and charge against the holding current, without a driver, by temperature
 files.txt         every file that was written here; a later run with --force replaces these and no others
 
 In the folder of each driver (and temperature, where the design has several):
 *.cir             the decks that were run; the head of each says how to run it by itself
 waveforms.csv     the run of the control pulse without RF
 envelope_*.csv    complex S21 of the judged ports against time, by the carrier in the name
-waveforms.npz     all of this as arrays; the array "units" holds name and unit of each
+static.csv        loss, isolation and return losses of the settled states against frequency, where [static] asks for it
+static_*.sNp      S-parameters of the settled states on and off as Touchstone 2.0 files of N ports
+waveforms.npz     all waveforms as arrays; the array "units" holds name and unit of each
 
 All times count from the start of the run. The judged pulse of the command passes 50 %
 at {rising} (rising) and {falling} (falling).

@@ -13,6 +13,7 @@ from transim.circuit.assemble import assemble
 from transim.circuit.timeline import timeline_of
 from transim.measure.definitions import Definitions, Timing
 from transim.measure.spectrum import fourier_integral
+from transim.measure.sweep import StaticSweep
 from transim.quantities import format_quantity
 from transim.report.waveforms import video_waveforms
 from transim.study.run import Outcome
@@ -117,6 +118,8 @@ class Cycle:
         Complex S21 by (analysis, carrier).
     results : tuple of Result
         Figures for each carrier and analysis.
+    static : StaticSweep or None
+        Both settled states against frequency, where the design asks for it.
     """
 
     title: str
@@ -135,6 +138,7 @@ class Cycle:
     ports: tuple[Trace, ...]
     envelopes: Mapping[tuple[str, float], Trace]
     results: tuple[Result, ...]
+    static: StaticSweep | None = None
 
     @property
     def name(self) -> str:
@@ -318,6 +322,7 @@ def _cycle(outcome: Outcome, case: CaseRun) -> Cycle:
         ports=group("port_"),
         envelopes=envelopes,
         results=case.results,
+        static=case.static,
     )
 
 

@@ -95,6 +95,7 @@ def run_document(outcome: Outcome, seconds: float) -> Document:
         ``results`` holds one entry for each driver, temperature, carrier and analysis.
     """
     from transim.report.cautions import cautions
+    from transim.report.settled import settled_documents
 
     design = outcome.design
     return {
@@ -107,6 +108,7 @@ def run_document(outcome: Outcome, seconds: float) -> Document:
         "verdict": outcome.verdict,
         "cautions": list(cautions(outcome)),
         "results": [_result(result) for result in outcome.results],
+        **settled_documents(outcome),
     }
 
 

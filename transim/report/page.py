@@ -10,8 +10,10 @@ from transim import __version__
 from transim.errors import OutputError
 from transim.report.cycle import cycles_of
 from transim.report.panels import embed_panels, key_of, panels_of, thinned_note, time_scale
+from transim.report.ratings import rating_tables
+from transim.report.settled import settled_lines
 from transim.report.summary import (
-    cautions,
+    caution_rows,
     deck_rows,
     definition_rows,
     driver_cards,
@@ -76,9 +78,11 @@ def page_text(outcome: Outcome) -> str:
         version=__version__,
         made=time.strftime("%Y-%m-%d %H:%M %z"),
         cards=driver_cards(outcome),
-        cautions=cautions(outcome),
+        cautions=caution_rows(outcome),
         limits=limit_tables(outcome),
         figures=figure_tables(outcome),
+        ratings=rating_tables(outcome),
+        settled=settled_lines(outcome),
         key=key_of(cycles),
         groups=[
             {**group, "panels": [{**panel, "div": Markup(panel["div"])} for panel in group["panels"]]}

@@ -95,7 +95,7 @@ def rates_document(study: RateStudy | None) -> dict[str, Any] | None:
     -------
     dict or None
         Duty cycle, highest rate with what limits it, and for each power its settled values [W], the energies of
-        the edges [J] and its values at a few rates [Hz].
+        the edges [J] and, at a few rates [Hz], its value, or an upper bound where not all settles.
     """
     if study is None:
         return None
@@ -105,6 +105,7 @@ def rates_document(study: RateStudy | None) -> dict[str, Any] | None:
         "highest": None if study.highest is None else study.highest.rate,
         "limited_by": None if study.highest is None else study.highest.reason,
         "note": study.note,
+        "laws_hold_to": study.held,
         "rates": rates,
         "powers": {
             name: {
@@ -112,7 +113,8 @@ def rates_document(study: RateStudy | None) -> dict[str, Any] | None:
                 "settled_off": law.settled_off,
                 "on_edge_energy": law.edge_on,
                 "off_edge_energy": law.edge_off,
-                "values": [law.at(rate) for rate in rates],
+                "values": [law.at(rate) if rate <= study.held else None for rate in rates],
+                "at_most": [law.ceiling(rate) if rate > study.held else None for rate in rates],
             }
             for name, law in study.laws.items()
         },
@@ -192,7 +194,9 @@ def _cell(study: RateStudy, rate: float) -> str:
     if rate not in rate_rows(study):
         return "not settled"
     found = (study.laws.get(name) for name in _POWERS)
-    return " / ".join("-" if law is None else format_quantity(law.at(rate), "W", 3) for law in found)
+    settled = rate <= study.held
+    powers = (None if law is None else law.at(rate) if settled else law.ceiling(rate) for law in found)
+    return ("" if settled else "< ") + " / ".join("-" if p is None else format_quantity(p, "W", 3) for p in powers)
 
 
 def _highest(driver: str, results: Sequence[Result]) -> str:
@@ -202,4 +206,8 @@ def _highest(driver: str, results: Sequence[Result]) -> str:
         if study.highest is None:
             return f"{driver}: no highest rate, {study.note}"
     bound = min((study.highest for study in studies if study.highest is not None), key=lambda one: one.rate)
-    return f"{driver}: highest rate {format_quantity(bound.rate, 'Hz')}, set by {bound.reason}"
+    held = min(study.held for study in studies)
+    text = f"{driver}: highest rate {format_quantity(bound.rate, 'Hz')}, set by {bound.reason}"
+    if held < bound.rate:
+        text += f"; above {format_quantity(held, 'Hz')} not all charge settles and powers are upper bounds (<)"
+    return text

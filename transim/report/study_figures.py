@@ -314,7 +314,7 @@ def spread_figure(title: str, values: Quantity, bounds: Bounds, nominal: float |
         )
     shade_limit(axes, *bounds.scaled(scale), side="x")
     axes.set_ylim(0.0, 1.18 * axes.dataLim.ymax if good.size else 1.0)
-    axes.yaxis.get_major_locator().set_params(integer=True)  # type: ignore[attr-defined]
+    axes.locator_params(axis="y", integer=True)
     axes.set_ylabel("samples [1]")
     name_axis(axes, "x", values.name, unit)
     return figure

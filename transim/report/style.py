@@ -104,8 +104,11 @@ def _settings() -> Iterator[None]:
     from matplotlib import rc_context, rcParamsDefault
 
     # the back end is not a matter of looks, and setting it would load one
-    plain = {key: value for key, value in rcParamsDefault.items() if not key.startswith(("backend", "webagg"))}
-    with rc_context({**plain, **_SETTINGS}), warnings.catch_warnings():
+    settings: dict[Any, Any] = {
+        key: value for key, value in rcParamsDefault.items() if not key.startswith(("backend", "webagg"))
+    }
+    settings.update(_SETTINGS)
+    with rc_context(settings), warnings.catch_warnings():
         # a letter that the font does not have is shown as a box
         warnings.filterwarnings("ignore", message="Glyph .* missing from", category=UserWarning)
         yield

@@ -11,13 +11,14 @@ from transim.design.model import Design, Driver, Junction
 from transim.measure.metrics import METRICS
 from transim.parts.part import Part
 from transim.quantities import format_quantity
+from transim.report.cautions import cautions
 from transim.report.tables import limit_text, verdict_word
 from transim.report.verdicts import closest_sentence, joined_verdict
 from transim.study.run import Outcome
 from transim.study.simulate import Result
 
 __all__ = [
-    "cautions",
+    "caution_rows",
     "deck_rows",
     "definition_rows",
     "driver_cards",
@@ -119,7 +120,7 @@ def figure_tables(outcome: Outcome) -> list[Row]:
                 if figure.value is None:
                     why.setdefault(figure.note or "no reason is known", []).append(result.driver)
             if len(why) == 1 and everyone in why.values():
-                absent.setdefault(*why, []).append(name)
+                absent.setdefault(next(iter(why)), []).append(name)
                 continue
             notes = [f"{', '.join(who)}: {note}" for note, who in why.items()]
             cells = [_value(result, name) for result in group]
@@ -197,7 +198,7 @@ def deck_rows(outcome: Outcome) -> list[tuple[str, str, str]]:
     return list(dict.fromkeys(rows))
 
 
-def cautions(outcome: Outcome) -> list[tuple[str, str]]:
+def caution_rows(outcome: Outcome) -> list[tuple[str, str]]:
     """Return what a reader must know before using a figure.
 
     Parameters
@@ -208,7 +209,8 @@ def cautions(outcome: Outcome) -> list[tuple[str, str]]:
     Returns
     -------
     list of (str, str)
-        Where it holds, and the text: faults of a run, limits that could not be judged, warnings.
+        Where it holds, and the text: faults of a run, limits that could not be judged, warnings, and what can
+        hurt whoever builds it.
     """
     found: dict[str, list[str]] = {}
     for result in outcome.results:
@@ -221,7 +223,8 @@ def cautions(outcome: Outcome) -> list[tuple[str, str]]:
         faults = [f"fault: {fault}" for fault in result.faults]
         for text in (*faults, *undefined, *result.warnings):
             found.setdefault(text, []).append(place)
-    return [("; ".join(places), text) for text, places in found.items()]
+    rows = [("; ".join(places), text) for text, places in found.items()]
+    return [*rows, *(("the whole design", text) for text in cautions(outcome))]
 
 
 def _groups(outcome: Outcome) -> dict[str, list[Result]]:

@@ -47,7 +47,8 @@ def touchstone_text(
         raise ValueError(f"S of shape {s.shape} does not fit {frequency.size} frequencies and {ports} ports")
     references = [f"{float(value)!r}" for value in impedance]
     lines = [
-        *(f"! {comment}" for comment in comments),
+        # the standard knows ASCII alone
+        *(f"! {comment}".encode("ascii", "replace").decode() for comment in comments),
         "[Version] 2.0",
         f"# Hz S RI R {references[0]}",
         f"[Number of Ports] {ports}",

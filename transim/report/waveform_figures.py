@@ -163,9 +163,10 @@ def _mark_times(linear: Axes, level: Axes, cycle: Cycle, edge: str, analysis: st
         level.axhline(20.0 * math.log10(height), color=_GREY, linewidth=0.7, linestyle=(0, (2, 2)))
         if value is None:
             continue
-        style = {"marker": "o", "color": "black", "markersize": 5.5, "markerfacecolor": "white", "linestyle": "none"}
-        linear.plot([value * times], [height], zorder=5, label="_mark", **style)
-        level.plot([value * times], [20.0 * math.log10(height)], zorder=5, label="_mark", **style)
+        for axes, y in ((linear, height), (level, 20.0 * math.log10(height))):
+            axes.plot(
+                [value * times], [y], "o", color="black", markerfacecolor="white", markersize=5.5, zorder=5, label="_mark"
+            )
         # beside the curve: above it where it falls from the left, below it where it rises
         left = value > 0.6 * right or (edge == "off" and share < 0.5 and value > 0.25 * right)
         above = share < 0.5 or (edge == "off" and not left)

@@ -14,7 +14,7 @@ from transim.engine.rawfile import Plot
 from transim.quantities import format_quantity
 from transim.study.simulate import CaseRun
 
-__all__ = ["carrier_name", "envelope_name", "video_waveforms", "write_waveforms"]
+__all__ = ["carrier_name", "csv_text", "envelope_name", "video_waveforms", "write_waveforms"]
 
 Array = npt.NDArray[np.float64]
 
@@ -109,7 +109,7 @@ def write_waveforms(folder: Path, case: CaseRun, netlist: Netlist) -> None:
     arrays: dict[str, npt.NDArray[np.generic]] = {name: samples for name, (samples, _) in video.items()}
     units = {name: unit for name, (_, unit) in video.items()}
     (folder / "waveforms.csv").write_text(
-        _csv({f"{name} [{unit}]": samples for name, (samples, unit) in video.items()}), encoding="utf-8"
+        csv_text({f"{name} [{unit}]": samples for name, (samples, unit) in video.items()}), encoding="utf-8"
     )
     for (analysis, frequency), envelope in case.envelopes.items():
         name = envelope_name(analysis, frequency)
@@ -121,13 +121,25 @@ def write_waveforms(folder: Path, case: CaseRun, netlist: Netlist) -> None:
             "magnitude [dB]": 20.0 * np.log10(magnitude),
             "phase [deg]": np.degrees(np.angle(envelope.value)),
         }
-        (folder / f"{name}.csv").write_text(_csv(columns), encoding="utf-8")
+        (folder / f"{name}.csv").write_text(csv_text(columns), encoding="utf-8")
     np.savez_compressed(
         folder / "waveforms.npz", allow_pickle=False, units=np.array(list(units.items())), **arrays
     )
 
 
-def _csv(columns: Mapping[str, Array]) -> str:
+def csv_text(columns: Mapping[str, Array]) -> str:
+    """Write columns of equal length as comma-separated text.
+
+    Parameters
+    ----------
+    columns : mapping of str to ndarray, shape (n,)
+        Samples by heading.
+
+    Returns
+    -------
+    str
+        The headings, then n lines with nine digits a number.
+    """
     text = io.StringIO()
     text.write(",".join(columns) + "\n")
     np.savetxt(text, np.column_stack(list(columns.values())), fmt="%.9g", delimiter=",")

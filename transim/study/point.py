@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import contextlib
 import json
+import platform
 import shutil
 import tempfile
 from collections.abc import Mapping
@@ -19,7 +20,7 @@ from transim.measure.limits import Judgement
 from transim.study.run import ANALYSES, choose_drivers
 from transim.study.simulate import Result, simulate
 
-__all__ = ["Case", "Point", "Setup", "failed_point", "simulate_point"]
+__all__ = ["CaseFigures", "Point", "Setup", "failed_point", "simulate_point"]
 
 #: A log or deck that is kept with a failed point is no longer than this.
 _LONGEST_TEXT = 200_000
@@ -41,6 +42,8 @@ class Setup:
         How the RF envelope is found.
     ngspice : str or None
         The executable that is asked for.
+    version : int or None
+        Version of ngspice that every point is simulated with; None: any.
     """
 
     design: Design
@@ -48,6 +51,7 @@ class Setup:
     drivers: tuple[str, ...]
     analysis: str = "envelope"
     ngspice: str | None = None
+    version: int | None = None
 
     def at(self, values: tuple[float, ...]) -> Design:
         """Return the design of one point.
@@ -70,7 +74,7 @@ class Setup:
 
 
 @dataclass(frozen=True)
-class Case:
+class CaseFigures:
     """What one driver gave at one temperature, carrier and level.
 
     Attributes
@@ -112,7 +116,7 @@ class Point:
     ----------
     values : tuple of float
         Values of the study's parameters.
-    cases : tuple of Case
+    cases : tuple of CaseFigures
         By driver, temperature, carrier and level; empty where the point failed.
     reason : str or None
         Why it failed.
@@ -121,7 +125,7 @@ class Point:
     """
 
     values: tuple[float, ...]
-    cases: tuple[Case, ...] = ()
+    cases: tuple[CaseFigures, ...] = ()
     reason: str | None = None
     deck: str | None = None
     log: str | None = None
@@ -150,7 +154,7 @@ class Point:
         """
         raw = json.loads(text)
         cases = tuple(
-            Case(
+            CaseFigures(
                 **{
                     **case,
                     "judgements": tuple(Judgement(**judgement) for judgement in case["judgements"]),
@@ -180,12 +184,12 @@ def simulate_point(setup: Setup, values: tuple[float, ...]) -> Point:
     Raises
     ------
     EngineNotFound, OutputError
-        If no point at all can be run here: there is no ngspice, or no room on the disk.
+        If no point at all can be run here: there is no ngspice, or another version, or no room on the disk.
     """
     try:
         design = setup.at(values)
-        engine = _engine(setup.ngspice)
-        cases: list[Case] = []
+        engine = _engine(setup.ngspice, setup.version)
+        cases: list[CaseFigures] = []
         for driver in choose_drivers(design, setup.drivers):
             for temperature in design.environment.temperature:
                 # the envelope's three decks of its own check are for the nominal and the reported points
@@ -235,14 +239,19 @@ def _taken_over(deck: Path) -> str | None:
 
 
 @lru_cache(maxsize=4)
-def _engine(ngspice: str | None) -> Engine:
-    return find_engine(ngspice)
+def _engine(ngspice: str | None, version: int | None) -> Engine:
+    engine = find_engine(ngspice)
+    if version not in (None, engine.version):
+        raise EngineNotFound(
+            f"{engine.path} on {platform.node()} is ngspice {engine.version}, and the study was started with {version}"
+        )
+    return engine
 
 
-def _case(result: Result) -> Case:
+def _case(result: Result) -> CaseFigures:
     figures = {name: figure.value for name, figure in result.figures.items()}
     notes = {name: figure.note or "" for name, figure in result.figures.items() if figure.value is None}
-    return Case(
+    return CaseFigures(
         driver=result.driver,
         temperature=result.temperature,
         carrier=result.carrier,

@@ -7,6 +7,7 @@ from collections.abc import Iterator
 import numpy as np
 
 from transim.design.model import Driver
+from transim.measure.dissipation import kept_power
 from transim.measure.rating import Rating
 from transim.measure.record import Record
 from transim.measure.waveform import Waveform
@@ -57,10 +58,8 @@ def _of_driver(driver: Driver, record: Record) -> Iterator[Rating]:
     prefix = f"driver.{driver.name}."
     if "output_current" in stated and record.drive_current is not None:
         yield Rating(f"{prefix}output_current", stated["output_current"], "peak", record.drive_current.magnitude())
-    supplied, delivered = record.supply_power, record.driver_output_power
-    if "dissipation" in stated and supplied is not None and delivered is not None:
-        kept = Waveform(supplied.time, supplied.value - delivered.value, "W")
-        yield Rating(f"{prefix}dissipation", stated["dissipation"], "mean", kept)
+    if "dissipation" in stated and record.supply_power is not None:
+        yield Rating(f"{prefix}dissipation", stated["dissipation"], "mean", kept_power(record))
     if "supply_current" in stated and record.supply_current:
         waves = [wave.magnitude() for wave in record.supply_current.values()]
         largest = max(waves, key=lambda wave: wave.extremes()[1])

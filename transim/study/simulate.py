@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Literal
 
 import numpy as np
@@ -17,6 +17,7 @@ from transim.envelope.junction import Array
 from transim.envelope.linearise import Bias, linearise, saved_vectors
 from transim.envelope.method import Envelope, solve_envelope
 from transim.envelope.stationary import Complex, largest_difference
+from transim.measure.levels import full_on, voltage_share
 from transim.measure.limits import Judgement, Verdict, judge, judge_ratings, verdict
 from transim.measure.metrics import Figure, extract
 from transim.measure.rate import RateStudy, rate_study
@@ -26,6 +27,7 @@ from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
 from transim.study.carrier import run_carrier
 from transim.study.case import Case
+from transim.study.probe import TurnOnProbe
 from transim.study.records import record_of
 from transim.study.settled import run_static_sweep
 from transim.study.stress import StressSolution, small_signal_warnings
@@ -233,10 +235,18 @@ def _envelope(
             name: largest_difference(references[name][k], solution.frozen[k, points[name]]) for name in references
         }
         method = f"{solution.methods[k]}: {solution.reasons[k]}"
+        probe: TurnOnProbe | None = None
         for level in design.carrier.level:
             at_level = stress.at(level)
             record = record_of(case, frequency, waveform, states[:, k], vectors, at_level)
-            results.append(_result(case, record, "envelope", method, differences))
+            result = _result(case, record, "envelope", method, differences)
+            warnings = small_signal_warnings(at_level, frequency)
+            time = result.figures["on_time"].value if "on_time" in result.figures else None
+            # studies leave the probes out, as they do the checks
+            if checks == "all" and time is not None and record.static_on is not None:
+                probe = probe or TurnOnProbe(case, frequency, voltage_share(record, 90) * full_on(record), time)
+                warnings = (*probe.warnings(at_level), *warnings)
+            results.append(replace(result, warnings=warnings))
 
 
 def _check_points(case: Case, solution: Envelope) -> dict[str, int]:
@@ -296,7 +306,6 @@ def _result(case: Case, record: Record, analysis: str, method: str, differences:
         check=max(differences.values()) if differences else None,
         checked=tuple(_CHECKS[name] for name in differences),
         level=(record.stress or record.large).level,  # type: ignore[union-attr]
-        warnings=small_signal_warnings(record.stress) if record.stress else (),
         ratings=judge_ratings(record),
         rates=rate_study(record),
     )

@@ -15,10 +15,9 @@ from transim import __version__
 from transim.design.model import Design, Driver, Junction
 from transim.errors import OutputError, StudyError
 from transim.parts.part import Part
-from transim.report.output import write_file
 from transim.study.point import Point, Setup
 
-__all__ = ["DATABASE", "MANIFEST", "Store", "study_key"]
+__all__ = ["DATABASE", "MANIFEST", "Store", "study_key", "write_whole"]
 
 DATABASE, MANIFEST = "points.sqlite", "study.json"
 _OWN = (DATABASE, f"{DATABASE}-wal", f"{DATABASE}-shm", MANIFEST)
@@ -78,6 +77,24 @@ def _part(component: Junction | Driver) -> dict[str, Any]:
 
 def _component(part: Part, values: Mapping[str, float], model: str | None, ratings: str) -> dict[str, Any]:
     return {"body": part.body, "probes": repr(part.probes), "values": dict(values), "model": model, "ratings": ratings}
+
+
+def write_whole(path: Path, text: str) -> None:
+    """Write a text file of a study: an interruption leaves the old one or the new one.
+
+    Parameters
+    ----------
+    path : Path
+        The file; replaced if it exists.
+    text : str
+        Its content.
+    """
+    temporary = path.with_name(f".{path.name}.new")
+    with temporary.open("w", encoding="utf-8", newline="\n") as stream:
+        stream.write(text)
+        stream.flush()
+        os.fsync(stream.fileno())
+    temporary.replace(path)
 
 
 class Store:
@@ -156,7 +173,7 @@ class Store:
             raise StudyError(f"the study in {self.folder} is being run by another process ({exc})") from exc
         if found != self.key:
             document = {"format": 1, "key": self.key, **self._description}
-            write_file(self.folder / MANIFEST, json.dumps(document, indent=2) + "\n")
+            write_whole(self.folder / MANIFEST, json.dumps(document, indent=2) + "\n")
 
     def _found(self) -> str | None:
         """Return the key of the study in the folder."""

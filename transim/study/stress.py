@@ -1,7 +1,8 @@
-"""RF in the junctions at the stated level, from the small-signal solution, and whether that solution may be believed."""
+"""RF in the junctions at the stated level, from the small-signal solution, and whether that may be believed."""
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 
 import numpy as np
@@ -21,9 +22,6 @@ _OFF = 1e-6
 _CONDUCTING = 1e-3
 #: Instants of each transition that are looked at.
 _INSTANTS = 24
-#: RF amplitude over N Vt above which a transition is not the small-signal one: measured on the p-i-n example, where
-#: on_time departs by 5 % between 0.4 and 0.9.
-_MODULATED = 0.6
 #: A junction that swings forward by more than this conducts [V].
 _FORWARD = 0.5
 #: Stored charge over the RF's below which a junction that is on does not stay on.
@@ -147,27 +145,33 @@ def _transition_points(level: Array) -> np.ndarray[tuple[int], np.dtype[np.intp]
     return np.concatenate(picked)
 
 
-def small_signal_warnings(stress: RfStress) -> tuple[str, ...]:
-    """Say where the small-signal assumption of the envelope analysis does not hold, and by how much.
+def small_signal_warnings(stress: RfStress, carrier: float) -> tuple[str, ...]:
+    """Say where the small-signal assumption does not hold in the settled states, and by how much.
 
     Parameters
     ----------
     stress : RfStress
         At one level.
+    carrier : float
+        [Hz].
     """
     level = format_quantity(stress.level, "dBm")
     found = []
-    if stress.modulation is not None and stress.modulation > _MODULATED:
-        found.append(
-            f"at {level} the RF across a conducting junction reaches {stress.modulation:.2g} N Vt during a transition "
-            f"(small signal up to {_MODULATED:g}): on and off times will differ; use --analysis carrier"
-        )
-    for junction in stress.junctions:
-        forward = junction.voltage - junction.reverse
-        if junction.off and forward > _FORWARD:
+    on = [j for j in stress.junctions if not j.off and j.charge is not None and j.current > 0.0]
+    for junction in on:
+        margin = 2.0 * math.pi * carrier * (junction.charge or 0.0) / junction.current
+        if margin < _CHARGE:
             found.append(
-                f"at {level} the RF swings {junction.junction} {format_quantity(forward, 'V')} forward while RF is "
-                f"{junction.state} (it conducts from about {format_quantity(_FORWARD, 'V')}): isolation and loss will "
-                "differ; use --analysis carrier"
+                f"at {level} the RF moves {junction.junction} by 1/{margin:.2g} of its stored charge while RF is "
+                f"{junction.state} (small signal down to 1/{_CHARGE:g}): loss will differ; use --analysis carrier"
+            )
+    for state in ("on", "off"):
+        off = [j for j in stress.junctions if j.off and j.state == state]
+        worst = max(off, key=lambda j: j.voltage - j.reverse, default=None)
+        if worst is not None and worst.voltage - worst.reverse > _FORWARD:
+            found.append(
+                f"at {level} the RF peak across {worst.junction}, {format_quantity(worst.voltage, 'V')}, is more than "
+                f"{format_quantity(_FORWARD, 'V')} above its reverse bias of {format_quantity(worst.reverse, 'V')} while "
+                f"RF is {state}: it is not held off by peak; whether it conducts, --analysis carrier tells"
             )
     return tuple(found)
