@@ -145,6 +145,8 @@ def _deck(console: Any, design: Path, out: Path, drivers: Sequence[str], force: 
 )
 @_drivers
 @click.option("--out", type=_PATH, metavar="DIR", help="Folder for result.json, decks and waveforms.")
+@click.option("--figures", type=_PATH, metavar="DIR", help="Folder for figures, PNG and SVG; may lie in --out.")
+@click.option("--report", type=_PATH, metavar="FILE.html", help="A page with everything that opens offline.")
 @_force
 @_ngspice
 @_common

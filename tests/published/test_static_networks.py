@@ -9,8 +9,8 @@ dqM/dt = i - qM/tau, linearised by hand (derived) at a forward current I:
 - junction: v/i = (1 + (tau/TM)/(1 + jw tau)) TM N Vt/qE, qE = I (tau + TM);
 - I-region: R = 1/(G0 + mu Q/W^2), of which the charge follows i as tau/(1 + jw tau): v/i = R - I mu/W^2 R^2 tau/(1 + jw tau).
 
-scikit-rf's nodal solver puts the networks together; it shares nothing with ngspice or this program. "Within 0.01 dB"
-holds for every S-parameter that is above -60 dB.
+scikit-rf's nodal solver puts the networks together; it shares nothing with ngspice or this program. Every
+S-parameter of both states agrees within 0.01 dB, 1 MHz to 10 GHz.
 """
 
 import math
@@ -157,11 +157,9 @@ def test_paths_against_scikit_rf(engine, tmp_path, path):
     biased, unbiased = (sweep.off, sweep.on) if path == "shunt_single" else (sweep.on, sweep.off)
     for found, impedance in ((biased, on_impedance(omega, each)), (unbiased, off_impedance(omega))):
         expected = solved(sweep.frequency, path, impedance)
-        seen = np.abs(expected) > 1e-3
-        difference = 20.0 * np.abs(np.log10(np.abs(found[seen] / expected[seen])))
-        assert seen.mean() > 0.5
+        difference = 20.0 * np.abs(np.log10(np.abs(found / expected)))
         assert difference.max() < 0.01
-        assert np.abs(found - expected).max() < 2e-3
+        assert np.abs(found - expected).max() < 1e-3
 
 
 #: A path that is nothing but its junction, and a junction of resistance or capacitance alone.

@@ -2,15 +2,19 @@
 
 from __future__ import annotations
 
-import contextlib
 import time
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
+from typing import TYPE_CHECKING, Any
 
 from transim.commands.console import Console
 from transim.report.document import json_text, run_document
-from transim.report.output import ResultFolder
+from transim.report.output import write_file
+from transim.report.places import Places
+
+if TYPE_CHECKING:
+    from transim.study.run import Outcome
 
 __all__ = ["EXIT", "RunRequest", "run_and_report"]
 
@@ -34,6 +38,10 @@ class RunRequest:
         The executable that is asked for.
     out : Path or None
         Folder for decks and waveforms.
+    figures : Path or None
+        Folder for figures; may lie in `out`.
+    report : Path or None
+        File for the report page; may lie in `out`.
     force : bool
         Whether results of an earlier run in it are replaced.
     """
@@ -43,6 +51,8 @@ class RunRequest:
     analysis: str = "envelope"
     ngspice: str | None = None
     out: Path | None = None
+    figures: Path | None = None
+    report: Path | None = None
     force: bool = False
 
 
@@ -66,7 +76,7 @@ def run_and_report(console: Console, request: RunRequest) -> int:
     DesignError, NetlistError
         If the design cannot be used.
     OutputError
-        If the folder is not empty, or cannot be written.
+        If a folder is not empty or cannot be written, or what draws the page is not installed.
     EngineError
         If ngspice is missing or fails.
     """
@@ -83,20 +93,34 @@ def run_and_report(console: Console, request: RunRequest) -> int:
     design = read_design(request.design_file)
     choose_drivers(design, request.drivers)
     engine = find_engine(request.ngspice)
-    target = None if request.out is None else ResultFolder(request.out, force=request.force)
-    with target or contextlib.nullcontext() as folder:
+    places = Places(request.out, request.figures, request.report, force=request.force)
+    places.check()
+    with places:
         with console.progress() as progress:
             outcome = run_design(
                 design, engine, drivers=request.drivers, analysis=request.analysis, progress=progress
             )
         document = run_document(outcome, time.perf_counter() - started)
-        if folder is not None:
-            from transim.report.cases import write_cases
-
-            write_cases(folder, outcome)
-            (folder / "result.json").write_text(json_text(document), encoding="utf-8")
+        _write(places, outcome, document)
     blocks = (head_lines, metric_tables, rating_tables, settled_lines, caution_lines, verdict_lines)
     texts = [lines for block in blocks if (lines := block(outcome))]
     console.write([line for lines in texts for line in (*lines, "")][:-1])
     console.document(document)
     return EXIT[outcome.verdict]
+
+
+def _write(places: Places, outcome: Outcome, document: Mapping[str, Any]) -> None:
+    """Write the files that are wanted."""
+    if places.results is not None:
+        from transim.report.cases import write_cases
+
+        write_cases(places.results, outcome)
+        (places.results / "result.json").write_text(json_text(document), encoding="utf-8")
+    if places.figures is not None:
+        from transim.report.gallery import write_figures
+
+        write_figures(places.figures, outcome)
+    if places.report is not None:
+        from transim.report.page import page_text
+
+        write_file(places.report, page_text(outcome))

@@ -4,8 +4,6 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-import numpy as np
-
 from transim.errors import MeasurementError
 from transim.measure.definitions import Timing
 from transim.measure.waveform import Waveform
@@ -25,8 +23,6 @@ class RateLaw:
         The quantity at the end of the interval in which the RF passes, and of the other [`unit`].
     edge_on, edge_off : float
         Integral of what it exceeds these by, from the begin of each edge on [`unit` s].
-    most_on, most_off : float
-        Largest value that these integrals pass through on their way, at least 0 [`unit` s].
     unit : str
         Unit of the quantity.
 
@@ -41,8 +37,6 @@ class RateLaw:
     settled_off: float
     edge_on: float
     edge_off: float
-    most_on: float
-    most_off: float
     unit: str
 
     @property
@@ -54,11 +48,6 @@ class RateLaw:
     def slope(self) -> float:
         """Integral that one whole cycle adds: for a power, the energy of both edges [`unit` s]."""
         return self.edge_on + self.edge_off
-
-    @property
-    def most(self) -> float:
-        """Most that one cycle adds where its intervals are cut short before all has settled [`unit` s]."""
-        return self.most_on + self.most_off
 
     def at(self, rate: float) -> float:
         """Return the mean at a switching rate.
@@ -74,21 +63,6 @@ class RateLaw:
             The mean [`unit`].
         """
         return self.idle + rate * self.slope
-
-    def ceiling(self, rate: float) -> float:
-        """Return what the mean stays below at a rate at which not all settles.
-
-        Parameters
-        ----------
-        rate : float
-            Cycles a second [Hz].
-
-        Returns
-        -------
-        float
-            Settled values and the most that a cut interval can add [`unit`].
-        """
-        return self.idle + rate * self.most
 
 
 def duty_cycle(timing: Timing) -> float:
@@ -161,23 +135,18 @@ def rate_law(wave: Waveform, timing: Timing) -> RateLaw:
     MeasurementError
         If an edge lies outside the cycle, the waveform does not cover it, is complex or not finite.
     """
-    settled, extra, most = [], [], []
+    settled, extra = [], []
     for begin, end in (timing.on_window(), timing.off_window()):
         window = wave.between(begin, end)
         last = float(window.value[-1].real)
         settled.append(last)
         extra.append(window.integral() - last * (end - begin))
-        excess = window.value.real - last
-        steps = np.diff(window.time) * (excess[:-1] + excess[1:]) / 2.0
-        most.append(max(0.0, float(np.cumsum(steps).max())))
     return RateLaw(
         duty=duty_cycle(timing),
         settled_on=settled[0],
         settled_off=settled[1],
         edge_on=extra[0],
         edge_off=extra[1],
-        most_on=most[0],
-        most_off=most[1],
         unit=wave.unit,
     )
 

@@ -15,10 +15,12 @@ from transim.measure.record import Record
 from transim.measure.settling import off_settling, on_settling
 from transim.quantities import format_quantity
 
-__all__ = ["RateBound", "RateStudy", "highest_rate", "rate_bound", "rate_study"]
+__all__ = ["CHARGE", "RateBound", "RateStudy", "highest_rate", "rate_bound", "rate_study"]
 
 #: Share of its settled value within which a power or charge has settled.
 _SETTLED = 0.02
+#: The reason where a mean is rated, and powers and charges no longer settle at higher rates.
+CHARGE = "charge settling, beyond which rated means are not known"
 
 
 @dataclass(frozen=True)
@@ -30,7 +32,7 @@ class RateBound:
     rate : float
         [Hz].
     reason : str
-        ``on_settling``, ``off_settling`` or ``rating`` and its name.
+        ``on_settling``, ``off_settling``, ``rating`` and its name, or `CHARGE`.
     """
 
     rate: float
@@ -112,8 +114,8 @@ def rate_bound(record: Record) -> RateBound:
     -----
     At the rate f the RF passes for duty / f, which must not be shorter than `on_settling`, and is blocked
     for (1 - duty) / f, not shorter than `off_settling`. Peaks do not depend on the rate while all settles;
-    means follow `RateLaw` up to the rate at which powers and charges still settle. Above it the most that
-    its edges can add is counted instead: energy that a junction's charge would return is not.
+    means follow `RateLaw` up to the rate at which powers and stored charges still settle too. Above it a rated
+    mean is not known from one cycle, so that this rate is a bound where a mean is rated.
     """
     bound, held = _settled(record), _held(record)
     for rating in record.ratings:
@@ -124,17 +126,10 @@ def rate_bound(record: Record) -> RateBound:
         law = rate_law(rating.waveform, record.timing)
         if law.idle >= rating.max:
             raise _none_holds(rating, law.idle, "at the lowest rates already")
-        bound = min(bound, RateBound(_highest(law, rating.max, held), f"rating {rating.name}"), key=_rate)
+        rate = (rating.max - law.idle) / law.slope if law.slope > 0.0 else math.inf
+        known = RateBound(rate, f"rating {rating.name}") if rate <= held else RateBound(held, CHARGE)
+        bound = min(bound, known, key=_rate)
     return bound
-
-
-def _highest(law: RateLaw, most: float, held: float) -> float:
-    """Return the rate at which a mean reaches its maximum."""
-    room = most - law.idle
-    rate = room / law.slope if law.slope > 0.0 else math.inf
-    if rate <= held:
-        return rate
-    return max(held, room / law.most) if law.most > 0.0 else math.inf
 
 
 def _held(record: Record) -> float:

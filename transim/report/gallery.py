@@ -10,7 +10,7 @@ from transim.quantities import format_quantity
 from transim.report.cases import case_name
 from transim.report.cycle import Cycle, cycles_of
 from transim.report.leakage_figures import leakage_figure, spectrum_figure
-from transim.report.static_figures import static_figure
+from transim.report.static_figures import bias_figure, static_figure
 from transim.report.style import save_figure
 from transim.report.waveform_figures import cycle_figure, envelope_figure, overlay_figure
 from transim.report.waveforms import carrier_name, envelope_name
@@ -46,6 +46,9 @@ def run_figures(outcome: Outcome) -> Iterator[tuple[str, Figure]]:
             name = f"drivers_{carrier_name(carrier)}{'_resolved' if analysis == 'carrier' else ''}{at}"
             yield name, overlay_figure(group, analysis, carrier)
         yield f"static{at}", static_figure(group, outcome.design.limits)
+    for sweep in outcome.bias_sweeps:
+        at = format_quantity(sweep.temperature, "degC", 12).replace(" ", "")
+        yield f"bias_{at}", bias_figure(outcome.design.title, sweep)
     for cycle in cycles:
         place = case_name(outcome.design, cycle.driver, cycle.temperature)
         yield f"{place}/cycle", cycle_figure(cycle)

@@ -3,18 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass, field
-from typing import TYPE_CHECKING, Any
+from dataclasses import dataclass, field, replace
+from typing import Any
 
 import numpy as np
 
+from transim.measure.metrics import METRICS
 from transim.quantities import format_quantity
 from transim.report.cycle import Cycle, Trace, thinned
 from transim.report.style import COLOURS, DASHES, axis_scale, short
-
-if TYPE_CHECKING:
-    from bokeh.models import Range1d, Span
-    from bokeh.plotting import figure as Plot
 
 __all__ = ["MOST_POINTS", "Panel", "embed_panels", "key_of", "panels_of", "thinned_note", "time_scale"]
 
@@ -41,6 +38,8 @@ class Panel:
         Number of the case, and its trace with real values.
     marks : tuple of (int, float, float)
         Points to mark: number of the case, instant [s] and value.
+    across : {"time", "frequency"}
+        What the horizontal axis is; with frequencies the traces hold them in place of the instants [Hz].
     """
 
     group: str
@@ -48,6 +47,7 @@ class Panel:
     unit: str
     traces: tuple[tuple[int, Trace], ...]
     marks: tuple[tuple[int, float, float], ...] = field(default=())
+    across: str = "time"
 
 
 def panels_of(cycles: Sequence[Cycle]) -> tuple[Panel, ...]:
@@ -88,6 +88,21 @@ def _all_panels(cycles: Sequence[Cycle]) -> Iterator[Panel]:
         for place, first in enumerate(getattr(cycles[0], attribute)):
             traces = tuple((k, getattr(cycle, attribute)[place]) for k, cycle in enumerate(cycles))
             yield Panel(group, f"{name} {first.name}", first.unit, traces)
+    if all(cycle.static is not None for cycle in cycles):
+        yield from _static_panels(cycles)
+
+
+def _static_panels(cycles: Sequence[Cycle]) -> Iterator[Panel]:
+    sweeps = [cycle.static for cycle in cycles if cycle.static is not None]
+    for metric in sweeps[0].figures():
+        for port in range(sweeps[0].figures()[metric].shape[1]):
+            several = sweeps[0].figures()[metric].shape[1] > 1
+            name = METRICS[metric].title + (f", port {sweeps[0].ports[port]}" if several else "")
+            traces = tuple(
+                (k, Trace(name, "dB", sweep.frequency, sweep.figures()[metric][:, port]))
+                for k, sweep in enumerate(sweeps)
+            )
+            yield Panel("Settled states against frequency", name, "dB", traces, across="frequency")
 
 
 def _marks(
@@ -109,7 +124,7 @@ def _thin(panel: Panel, cycles: Sequence[Cycle]) -> Panel:
     count = sum(len(list(panel.traces)) for panel in _all_panels(cycles))
     points = int(np.clip(_ALL_POINTS // count, _FEWEST, MOST_POINTS))
     traces = tuple((k, thinned(trace, points)) for k, trace in panel.traces)
-    return Panel(panel.group, panel.name, panel.unit, traces, panel.marks)
+    return replace(panel, traces=traces)
 
 
 def embed_panels(panels: Sequence[Panel], cycles: Sequence[Cycle], code: str) -> tuple[str, list[dict[str, Any]]]:
@@ -133,15 +148,16 @@ def embed_panels(panels: Sequence[Panel], cycles: Sequence[Cycle], code: str) ->
     """
     from bokeh.document import Document
     from bokeh.embed import components
-    from bokeh.models import CustomJS, Range1d, Span
+    from bokeh.models import CustomJS
 
-    times, unit = time_scale(cycles)
-    span = (cycles[0].timing.start * times, cycles[0].timing.stop * times)
-    time = Range1d(*span, bounds=span, name="time")
-    cursor = Span(dimension="height", line_color="black", line_dash="dotted", line_width=1, visible=False)
+    axes = {"time": _Axis("time", *time_scale(cycles), (cycles[0].timing.start, cycles[0].timing.stop))}
+    swept = next((cycle.static for cycle in cycles if cycle.static is not None), None)
+    if swept is not None:
+        ends = (float(swept.frequency[0]), float(swept.frequency[-1]))
+        axes["frequency"] = _Axis("frequency", *axis_scale("Hz", ends[1]), ends)
     plots = []
     for panel in panels:
-        plot = _plot(panel, cycles, time, cursor, (times, unit))
+        plot = _plot(panel, cycles, axes[panel.across])
         reading = CustomJS(args={"panel": plot}, code=code)
         for event in ("mousemove", "tap"):
             plot.js_on_event(event, reading)
@@ -176,63 +192,77 @@ def time_scale(cycles: Sequence[Cycle]) -> tuple[float, str]:
     return axis_scale("s", cycles[0].timing.start, cycles[0].timing.stop)
 
 
-def _plot(
-    panel: Panel, cycles: Sequence[Cycle], time: Range1d, cursor: Span, axis: tuple[float, str]
-) -> Plot:
+class _Axis:
+    """A horizontal axis that panels share, with its cursor."""
+
+    def __init__(self, name: str, scale: float, unit: str, ends: tuple[float, float]) -> None:
+        from bokeh.models import Range1d
+        from bokeh.models.annotations import Span
+
+        self.scale, self.unit = scale, unit
+        self.logarithmic = name == "frequency"
+        start, end = ends[0] * scale, ends[1] * scale
+        self.range = Range1d(start=start, end=end, bounds=(start, end), name=name)
+        self.cursor = Span(dimension="height", line_color="black", line_dash="dotted", line_width=1, visible=False)
+        self.label = f"frequency [{unit}]" if self.logarithmic else f"time from the command's rising edge [{unit}]"
+
+
+def _plot(panel: Panel, cycles: Sequence[Cycle], axis: _Axis) -> Any:
     from bokeh.models import BoxZoomTool, CrosshairTool, PanTool, WheelZoomTool
     from bokeh.plotting import figure
 
-    times, unit = axis
+    times = axis.scale
     scale, symbol = axis_scale(panel.unit, *(trace.value.real for _, trace in panel.traces))
     zoom = BoxZoomTool(dimensions="width")
     plot = figure(
         height=210,
         sizing_mode="stretch_width",
-        x_range=time,
+        x_range=axis.range,
+        x_axis_type="log" if axis.logarithmic else "linear",
         tools=[
             zoom,
             PanTool(dimensions="width"),
             WheelZoomTool(dimensions="width", modifiers="ctrl"),
-            CrosshairTool(overlay=cursor),
+            CrosshairTool(overlay=axis.cursor),
         ],
         active_drag=zoom,
         toolbar_location=None,
-        x_axis_label=f"time from the command's rising edge [{unit}]",
+        x_axis_label=axis.label,
         y_axis_label=f"[{symbol}]",
         output_backend="canvas",
-        tags=[symbol, unit],
+        tags=[symbol, axis.unit],
         min_border_left=66,
         min_border_right=12,
         lod_threshold=None,
     )
     for k, trace in panel.traces:
         dashes = DASHES[k % len(DASHES)]
-        plot.line(
+        drawn = plot.line(
             (trace.time * times).astype(np.float32),
             (trace.value.real * scale).astype(np.float32),
             color=COLOURS[k % len(COLOURS)],
             line_width=_WIDTH,
             line_dash=[max(1, round(_WIDTH * part)) for part in dashes],
             name=cycles[k].name if len(panel.traces) > 1 else panel.name,
-            tags=["trace", k if len(panel.traces) > 1 else -1],
         )
+        drawn.tags = ["trace", k if len(panel.traces) > 1 else -1]
     for k in dict.fromkeys(mark[0] for mark in panel.marks):
-        plot.scatter(
+        marks = plot.scatter(
             [instant * times for place, instant, _ in panel.marks if place == k],
             [value * scale for place, _, value in panel.marks if place == k],
             size=6,
             line_color=COLOURS[k % len(COLOURS)],
             fill_color="white",
-            tags=["mark", k],
         )
+        marks.tags = ["mark", k]
     _dress(plot, panel)
     return plot
 
 
-def _dress(plot: Plot, panel: Panel) -> None:
+def _dress(plot: Any, panel: Panel) -> None:
     """Set the looks that do not depend on the data."""
     plot.y_range.range_padding = 0.08
-    if panel.unit == "dB":
+    if panel.unit == "dB" and panel.across == "time":
         # below this nothing is told by a logarithm of rounding errors
         highest = max(float(trace.value.real.max()) for _, trace in panel.traces)
         lowest = min(float(trace.value.real.min()) for _, trace in panel.traces)

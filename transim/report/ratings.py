@@ -17,7 +17,7 @@ from transim.study.simulate import Result
 __all__ = ["first_results", "rate_rows", "rates_document", "rating_tables"]
 
 #: Rates that are listed, as multiples of the command's own.
-_MULTIPLES = (0.1, 1.0, 2.0, 5.0, 10.0)
+_MULTIPLES = (0.01, 0.1, 0.5, 1.0, 2.0, 5.0, 10.0)
 _POWERS = {"junction_dissipation": "junction", "driver_dissipation": "driver", "driver_power": "supplies"}
 
 
@@ -77,10 +77,9 @@ def rate_rows(study: RateStudy) -> list[float]:
     Returns
     -------
     list of float
-        Multiples of the command's own rate at which the RF settles, and its own rate in any case [Hz].
+        Multiples of the command's own rate at which powers and stored charge settle, and its own rate [Hz].
     """
-    ceiling = 0.0 if study.settled is None else study.settled.rate
-    return [m * study.stated for m in _MULTIPLES if m == 1.0 or m * study.stated <= ceiling]
+    return [m * study.stated for m in _MULTIPLES if m == 1.0 or m * study.stated <= study.held]
 
 
 def rates_document(study: RateStudy | None) -> dict[str, Any] | None:
@@ -95,7 +94,7 @@ def rates_document(study: RateStudy | None) -> dict[str, Any] | None:
     -------
     dict or None
         Duty cycle, highest rate with what limits it, and for each power its settled values [W], the energies of
-        the edges [J] and, at a few rates [Hz], its value, or an upper bound where not all settles.
+        the edges [J] and its values at a few rates [Hz].
     """
     if study is None:
         return None
@@ -113,8 +112,7 @@ def rates_document(study: RateStudy | None) -> dict[str, Any] | None:
                 "settled_off": law.settled_off,
                 "on_edge_energy": law.edge_on,
                 "off_edge_energy": law.edge_off,
-                "values": [law.at(rate) if rate <= study.held else None for rate in rates],
-                "at_most": [law.ceiling(rate) if rate > study.held else None for rate in rates],
+                "values": [law.at(rate) for rate in rates],
             }
             for name, law in study.laws.items()
         },
@@ -194,9 +192,7 @@ def _cell(study: RateStudy, rate: float) -> str:
     if rate not in rate_rows(study):
         return "not settled"
     found = (study.laws.get(name) for name in _POWERS)
-    settled = rate <= study.held
-    powers = (None if law is None else law.at(rate) if settled else law.ceiling(rate) for law in found)
-    return ("" if settled else "< ") + " / ".join("-" if p is None else format_quantity(p, "W", 3) for p in powers)
+    return " / ".join("-" if law is None else format_quantity(law.at(rate), "W", 3) for law in found)
 
 
 def _highest(driver: str, results: Sequence[Result]) -> str:
@@ -206,8 +202,6 @@ def _highest(driver: str, results: Sequence[Result]) -> str:
         if study.highest is None:
             return f"{driver}: no highest rate, {study.note}"
     bound = min((study.highest for study in studies if study.highest is not None), key=lambda one: one.rate)
-    held = min(study.held for study in studies)
-    text = f"{driver}: highest rate {format_quantity(bound.rate, 'Hz')}, set by {bound.reason}"
-    if held < bound.rate:
-        text += f"; above {format_quantity(held, 'Hz')} not all charge settles and powers are upper bounds (<)"
-    return text
+    held = format_quantity(min(study.held for study in studies), "Hz")
+    rate = format_quantity(bound.rate, "Hz")
+    return f"{driver}: highest rate {rate}, set by {bound.reason}; powers and stored charge settle up to {held}"

@@ -10,6 +10,7 @@ import numpy as np
 
 from transim.measure.limits import Limit
 from transim.measure.metrics import METRICS
+from transim.measure.sweep import BiasSweep
 from transim.quantities import format_quantity
 from transim.report.cycle import Cycle
 from transim.report.style import axis_scale, draw_series, drawn, label_lines, name_axis, new_figure
@@ -18,7 +19,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
-__all__ = ["shade_limit", "static_figure"]
+__all__ = ["bias_figure", "shade_limit", "static_figure"]
 
 _SHOWN = ("insertion_loss", "isolation", "return_loss_on", "return_loss_off")
 
@@ -37,27 +38,34 @@ def static_figure(cycles: Sequence[Cycle], limits: Sequence[Limit]) -> Figure:
     Returns
     -------
     Figure
-        The carriers of the design are the marks; straight lines join them.
+        Over the frequencies of the design's sweep where it asks for one, return losses at the worst port; else at
+        its carriers, with straight lines between them.
     """
     first = cycles[0]
+    swept = all(cycle.static is not None for cycle in cycles)
     carriers = np.array(sorted({frequency for _, frequency in first.envelopes}))
+    frequencies = first.static.frequency if swept and first.static is not None else carriers
+    where = "; return loss of the worst port" if swept else ", at the carriers of the design"
     figure, panels = new_figure(
         first.title,
-        f"settled states at {format_quantity(first.temperature, 'degC', 12)}, at the carriers of the design;"
-        " hatched: outside a limit",
+        f"settled states at {format_quantity(first.temperature, 'degC', 12)}{where}; hatched: outside a limit",
         2,
         2,
         height=2.4,
         sharex="all",
     )
-    scale, unit = axis_scale("Hz", carriers)
+    scale, unit = axis_scale("Hz", frequencies)
     by_name = {limit.metric: limit for limit in limits}
     for axes, metric in zip(panels.ravel(), _SHOWN, strict=True):
         lines = []
         for place, cycle in enumerate(cycles):
-            values = [_value(cycle, metric, float(carrier)) for carrier in carriers]
-            lines.append(draw_series(axes, place, carriers * scale, np.array(values), cycle.driver, markevery=1))
-        _frame_frequencies(axes, carriers * scale)
+            if swept and cycle.static is not None:
+                values = cycle.static.figures()[metric].min(axis=1)
+                lines.append(draw_series(axes, place, frequencies * scale, values, cycle.driver))
+            else:
+                values = np.array([_value(cycle, metric, float(carrier)) for carrier in carriers])
+                lines.append(draw_series(axes, place, carriers * scale, values, cycle.driver, markevery=1))
+        _frame_frequencies(axes, frequencies * scale)
         axes.margins(y=0.25)
         axes.set_title(METRICS[metric].title)
         name_axis(axes, "y", metric.replace("_", " "), "dB")
@@ -67,6 +75,54 @@ def static_figure(cycles: Sequence[Cycle], limits: Sequence[Limit]) -> Figure:
     for axes in panels[-1]:
         name_axis(axes, "x", "frequency", unit)
     return figure
+
+
+@drawn
+def bias_figure(title: str, sweep: BiasSweep) -> Figure:
+    """Draw the switch as an attenuator that its holding current sets.
+
+    Parameters
+    ----------
+    title : str
+        Of the design.
+    sweep : BiasSweep
+        At one temperature.
+
+    Returns
+    -------
+    Figure
+        Attenuation, and charge of each junction, over the holding current.
+    """
+    groups = [("attenuation", "dB", dict(zip(_names(sweep), sweep.attenuation.T, strict=True)))]
+    if sweep.charge:
+        groups.append(("junction charge", "C", dict(sweep.charge)))
+    figure, panels = new_figure(
+        title,
+        f"settled states over the holding current, at {format_quantity(sweep.temperature, 'degC', 12)}",
+        len(groups),
+        height=2.6,
+        sharex="all",
+    )
+    steep = bool(sweep.current.min() > 0.0 and sweep.current.max() > 10.0 * sweep.current.min())
+    across, unit = axis_scale("A", float(sweep.current.min())) if steep else axis_scale("A", sweep.current)
+    for axes, (name, symbol, curves) in zip(panels[:, 0], groups, strict=True):
+        scale, label = axis_scale(symbol, *curves.values())
+        lines = [
+            draw_series(axes, place, sweep.current * across, values * scale, key, markevery=1)
+            for place, (key, values) in enumerate(curves.items())
+        ]
+        if steep:
+            axes.set_xscale("log")
+            axes.xaxis.set_major_formatter(lambda value, _: f"{value:g}")
+            axes.xaxis.set_minor_formatter(lambda _value, _place: "")
+        name_axis(axes, "y", name, label)
+        label_lines(axes, lines)
+    name_axis(panels[-1, 0], "x", "holding current", unit)
+    return figure
+
+
+def _names(sweep: BiasSweep) -> list[str]:
+    return [format_quantity(carrier, "Hz", 12) for carrier in sweep.carriers]
 
 
 def shade_limit(axes: Axes, low: float | None, high: float | None, side: str = "y") -> None:

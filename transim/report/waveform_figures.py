@@ -165,7 +165,8 @@ def _mark_times(linear: Axes, level: Axes, cycle: Cycle, edge: str, analysis: st
             continue
         for axes, y in ((linear, height), (level, 20.0 * math.log10(height))):
             axes.plot(
-                [value * times], [y], "o", color="black", markerfacecolor="white", markersize=5.5, zorder=5, label="_mark"
+                [value * times], [y], "o", color="black", markerfacecolor="white", markersize=5.5, zorder=5,
+                label="_mark",
             )
         # beside the curve: above it where it falls from the left, below it where it rises
         left = value > 0.6 * right or (edge == "off" and share < 0.5 and value > 0.25 * right)

@@ -171,7 +171,7 @@ def small_signal_warnings(stress: RfStress, carrier: float) -> tuple[str, ...]:
         if worst is not None and worst.voltage - worst.reverse > _FORWARD:
             found.append(
                 f"at {level} the RF peak across {worst.junction}, {format_quantity(worst.voltage, 'V')}, is more than "
-                f"{format_quantity(_FORWARD, 'V')} above its reverse bias of {format_quantity(worst.reverse, 'V')} while "
-                f"RF is {state}: it is not held off by peak; whether it conducts, --analysis carrier tells"
+                f"{format_quantity(_FORWARD, 'V')} above its reverse bias of {format_quantity(worst.reverse, 'V')} "
+                f"while RF is {state}: it is not held off by peak; whether it conducts, --analysis carrier tells"
             )
     return tuple(found)
