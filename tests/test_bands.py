@@ -4,6 +4,7 @@ Outside references: the series capacitor between matched loads, |S21| = 1/sqrt(1
 theory of the ideal series inductor, |S21| = 1/sqrt(1 + (w L/(2 Z0))^2); interval arithmetic by brute force.
 """
 
+import itertools
 import math
 
 import numpy as np
@@ -112,7 +113,7 @@ def test_bands_agree_with_a_fine_grid(pairs):
         inside |= (axis >= np.log(band.low)) & (axis <= np.log(band.high))
     clear = np.abs(margin) > 1e-6
     assert np.array_equal(inside[clear], margin[clear] > 0.0)
-    assert all(first.high < second.low for first, second in zip(found[:-1], found[1:], strict=True))
+    assert all(first.high < second.low for first, second in itertools.pairwise(found))
 
 
 def test_nothing_passed_is_a_finite_attenuation():

@@ -15,6 +15,7 @@ import pytest
 
 from transim import __version__
 from transim.cli import main
+from transim.commands.console import Console
 from transim.measure.metrics import METRICS
 from transim.parts.catalogue import load_catalogue
 from transim.quantities import parse_quantity
@@ -249,9 +250,11 @@ def test_deck_writes_a_folder_a_driver_and_refuses_a_full_one(call, tmp_path):
     drivers = list(tomllib.loads(Path(PIN).read_text())["driver"])
     written = {str(file.relative_to(out)) for file in out.rglob("*.cir")}
     assert written == set(text.splitlines()[:-1])
+    # the holding current is stepped without a driver
+    written.remove("bias_25degC.cir")
     assert {name.split("/")[0] for name in written} == set(drivers)
     assert {name.split("/", 1)[1] for name in written} == {
-        "static.cir", "video.cir",
+        "static.cir", "sweep.cir", "video.cir",
         *(f"carrier_{f}/carrier_{phase}.cir" for f in ("30MHz", "150MHz") for phase in ("0", "90", "quiet")),
     }  # fmt: skip
     assert call("deck", PIN, "--out", out)[0] == 2
@@ -316,6 +319,12 @@ def test_color_is_added_and_changes_no_letter(call, monkeypatch):
     assert call("parts")[1] == plain
     colored = call("parts", "--color", "always")[1]
     assert re.sub(r"\x1b\[[0-9;]*m", "", colored) == plain
+
+
+def test_verdicts_are_coloured_only_where_colours_are_wanted(capsys):
+    for color, expected in (("always", "gate \x1b[1;31mFAIL\x1b[0m; FAILING\n"), ("never", "gate FAIL; FAILING\n")):
+        Console(color=color).write(["gate FAIL; FAILING"])
+        assert capsys.readouterr().out == expected
 
 
 def test_output_that_nobody_reads_ends_quietly():

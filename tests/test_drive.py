@@ -111,9 +111,9 @@ def test_reasons_when_a_waveform_is_missing():
 
 def test_a_sample_that_is_not_finite_leaves_no_figure():
     bad = wave([0, 120, 1000], [0.0, math.inf, 1.0])
-    record = cycle(
-        drive_current=bad, supply_power=bad, junction_charge={"j1": bad}, junction_reverse={"j1": bad}
-    )
+    junctions = ("junction_charge", "junction_reverse", "junction_current", "junction_power")
+    driver = {"drive_current": bad, "supply_power": bad, "driver_output_power": bad}
+    record = cycle(**driver, **{name: {"j1": bad} for name in junctions})
     for name in METRICS:
         if name.startswith(("driver_", "junction_")):
             assert note(record, name) == "the sample at 120 ns is not a finite number"

@@ -26,7 +26,8 @@ NAMES = """
     on_time off_time on_delay off_delay rise_time fall_time on_settling off_settling overshoot phase_settling
     video_peak video_peak_on video_peak_off video_swing video_area video_energy video_width video_inband
     driver_source_peak driver_sink_peak driver_charge_on driver_charge_off driver_power
-    junction_charge junction_reverse insertion_loss isolation return_loss_on return_loss_off
+    junction_charge junction_reverse junction_current_peak supply_current_peak
+    junction_dissipation driver_dissipation highest_rate insertion_loss isolation return_loss_on return_loss_off
 """
 
 values = st.floats(-1e3, 1e3)

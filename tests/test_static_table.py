@@ -23,7 +23,8 @@ def test_without_the_table_there_is_none(tmp_path):
 
 
 def test_every_key_is_read(tmp_path):
-    found = read(tmp_path, '[static]\nfrom = "1 MHz"\nto = "2 GHz"\npoints = 7\nbias_sweep = ["10 uA", "1 mA"]\n').static
+    table = '[static]\nfrom = "1 MHz"\nto = "2 GHz"\npoints = 7\nbias_sweep = ["10 uA", "1 mA"]\n'
+    found = read(tmp_path, table).static
     assert (found.start, found.stop, found.points, found.bias_sweep) == (1e6, 2e9, 7, (1e-5, 1e-3))
 
 
@@ -73,7 +74,7 @@ def test_the_points_that_a_narrow_range_needs_are_enough(tmp_path):
 
 
 def test_the_table_must_be_a_table(tmp_path):
+    file = tmp_path / "heron.toml"
+    file.write_text("static = 3\n" + START, encoding="utf-8")
     with pytest.raises(InvalidDesign, match="a table is wanted here"):
-        file = tmp_path / "heron.toml"
-        file.write_text("static = 3\n" + START, encoding="utf-8")
         read_design(file, catalogue=CATALOGUE)

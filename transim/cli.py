@@ -148,6 +148,7 @@ def _deck(console: Any, design: Path, out: Path, drivers: Sequence[str], force: 
 @click.option("--figures", type=_PATH, metavar="DIR", help="Folder for figures, PNG and SVG; may lie in --out.")
 @click.option("--report", type=_PATH, metavar="FILE.html", help="A page with everything that opens offline.")
 @_force
+@click.option("--beside", metavar="[DRIVER=]FILE", help="A record to compare with, as measure --json wrote it.")
 @_ngspice
 @_common
 def _run(console: Any, design: Path, **options: Any) -> int:
@@ -177,7 +178,7 @@ def _run(console: Any, design: Path, **options: Any) -> int:
 @click.option("--carrier", metavar="FREQUENCY", help="Of the RF; found in the record of a carrier if not given.")
 @click.option("--impedance", metavar="OHMS", help="That leakage is measured across; 50 ohm if not given.")
 @click.option("--period", metavar="TIME", help="From one pulse to the next, where the record has one pulse.")
-@click.option("--passes", type=click.Choice(["high", "low"]), help="Command while RF passes; seen from the RF if not given.")
+@click.option("--passes", type=click.Choice(["high", "low"]), help="Command while RF passes; else as the RF shows.")
 @click.option("--pulse", type=click.IntRange(1), metavar="N", help="Which pulse is measured; else the last whole one.")
 @click.option("--design", "design_file", type=_PATH, metavar="FILE", help="Design with definitions and limits.")
 @_common
@@ -186,6 +187,24 @@ def _measure(console: Any, **options: Any) -> int:
     from transim.commands.measure import MeasureRequest, measure_record
 
     return measure_record(console, MeasureRequest(**options))
+
+
+@_transim.command("fit", short_help="Fit junction parameters to measurements.")
+@_design
+@click.option("--record", "records", metavar="[DRIVER=]FILE", multiple=True, help="As measure --json wrote it.")
+@click.option("--storage", type=_PATH, metavar="FILE", help="Table of currents and storage time.")
+@click.option("--loss", type=_PATH, metavar="FILE", help="Table of forward current and loss of one series junction.")
+@click.option("--isolation", type=_PATH, metavar="FILE", help="Table of frequency, isolation of one series junction.")
+@click.option("--junction", metavar="NAME", help="Which junction of the design, where it has several.")
+@click.option("--parameter", "parameters", metavar="NAME", multiple=True, help="What is fitted; repeatable.")
+@click.option("--figures", type=_PATH, metavar="DIR", help="Folder for a figure of the residuals, PNG and SVG.")
+@_ngspice
+@_common
+def _fit(console: Any, design: Path, **options: Any) -> int:
+    """Fit parameters of a junction of DESIGN to measured records, or to tables of single measurements."""
+    from transim.commands.fit import FitRequest, fit_and_report
+
+    return fit_and_report(console, FitRequest(design, **options))
 
 
 @_transim.command("engine", short_help="Say which ngspice is used, and test it.")

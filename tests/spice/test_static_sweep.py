@@ -52,8 +52,9 @@ STATIC = '[static]\nfrom = "10 MHz"\nto = "1 GHz"\n'
 TRANSISTOR = 'path = "series_bjt"\njunction = "q"\n[junction.q]\npart = "bjt_pair"\n'
 #: A series junction that nothing else is in the way of.
 BARE = (
-    'path = "series_single"\njunction = "d"\ndc_block = "100 uF"\nfeed_inductance = "1 H"\nfeed_capacitance = "0 F"\n'
-    'feed_loss = "1 Tohm"\nreturn_inductance = "1 H"\nreturn_capacitance = "0 F"\nreturn_loss = "1 Tohm"\n[junction.d]\n'
+    'path = "series_single"\njunction = "d"\ndc_block = "100 uF"\n'
+    'feed_inductance = "1 H"\nfeed_capacitance = "0 F"\nfeed_loss = "1 Tohm"\n'
+    'return_inductance = "1 H"\nreturn_capacitance = "0 F"\nreturn_loss = "1 Tohm"\n[junction.d]\n'
 )
 
 
@@ -98,7 +99,8 @@ def test_attenuation_and_charge_of_a_pin_diode_against_its_current(engine, tmp_p
     # White: Q = I tau and 20 log10(1 + R/2Z0) with R = W^2/(mu Q)
     junction = 'part = "pin_lumped"\nlifetime = "10 us"\ntransit_time = "1 ps"\nwidth = "100 um"\ncapacitance = "0 F"\n'
     junction += 'series_resistance = "0 ohm"\nintrinsic_resistance = "100 Mohm"\n'
-    rest = STATIC + 'bias_sweep = ["10 uA", "100 uA", "1 mA", "10 mA"]\n[environment]\ntemperature = ["25 degC", "85 degC"]\n'
+    rest = STATIC + 'bias_sweep = ["10 uA", "100 uA", "1 mA", "10 mA"]\n'
+    rest += '[environment]\ntemperature = ["25 degC", "85 degC"]\n'
     design = read_design(written(tmp_path, BARE + junction, rest))
     sweeps, seconds = run_bias_sweeps(design, engine)
     assert [sweep.temperature for sweep in sweeps] == [25.0, 85.0]
@@ -143,7 +145,8 @@ def saturation(ideality):
 
 def test_charge_of_a_transistor_at_its_operating_point(engine):
     # Gummel-Poon at 27 degC: TF If/qb and TR Ir plus depletion charges, from the junction voltages that ngspice finds
-    card = "is=1e-14 bf=150 br=4 vaf=80 ikf=0.3 rb=10 rc=1 re=0.2 cje=4p vje=.75 mje=.33 cjc=2.5p vjc=.6 mjc=.33 tf=.4n tr=40n"
+    card = "is=1e-14 bf=150 br=4 vaf=80 ikf=0.3 rb=10 rc=1 re=0.2 tf=.4n tr=40n "
+    card += "cje=4p vje=.75 mje=.33 cjc=2.5p vjc=.6 mjc=.33"
     names = ("qbe", "qbc", "vbe", "vbc")
     deck = (
         f"* charge\nIb 0 b DC 1m\nQ1 c b 0 qm\nRc c 0 470\n.model qm NPN({card})\n.options temp=27\n.control\n"
@@ -151,9 +154,7 @@ def test_charge_of_a_transistor_at_its_operating_point(engine):
         f"write charge.raw {' '.join(f'@q1[{name}]' for name in names)}\nend\nquit 0\n.endc\n.end\n"
     )
     plots = engine.run(deck, name="charge", writes_raw=True).plots
-    # ngspice prints a device's voltage as v(@q1[vbe]), its charge bare
-    printed = {name: f"v(@q1[{name}])" if name[0] == "v" else f"@q1[{name}]" for name in names}
-    found = {name: np.array([float(np.real(plot[vector][0])) for plot in plots]) for name, vector in printed.items()}
+    found = {name: np.array([float(np.real(plot[f"@q1[{name}]"][0])) for plot in plots]) for name in names}
     thermal = scipy.constants.k * 300.15 / scipy.constants.e
     forward, reverse = (1e-14 * np.expm1(found[name] / thermal) for name in ("vbe", "vbc"))
     base = 0.5 / (1.0 - found["vbc"] / 80.0) * (1.0 + np.sqrt(1.0 + 4.0 * forward / 0.3))

@@ -83,7 +83,7 @@ def read_channels(table: Table, columns: Columns) -> Channels:
     if isinstance(clock, int):
         time, traces = _even(table, data[-1], traces, clock)
     else:
-        time = np.arange(data.shape[1]) * clock
+        time = np.asarray(np.arange(data.shape[1]) * clock, dtype=np.float64)
     leakage = {name.removeprefix("leakage "): trace for name, trace in traces.items() if name.startswith("leakage ")}
     return Channels(time, traces["command"], traces.get("rf"), leakage)
 

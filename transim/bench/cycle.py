@@ -204,7 +204,8 @@ class Cycle:
         thin : slice or None
             Which cells of them; None: all.
         at_end : bool
-            Whether the on level is that at the end of the on interval, not the most frequent one.
+            Whether the on level is that at the end of the on interval, with what is still to come where the RF
+            is still approaching it, not the most frequent one.
 
         Returns
         -------
@@ -233,8 +234,7 @@ class Cycle:
         size = np.abs(value) if np.iscomplexobj(value) else np.asarray(value, dtype=float)
         levels, at_on = self._levels(size, self.smoothers)
         if at_end:
-            end = min(timing.on_window()[1], float(trace.time[-1]))
-            levels = replace(levels, on=float(np.interp(end, trace.time, size)))
+            levels = replace(levels, on=self._final(size, timing))
         full = levels.on if self.setup.through is None else self.setup.through
         detector = self.setup.detector
         share = detector.ratio(np.array([levels.on, levels.off]), full)
@@ -249,6 +249,19 @@ class Cycle:
         waveform = _whole(waveform, Waveform(trace.time, envelope, "1"))
         return replace(record, envelope=waveform, static_on=on, static_off=complex(share[1]))
 
+    def _final(self, size: Array, timing: Timing) -> float:
+        """Return the on level as the end of the on interval lets one expect it (Aitken's delta-squared)."""
+        trace = self.traces["rf"]
+        begin, end = timing.on_window()
+        end = min(end, float(trace.time[-1]))
+        places = np.array([0.5, 0.75, 1.0]) * (end - begin) + begin
+        first, second, third = np.interp(places, trace.time, size)
+        noise = float(np.interp(end, trace.time, self.smoothers["rf"].sigma))
+        before, last = second - first, third - second
+        if abs(last) <= 3.0 * noise or not 0.0 < last / before < 0.8:
+            return float(third)
+        return float(third + last * last / (before - last))
+
     def _choose(self, edges: tuple[Edge, ...], first: float, last: float) -> None:
         """Choose the judged pulse: from just before its rising edge, or the begin, to the next rising edge."""
         rising = [edge for edge in edges if edge.rising]
@@ -259,7 +272,7 @@ class Cycle:
         closed = [k for k, edge in enumerate(rising, 1) if any(e.instant > edge.instant for e in edges if not e.rising)]
         self.pulse = self.setup.pulse or (closed[-1] if closed else self.pulses)
         if not 1 <= self.pulse <= self.pulses:
-            raise MeasurementError(f"the record holds {self.pulses} pulses of the command, there is no pulse {self.pulse}")
+            raise MeasurementError(f"there is no pulse {self.pulse}: the record holds {self.pulses} of the command")
         self._start, self._stop = first, last
         if not rising:
             return

@@ -152,9 +152,8 @@ def estimate(unknowns: Sequence[Unknown], residuals: Residuals, *, known_noise: 
     start = np.clip(start, lows + 1e-6, highs - 1e-6)
     first = slopes(start)
     if first.shape[0] <= len(names):
-        raise MeasurementError(f"{first.shape[0]} data cannot determine {', '.join(names)}; at least one more is needed")
-    if len(names) == 1 or np.all(np.isfinite(first)):
-        _refuse_blind(names, first)
+        raise MeasurementError(f"{first.shape[0]} data cannot determine {', '.join(names)}; more are needed")
+    _refuse_blind(names, first)
     found = least_squares(rest, start, jac=slopes, bounds=(lows, highs), xtol=1e-4, ftol=1e-5, max_nfev=20)
     jacobian = slopes(found.x)
     free = found.fun.size - len(names)

@@ -10,15 +10,15 @@ import numpy.typing as npt
 
 from transim.bench.measured import Measured
 from transim.circuit.timeline import timeline_of
-from transim.design.frozen import FrozenMapping
 from transim.design.model import Design, Driver
+from transim.design.parameters import changed_design
 from transim.engine.ngspice import Engine
 from transim.errors import MeasurementError, RecordError
 from transim.measure.definitions import Timing
 from transim.measure.waveform import Waveform
 from transim.study.simulate import simulate
 
-__all__ = ["Comparison", "compare_records", "with_values"]
+__all__ = ["Comparison", "compare_records"]
 
 Array = npt.NDArray[np.float64]
 
@@ -42,34 +42,6 @@ class Comparison:
 
     measured: Measured
     driver: Driver
-
-
-def with_values(design: Design, junction: str, values: Mapping[str, float]) -> Design:
-    """Return a design with other values of a junction.
-
-    Parameters
-    ----------
-    design : Design
-        The design.
-    junction : str
-        Name of its table.
-    values : mapping of str to float
-        Values that change.
-
-    Returns
-    -------
-    Design
-        A copy; what was not named is unchanged.
-    """
-    slots = {
-        slot: one.model_copy(update={"values": FrozenMapping({**one.values, **values})})
-        if one.name == junction
-        else one
-        for slot, one in design.switch.junctions.items()
-    }
-    return design.model_copy(
-        update={"switch": design.switch.model_copy(update={"junctions": FrozenMapping(slots)})}
-    )
 
 
 def compare_records(
@@ -105,8 +77,9 @@ def compare_records(
     def compare(values: Mapping[str, float]) -> list[tuple[Array, Array]]:
         results = []
         for one, (own, carrier) in zip(comparisons, cases, strict=True):
-            changed = with_values(own, junction, values)
-            case = simulate(changed, one.driver, own.environment.temperature[0], engine, ("envelope",))
+            changed = changed_design(own, {f"junction.{junction}.{name}": value for name, value in values.items()})
+            temperature = own.environment.temperature[0]
+            case = simulate(changed, one.driver, temperature, engine, ("envelope",), checks="start")
             timing = timeline_of(changed).timing(bool(own.switch.path.passes))
             envelope = case.envelopes["envelope", carrier].magnitude()
             results.append(_difference(one.measured, envelope, timing))

@@ -101,9 +101,9 @@ def _correlation(rows: Array, sigma: float, span: float) -> int:
     alive = power > (_FLOOR * span) ** 2
     if not alive.any():
         return 1
-    quiet = rest[alive][np.argsort(power[alive])[: max(4, _BLOCKS // 4)]]
-    energy = (quiet**2).sum()
+    quiet: Array = rest[alive][np.argsort(power[alive])[: max(4, _BLOCKS // 4)]]
+    energy = float((quiet**2).sum())
     for lag in range(1, min(33, count // 512 + 1)):
-        if (quiet[:, lag:] * quiet[:, :-lag]).sum() < 0.2 * energy:
-            return lag
-    return max(1, min(32, count // 512))
+        if float((quiet[:, lag:] * quiet[:, :-lag]).sum()) < 0.2 * energy:
+            return int(lag)
+    return int(max(1, min(32, count // 512)))

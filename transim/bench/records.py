@@ -1,4 +1,4 @@
-"""Tables of numbers as oscilloscopes and analysers write them: separators, headers and units are found, not asked for."""
+"""Tables of numbers as oscilloscopes write them: separators, headers and units are found, not asked for."""
 
 from __future__ import annotations
 
@@ -120,7 +120,8 @@ class Table:
             raise self._bad_cell(indices) from None
         if not np.all(np.isfinite(data)):
             raise self._bad_cell(indices)
-        return np.ascontiguousarray(data.T) * np.array([[self.headings[k].scale] for k in indices])
+        scale = np.array([[self.headings[k].scale] for k in indices])
+        return np.asarray(np.ascontiguousarray(data.T) * scale, dtype=np.float64)
 
     def header_interval(self) -> float | None:
         """Return the sample interval that the header states.
@@ -169,7 +170,8 @@ class Table:
             for k in indices:
                 text = cells[k] if k < len(cells) else ""
                 if not is_number(text, self.decimal):
-                    found = f"found {text}" if text else "found an empty cell" if k < len(cells) else "the line is short"
+                    short = "found an empty cell" if k < len(cells) else "the line is short"
+                    found = f"found {text}" if text else short
                     return self.refuse(
                         f"column {self.names[k]}: a finite number is wanted, {found}; correct or remove the line",
                         line=number,

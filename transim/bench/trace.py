@@ -9,6 +9,7 @@ weights are fixed once, so that the smooth trace is linear in the samples and no
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -19,7 +20,8 @@ from transim.bench.resolution import piece_lengths
 __all__ = ["Smoother", "Trace", "gather"]
 
 Array = npt.NDArray[np.float64]
-Samples = npt.NDArray[np.float64] | npt.NDArray[np.complex128]
+#: Real or complex.
+Samples = npt.NDArray[Any]
 
 #: Cells in a piece, and half the neighbourhood as a share of it.
 _CELLS = 32

@@ -14,7 +14,8 @@ sampling
     A third of what changes when every second cell is left out: the error of straight lines between samples goes with
     the square of their distance. For a carrier, besides, what an average over one more period changes.
 level
-    What changes when the level at the end of the on interval is taken for the on level.
+    What changes when the on level is taken from the end of the on interval, extended to where the RF would settle if it
+    went on approaching its level exponentially.
 step of the converter
     Where the noise is too small against it to be averaged, the repeated traces are shifted by up to half a step, anew
     at every second step.
@@ -23,7 +24,7 @@ step of the converter
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -100,14 +101,14 @@ def measure_cycle(cycle: Cycle, *, replicates: int = REPLICATES, seed: int = 181
 def _estimate(
     name: str,
     figure: Figure,
-    repeated: list[Mapping[str, float]],
-    variants: Mapping[str, list[Mapping[str, float]]],
+    repeated: Sequence[Mapping[str, float]],
+    variants: Mapping[str, Sequence[Mapping[str, float]]],
 ) -> Estimate:
     if figure.value is None:
         return Estimate(figure, None, {})
     found = np.array([values[name] for values in repeated if name in values])
     if found.size < _REPEATABLE * len(repeated):
-        note = f"lost in the noise: it exists in {found.size} of {len(repeated)} repetitions with noise like the record's"
+        note = f"lost in the noise: found in {found.size} of {len(repeated)} repetitions with noise like the record's"
         return Estimate(Figure(None, figure.unit, note), None, {})
     low, middle, high = np.quantile(found, (0.025, 0.5, 0.975)) if found.size else (figure.value,) * 3
     noise = float(high - low) / 4.0 if found.size >= _SURE * len(repeated) else float(np.ptp(found)) / 2.0
@@ -119,7 +120,9 @@ def _estimate(
     return Estimate(figure, math.sqrt(sum(part * part for part in parts.values())), parts)
 
 
-def _values(cycle: Cycle, smooth: Mapping[str, Samples], *, thin: slice | None = None, at_end: bool = False) -> dict[str, float]:
+def _values(
+    cycle: Cycle, smooth: Mapping[str, Samples], *, thin: slice | None = None, at_end: bool = False
+) -> dict[str, float]:
     try:
         figures = extract(cycle.record(smooth, thin=thin, at_end=at_end))
     except MeasurementError:

@@ -192,7 +192,8 @@ def _sweeps(design: Design) -> Iterator[str]:
     yield f"  sweep     both control states from {ends[0]} to {ends[1]}, {static.points} points a decade"
     if static.bias_sweep:
         currents = ", ".join(format_quantity(value, "A", 12) for value in static.bias_sweep)
-        yield from wrap(f"  bias_*    once a temperature, without a driver: holding currents of {currents}", "", " " * 12)
+        sentence = f"bias_*    once a temperature, without a driver: holding currents of {currents}"
+        yield from wrap(sentence, "  ", " " * 10)
 
 
 def _times(count: int, noun: str) -> str:

@@ -14,6 +14,8 @@ from transim.report.output import write_file
 from transim.report.places import Places
 
 if TYPE_CHECKING:
+    from transim.bench.measured import Measured
+    from transim.design.model import Design
     from transim.study.run import Outcome
 
 __all__ = ["EXIT", "RunRequest", "run_and_report"]
@@ -44,6 +46,8 @@ class RunRequest:
         File for the report page; may lie in `out`.
     force : bool
         Whether results of an earlier run in it are replaced.
+    beside : str or None
+        A measured record that the run is held against: ``DRIVER=FILE`` or ``FILE``.
     """
 
     design_file: Path
@@ -54,6 +58,7 @@ class RunRequest:
     figures: Path | None = None
     report: Path | None = None
     force: bool = False
+    beside: str | None = None
 
 
 def run_and_report(console: Console, request: RunRequest) -> int:
@@ -75,6 +80,8 @@ def run_and_report(console: Console, request: RunRequest) -> int:
     ------
     DesignError, NetlistError
         If the design cannot be used.
+    RecordError
+        If the record cannot be held against it.
     OutputError
         If a folder is not empty or cannot be written, or what draws the page is not installed.
     EngineError
@@ -92,6 +99,7 @@ def run_and_report(console: Console, request: RunRequest) -> int:
 
     design = read_design(request.design_file)
     choose_drivers(design, request.drivers)
+    record = None if request.beside is None else _record(request.beside, design)
     engine = find_engine(request.ngspice)
     places = Places(request.out, request.figures, request.report, force=request.force)
     places.check()
@@ -101,12 +109,36 @@ def run_and_report(console: Console, request: RunRequest) -> int:
                 design, engine, drivers=request.drivers, analysis=request.analysis, progress=progress
             )
         document = run_document(outcome, time.perf_counter() - started)
+        extra = [] if record is None else _beside(places, outcome, record, document)
         _write(places, outcome, document)
     blocks = (head_lines, metric_tables, rating_tables, settled_lines, caution_lines, verdict_lines)
     texts = [lines for block in blocks if (lines := block(outcome))]
+    texts[-1:-1] = [extra] if extra else []
     console.write([line for lines in texts for line in (*lines, "")][:-1])
     console.document(document)
     return EXIT[outcome.verdict]
+
+
+def _record(entry: str, design: Design) -> tuple[Measured, str | None]:
+    from transim.report.beside import read_beside
+
+    return read_beside(entry, design)
+
+
+def _beside(
+    places: Places, outcome: Outcome, record: tuple[Measured, str | None], document: dict[str, Any]
+) -> list[str]:
+    """Hold the run against a record: add to the document, write overlays, return lines."""
+    from transim.report.beside import beside_document, beside_lines, hold_beside, write_overlays
+
+    measured, driver = record
+    besides = hold_beside(outcome, measured, driver)
+    document["beside"] = beside_document(measured, besides)
+    if places.results is not None:
+        write_overlays(places.results, besides, figures=False)
+    if places.figures is not None:
+        write_overlays(places.figures, besides, figures=True)
+    return beside_lines(measured, besides)
 
 
 def _write(places: Places, outcome: Outcome, document: Mapping[str, Any]) -> None:

@@ -169,7 +169,9 @@ def _listed(faults: Faults, path: KeyPath, raw: Mapping[str, object], quantity: 
     listed = raw["values"]
     for key in raw:
         if key != "values" and key in _KEYS:
-            faults.adopt((*path, key), DesignError("values are listed, so that there is no range; remove one of the two"))
+            faults.adopt(
+                (*path, key), DesignError("values are listed, so that there is no range; remove one of the two")
+            )
     if not isinstance(listed, list) or not listed:
         faults.adopt(
             (*path, "values"),

@@ -160,7 +160,9 @@ def read_tune(faults: Faults, raw: object, design: Design) -> Tune | None:
     axes = _axes(faults, "tune", table, design, (1, 6), "E24")
     drivers = _drivers(faults, ("tune", "driver"), table, design)
     if len(drivers) > 1:
-        faults.adopt(("tune", "driver"), DesignError("one driver is tuned at a time", expected="the name of one driver"))
+        faults.adopt(
+            ("tune", "driver"), DesignError("one driver is tuned at a time", expected="the name of one driver")
+        )
     goal = _goal(faults, table.get("goal", "largest margin"))
     runs = faults.value(("tune", "runs"), table["runs"], Count(1, 100_000)) if "runs" in table else None
     seed = faults.value(("tune", "seed"), table.get("seed", 1), Count(0, 2**31 - 1))

@@ -115,33 +115,17 @@ def _ends(
     """Return the two ends, from a range or from a tolerance."""
     unit = quantity.unit
     if "tolerance" not in raw:
-        found = {}
-        for key in ("from", "to"):
-            if key not in raw:
-                faults.missing((*path, key), f"{quantity.expected}, or a tolerance in place of from and to")
-            else:
-                found[key] = faults.value((*path, key), raw[key], quantity)
-        low, high = found.get("from"), found.get("to")
-        if low is None or high is None:
-            return None
-        if high <= low:
-            faults.adopt(
-                (*path, "to"),
-                DesignError(
-                    "the range is empty",
-                    expected=f"more than {format_quantity(low, unit)}",
-                    found=format_quantity(high, unit),
-                ),
-            )
-            return None
-        return low, high
+        return _range(faults, path, raw, quantity)
     place = (*path, "tolerance")
     for key in ("from", "to"):
         if key in raw:
-            faults.adopt((*path, key), DesignError("a tolerance is given, so that there is no range; remove one of the two"))
+            faults.adopt(
+                (*path, key), DesignError("a tolerance is given, so that there is no range; remove one of the two")
+            )
     if nominal is None:
         faults.adopt(
-            place, DesignError("the design has several values of this parameter", expected="from and to, without tolerance")
+            place,
+            DesignError("the design has several values of this parameter", expected="from and to, without tolerance"),
         )
         return None
     width = _width(faults, place, raw["tolerance"], unit, nominal)
@@ -151,6 +135,32 @@ def _ends(
     for end in (low, high):
         if faults.value(place, end if unit == "1" else format_quantity(end, unit, 12), quantity) is None:
             return None
+    return low, high
+
+
+def _range(
+    faults: Faults, path: KeyPath, raw: Mapping[str, object], quantity: Quantity
+) -> tuple[float, float] | None:
+    unit = quantity.unit
+    found = {}
+    for key in ("from", "to"):
+        if key not in raw:
+            faults.missing((*path, key), f"{quantity.expected}, or a tolerance in place of from and to")
+        else:
+            found[key] = faults.value((*path, key), raw[key], quantity)
+    low, high = found.get("from"), found.get("to")
+    if low is None or high is None:
+        return None
+    if high <= low:
+        faults.adopt(
+            (*path, "to"),
+            DesignError(
+                "the range is empty",
+                expected=f"more than {format_quantity(low, unit)}",
+                found=format_quantity(high, unit),
+            ),
+        )
+        return None
     return low, high
 
 
@@ -164,7 +174,10 @@ def _width(faults: Faults, path: KeyPath, raw: object, unit: str, nominal: float
         return width
     if unit in _LEVELS:
         faults.adopt(
-            path, DesignError(f"a share of a value in {unit} says nothing", expected=f"a tolerance in {unit}", found=shown(raw))
+            path,
+            DesignError(
+                f"a share of a value in {unit} says nothing", expected=f"a tolerance in {unit}", found=shown(raw)
+            ),
         )
         return None
     share = float(percent["number"]) / 100.0

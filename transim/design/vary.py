@@ -46,7 +46,9 @@ def check_studies(faults: Faults, document: Mapping[str, object], design: Design
             read(faults, document[kind], design)
 
 
-def study_of(design: Design, kind: type[S], varied: Sequence[str] = (), settings: Mapping[str, object] | None = None) -> S:
+def study_of(
+    design: Design, kind: type[S], varied: Sequence[str] = (), settings: Mapping[str, object] | None = None
+) -> S:
     """Return a study of a design: the table of its file, with what a command line changes.
 
     Parameters
@@ -84,7 +86,9 @@ def study_of(design: Design, kind: type[S], varied: Sequence[str] = (), settings
             if not what:
                 faults.adopt(
                     (name, "vary"),
-                    DesignError("--vary needs a parameter and its values", expected=_EXAMPLES[name], found=f'"{entry}"'),
+                    DesignError(
+                        "--vary needs a parameter and its values", expected=_EXAMPLES[name], found=f'"{entry}"'
+                    ),
                 )
                 continue
             raw["vary"][parameter] = _entry(name, what, known.get(parameter, "1") == "1")

@@ -58,7 +58,8 @@ def usable_bands(sweep: StaticSweep, limits: Sequence[Limit]) -> tuple[Band, ...
         if limit.metric not in figures:
             continue
         values = figures[limit.metric]
-        margins = [sign * (values - bound) for sign, bound in ((1.0, limit.min), (-1.0, limit.max)) if bound is not None]
+        bounds = ((1.0, limit.min), (-1.0, limit.max))
+        margins = [sign * (values - bound) for sign, bound in bounds if bound is not None]
         for margin in np.hstack(margins).T:
             held = _held(axis, margin, limit.metric)
             bands = held if bands is None else _common(bands, held)

@@ -83,4 +83,7 @@ def kept_power(record: Record) -> Waveform:
     if record.driver_output_power is None:
         raise MeasurementError("no driver output power in this record")
     supplied, out = record.supply_power, record.driver_output_power
-    return Waveform(supplied.time, supplied.value - np.interp(supplied.time, out.time, out.value), "W")
+    # a sample that is not finite stays one, and is reported where it is used
+    with np.errstate(invalid="ignore"):
+        kept = supplied.value - np.interp(supplied.time, out.time, out.value)
+    return Waveform(supplied.time, kept, "W")

@@ -56,20 +56,23 @@ def level_isolation(record: Record) -> float:
     analysis="carrier",
 )
 def on_compression(record: Record) -> float:
-    """Return by how much the loss at the real level exceeds that of the static on state [dB]."""
+    """Return by how much the loss at the real level exceeds that of the static on state [dB].
+
+    It is taken at the end of the on interval: what the path then lacks of settling is part of it at any level.
+    """
     return level_loss(record) - _decibels(abs(static_on(record)))
 
 
 @metric("bias_shift_on", unit="V", title="Mean bias moved by the RF, RF on", analysis="carrier")
 def bias_shift_on(record: Record) -> float:
-    """Return the change of the mean voltage at the bias entry by the RF, before RF is switched off [V]."""
+    """Return the change of the mean voltage at the bias entry by the RF, at the end of the on interval [V]."""
     large = _large(record)
     return large.bias_shift_high if record.biased_passes else large.bias_shift_low
 
 
 @metric("bias_shift_off", unit="V", title="Mean bias moved by the RF, RF off", analysis="carrier")
 def bias_shift_off(record: Record) -> float:
-    """Return the change of the mean voltage at the bias entry by the RF, before RF is switched on [V]."""
+    """Return the change of the mean voltage at the bias entry by the RF, at the end of the off interval [V]."""
     large = _large(record)
     return large.bias_shift_low if record.biased_passes else large.bias_shift_high
 

@@ -20,7 +20,7 @@ __all__ = ["CHARGE", "RateBound", "RateStudy", "highest_rate", "rate_bound", "ra
 #: Share of its settled value within which a power or charge has settled.
 _SETTLED = 0.02
 #: The reason where a mean is rated, and powers and charges no longer settle at higher rates.
-CHARGE = "charge settling, beyond which rated means are not known"
+CHARGE = "stored_charge"
 
 
 @dataclass(frozen=True)

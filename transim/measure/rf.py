@@ -71,8 +71,8 @@ class LargeSignal:
     level : float
         Available power of the source [dBm].
     bias_shift_low, bias_shift_high : float
-        Change of the mean voltage at the bias entry by the RF, before the rising and before the falling edge of the
-        command [V].
+        Change of the mean voltage at the bias entry by the RF, at the end of the command's low and of its high
+        interval [V].
     junction_power : mapping of str to Waveform
         Power into each junction, mean over one carrier period [W].
     """

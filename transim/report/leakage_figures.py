@@ -11,7 +11,7 @@ import numpy.typing as npt
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
 from transim.report.cycle import Cycle, Trace, edge_span, lead_in
-from transim.report.style import axis_scale, draw_series, drawn, label_lines, name_axis, new_figure
+from transim.report.style import axis_scale, draw_series, drawn, label_lines, log_axis, name_axis, new_figure
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -127,19 +127,16 @@ def spectrum_figure(cycle: Cycle) -> Figure:
         height=3.6,
     )
     axes = panels[0, 0]
-    scale, unit = axis_scale("Hz", carriers[-1])
     lines, highest = [], -math.inf
     for place, port in enumerate(cycle.ports):
         frequency, power = _band_power(cycle, port, low, high)
-        lines.append(draw_series(axes, place, frequency * scale, power, port.name))
+        lines.append(draw_series(axes, place, frequency, power, port.name))
         highest = max(highest, float(power.max()))
-    axes.set_xscale("log")
-    axes.xaxis.set_major_formatter(lambda value, _: f"{value:g}")
-    axes.xaxis.set_minor_formatter(lambda _value, _place: "")
-    axes.set_xlim(low * scale, high * scale)
+    log_axis(axes, "x", "Hz")
+    axes.set_xlim(low, high)
     axes.set_ylim(highest - _DEPTH, highest + 6.0)
-    _mark_carriers(axes, cycle, carriers, scale)
-    name_axis(axes, "x", "frequency", unit)
+    _mark_carriers(axes, cycle, carriers)
+    name_axis(axes, "x", "frequency", "Hz")
     name_axis(axes, "y", f"power in {format_quantity(band, 'Hz')}", "dBm")
     label_lines(axes, lines)
     return figure
@@ -158,18 +155,18 @@ def _band_power(cycle: Cycle, port: Trace, low: float, high: float) -> tuple[Arr
     return frequency, 10.0 * np.log10(np.mean(10.0 ** (level / 10.0), axis=1))
 
 
-def _mark_carriers(axes: Axes, cycle: Cycle, carriers: list[float], scale: float) -> None:
+def _mark_carriers(axes: Axes, cycle: Cycle, carriers: list[float]) -> None:
     for number, carrier in enumerate(carriers):
-        axes.axvline(carrier * scale, color="black", linewidth=0.8, linestyle=(0, (1, 2)), label="_carrier")
+        axes.axvline(carrier, color="black", linewidth=0.8, linestyle=(0, (1, 2)), label="_carrier")
         found = [result for result in cycle.results if result.carrier == carrier]
         value = found[0].figures["video_inband"].value if found else None
         text = format_quantity(carrier, "Hz", 12)
         if value is not None:
-            axes.plot([carrier * scale], [value], "o", color="black", markerfacecolor="white", label="_inband")
+            axes.plot([carrier], [value], "o", color="black", markerfacecolor="white", label="_inband")
             text += f"\n{format_quantity(value, 'dBm')}"
         axes.annotate(
             text,
-            (carrier * scale, 0.97 - 0.13 * (number % 4)),
+            (carrier, 0.97 - 0.13 * (number % 4)),
             xycoords=("data", "axes fraction"),
             xytext=(-4, 0),
             textcoords="offset points",

@@ -154,7 +154,7 @@ def embed_panels(panels: Sequence[Panel], cycles: Sequence[Cycle], code: str) ->
     swept = next((cycle.static for cycle in cycles if cycle.static is not None), None)
     if swept is not None:
         ends = (float(swept.frequency[0]), float(swept.frequency[-1]))
-        axes["frequency"] = _Axis("frequency", *axis_scale("Hz", ends[1]), ends)
+        axes["frequency"] = _Axis("frequency", *axis_scale("Hz", ends[0]), ends)
     plots = []
     for panel in panels:
         plot = _plot(panel, cycles, axes[panel.across])
@@ -208,7 +208,7 @@ class _Axis:
 
 
 def _plot(panel: Panel, cycles: Sequence[Cycle], axis: _Axis) -> Any:
-    from bokeh.models import BoxZoomTool, CrosshairTool, PanTool, WheelZoomTool
+    from bokeh.models import BasicTickFormatter, BoxZoomTool, CrosshairTool, PanTool, WheelZoomTool
     from bokeh.plotting import figure
 
     times = axis.scale
@@ -255,6 +255,8 @@ def _plot(panel: Panel, cycles: Sequence[Cycle], axis: _Axis) -> Any:
             fill_color="white",
         )
         marks.tags = ["mark", k]
+    if axis.logarithmic:
+        plot.xaxis.formatter = BasicTickFormatter(use_scientific=False)
     _dress(plot, panel)
     return plot
 

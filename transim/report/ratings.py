@@ -7,7 +7,7 @@ from collections.abc import Iterable, Iterator, Mapping, Sequence
 from typing import Any
 
 from transim.measure.limits import Judgement
-from transim.measure.rate import RateStudy
+from transim.measure.rate import CHARGE, RateStudy
 from transim.quantities import format_quantity
 from transim.report.layout import Column, wrap
 from transim.report.tables import limit_text, side_by_side, verdict_word
@@ -204,4 +204,7 @@ def _highest(driver: str, results: Sequence[Result]) -> str:
     bound = min((study.highest for study in studies if study.highest is not None), key=lambda one: one.rate)
     held = format_quantity(min(study.held for study in studies), "Hz")
     rate = format_quantity(bound.rate, "Hz")
-    return f"{driver}: highest rate {rate}, set by {bound.reason}; powers and stored charge settle up to {held}"
+    more = f"powers are known up to {held}"
+    if bound.reason == CHARGE:
+        more = "above it charge does not settle and a rated mean is not known; a run at a shorter period tells"
+    return f"{driver}: highest rate {rate}, set by {bound.reason}; {more}"

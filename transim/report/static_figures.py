@@ -13,7 +13,7 @@ from transim.measure.metrics import METRICS
 from transim.measure.sweep import BiasSweep
 from transim.quantities import format_quantity
 from transim.report.cycle import Cycle
-from transim.report.style import axis_scale, draw_series, drawn, label_lines, name_axis, new_figure
+from transim.report.style import axis_scale, draw_series, drawn, label_lines, log_axis, name_axis, new_figure
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -54,26 +54,25 @@ def static_figure(cycles: Sequence[Cycle], limits: Sequence[Limit]) -> Figure:
         height=2.4,
         sharex="all",
     )
-    scale, unit = axis_scale("Hz", frequencies)
     by_name = {limit.metric: limit for limit in limits}
     for axes, metric in zip(panels.ravel(), _SHOWN, strict=True):
         lines = []
         for place, cycle in enumerate(cycles):
             if swept and cycle.static is not None:
                 values = cycle.static.figures()[metric].min(axis=1)
-                lines.append(draw_series(axes, place, frequencies * scale, values, cycle.driver))
+                lines.append(draw_series(axes, place, frequencies, values, cycle.driver))
             else:
                 values = np.array([_value(cycle, metric, float(carrier)) for carrier in carriers])
-                lines.append(draw_series(axes, place, carriers * scale, values, cycle.driver, markevery=1))
-        _frame_frequencies(axes, frequencies * scale)
-        axes.margins(y=0.25)
+                lines.append(draw_series(axes, place, carriers, values, cycle.driver, markevery=1))
+        _frame_frequencies(axes, frequencies)
+        axes.margins(y=0.08 if swept else 0.25)
         axes.set_title(METRICS[metric].title)
         name_axis(axes, "y", metric.replace("_", " "), "dB")
         if metric in by_name:
             shade_limit(axes, by_name[metric].min, by_name[metric].max)
         label_lines(axes, lines)
     for axes in panels[-1]:
-        name_axis(axes, "x", "frequency", unit)
+        name_axis(axes, "x", "frequency", "Hz")
     return figure
 
 
@@ -104,7 +103,7 @@ def bias_figure(title: str, sweep: BiasSweep) -> Figure:
         sharex="all",
     )
     steep = bool(sweep.current.min() > 0.0 and sweep.current.max() > 10.0 * sweep.current.min())
-    across, unit = axis_scale("A", float(sweep.current.min())) if steep else axis_scale("A", sweep.current)
+    across, unit = (1.0, "A") if steep else axis_scale("A", sweep.current)
     for axes, (name, symbol, curves) in zip(panels[:, 0], groups, strict=True):
         scale, label = axis_scale(symbol, *curves.values())
         lines = [
@@ -112,9 +111,7 @@ def bias_figure(title: str, sweep: BiasSweep) -> Figure:
             for place, (key, values) in enumerate(curves.items())
         ]
         if steep:
-            axes.set_xscale("log")
-            axes.xaxis.set_major_formatter(lambda value, _: f"{value:g}")
-            axes.xaxis.set_minor_formatter(lambda _value, _place: "")
+            log_axis(axes, "x", "A")
         name_axis(axes, "y", name, label)
         label_lines(axes, lines)
     name_axis(panels[-1, 0], "x", "holding current", unit)
@@ -165,13 +162,11 @@ def _value(cycle: Cycle, metric: str, carrier: float) -> float:
 def _frame_frequencies(axes: Axes, carriers: np.ndarray) -> None:
     low, high = float(carriers.min()), float(carriers.max())
     if high > 4.0 * low:
-        axes.set_xscale("log")
+        log_axis(axes, "x", "Hz")
         axes.set_xlim(low / 1.3, high * 1.3)
     else:
         margin = 0.1 * (high - low) or 0.1 * high
         axes.set_xlim(low - margin, high + margin)
-    if carriers.size <= 8:
-        axes.set_xticks(carriers, [f"{value:g}" for value in carriers])
-    else:
-        axes.xaxis.set_major_formatter(lambda value, _: f"{value:g}")
-    axes.xaxis.set_minor_formatter(lambda _value, _place: "")
+        axes.xaxis.set_major_formatter(lambda value, _: format_quantity(value, "Hz"))
+    if carriers.size <= 6:
+        axes.set_xticks(carriers, [format_quantity(value, "Hz") for value in carriers.tolist()])

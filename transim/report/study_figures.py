@@ -18,6 +18,7 @@ from transim.report.style import (
     draw_series,
     drawn,
     label_lines,
+    log_axis,
     name_axis,
     new_figure,
     short,
@@ -149,7 +150,7 @@ def sweep_figure(title: str, parameter: Quantity, name: str, curves: Sequence[Qu
     across, x_unit = _parameter_scale(parameter.unit, parameter.values)
     up, y_unit = axis_scale(curves[0].unit, *(curve.values[np.isfinite(curve.values)] for curve in curves))
     x = parameter.values * across
-    _space(axes, "x", x)
+    _space(axes, "x", parameter.unit, x)
     lines = [
         draw_series(axes, place, x, curve.values * up, curve.name, markevery=1) for place, curve in enumerate(curves)
     ]
@@ -188,8 +189,8 @@ def sweep_map_figure(title: str, x: Quantity, y: Quantity, z: Quantity, feasible
     up, y_unit = _parameter_scale(y.unit, y.values)
     known = z.values[np.isfinite(z.values)]
     scale, z_unit = axis_scale(z.unit, known)
-    _space(axes, "x", x.values * across)
-    _space(axes, "y", y.values * up)
+    _space(axes, "x", x.unit, x.values * across)
+    _space(axes, "y", y.unit, y.values * up)
     horizontal, vertical = _borders(x.values * across), _borders(y.values * up)
     mesh = axes.pcolormesh(horizontal, vertical, np.ma.masked_invalid(z.values * scale), cmap="cividis_r", zorder=1.0)
     axes.set_xlim(horizontal[0], horizontal[-1])
@@ -253,7 +254,7 @@ def tune_figure(title: str, windows: Sequence[Window]) -> Figure:
     for axes, window in zip(panels[:, 0], windows, strict=True):
         scale, unit = _parameter_scale(window.unit, np.array(window.allowed))
         low, high = (bound * scale for bound in window.allowed)
-        _space(axes, "x", np.array([low, high]))
+        _space(axes, "x", window.unit, np.array([low, high]))
         axes.set_xlim(low, high)
         axes.set_ylim(0.0, 1.0)
         axes.set_yticks([])
@@ -327,17 +328,14 @@ def _steep(values: Array) -> bool:
 
 
 def _parameter_scale(unit: str, values: Array) -> tuple[float, str]:
-    """Choose the prefix of an axis; a logarithmic one has no 0.01 nF, but 10 pF."""
-    return axis_scale(unit, float(np.nanmin(values))) if _steep(values) else axis_scale(unit, values)
+    """Choose the prefix of an axis; on a logarithmic one every tick has its own."""
+    return (1.0, unit) if _steep(values) else axis_scale(unit, values)
 
 
-def _space(axes: Axes, side: str, values: Array) -> None:
+def _space(axes: Axes, side: str, unit: str, values: Array) -> None:
     """Choose a logarithmic axis where the values span more than a decade."""
     if _steep(values):
-        getattr(axes, f"set_{side}scale")("log")
-        axis = axes.xaxis if side == "x" else axes.yaxis
-        axis.set_major_formatter(lambda value, _: f"{value:g}")
-        axis.set_minor_formatter(lambda _value, _place: "")
+        log_axis(axes, side, unit)
 
 
 def _borders(centres: Array) -> Array:

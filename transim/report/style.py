@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any, ParamSpec, TypeVar
 import numpy as np
 import numpy.typing as npt
 
-from transim.quantities import UNITS
+from transim.quantities import UNITS, format_quantity
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -29,6 +29,7 @@ __all__ = [
     "draw_series",
     "drawn",
     "label_lines",
+    "log_axis",
     "name_axis",
     "new_figure",
     "save_figure",
@@ -186,6 +187,24 @@ def axis_scale(unit: str, *values: Array | float) -> tuple[float, str]:
     power = 3 * math.floor(math.log10(largest) / 3.0 + 1e-9)
     power = min(max(power, min(_PREFIXES)), max(_PREFIXES))
     return 10.0**-power, f"{_PREFIXES[power]}{unit}"
+
+
+def log_axis(axes: Axes, side: str, unit: str) -> None:
+    """Make an axis logarithmic, its ticks in engineering notation.
+
+    Parameters
+    ----------
+    axes : Axes
+        A panel.
+    side : {"x", "y"}
+        Which axis.
+    unit : str
+        SI unit that the data are in.
+    """
+    getattr(axes, f"set_{side}scale")("log")
+    axis = axes.xaxis if side == "x" else axes.yaxis
+    axis.set_major_formatter(lambda value, _: format_quantity(float(f"{value:.3g}"), unit))
+    axis.set_minor_formatter(lambda _value, _place: "")
 
 
 def name_axis(axes: Axes, side: str, name: str, unit: str) -> None:

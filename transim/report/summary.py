@@ -13,7 +13,7 @@ from transim.parts.part import Part
 from transim.quantities import format_quantity
 from transim.report.cautions import cautions
 from transim.report.tables import limit_text, verdict_word
-from transim.report.verdicts import closest_sentence, joined_verdict
+from transim.report.verdicts import closest_sentence, counts_sentence, joined_verdict
 from transim.study.run import Outcome
 from transim.study.simulate import Result
 
@@ -29,9 +29,6 @@ __all__ = [
 
 Row = dict[str, Any]
 
-_COUNTED = {"PASS": "met", "FAIL": "missed", "UNDEFINED": "undefined"}
-
-
 def driver_cards(outcome: Outcome) -> list[Row]:
     """Return a card for each driver.
 
@@ -43,18 +40,18 @@ def driver_cards(outcome: Outcome) -> list[Row]:
     Returns
     -------
     list of dict
-        ``name``, ``verdict``, ``counts`` and ``closest``: the limit that is missed most, or has least margin.
+        ``name``, ``verdict`` (empty where nothing is judged), ``counts`` and ``closest``: the limit that is
+        missed most, or has least margin.
     """
     cards = []
     for driver in dict.fromkeys(case.driver for case in outcome.cases):
         results = [result for result in outcome.results if result.driver == driver]
-        words = [verdict_word(result, judgement) for result in results for judgement in result.judgements]
-        counts = ", ".join(f"{text} {words.count(word)}" for word, text in _COUNTED.items() if word in words)
+        judged = any(result.judgements or result.ratings for result in results)
         cards.append(
             {
                 "name": driver,
-                "verdict": joined_verdict(results).upper() if words else "no limits",
-                "counts": f"limits {counts}" if words else "no limits to judge",
+                "verdict": joined_verdict(results).upper() if judged else "",
+                "counts": counts_sentence(results),
                 "closest": closest_sentence(results) or "",
             }
         )
@@ -112,7 +109,7 @@ def figure_tables(outcome: Outcome) -> list[Row]:
         rows = []
         absent: dict[str, list[str]] = {}
         for name, metric in METRICS.items():
-            if any(name not in result.figures for result in group):
+            if not metric.serves(group[0].analysis) or any(name not in result.figures for result in group):
                 continue
             why: dict[str, list[str]] = {}
             for result in group:

@@ -17,6 +17,7 @@ from transim.study.simulate import Result
 
 __all__ = [
     "closest_sentence",
+    "counts_sentence",
     "definition_lines",
     "head_lines",
     "joined_verdict",
@@ -150,10 +151,8 @@ def overall_sentence(outcome: Outcome) -> str:
 
 def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterator[str]:
     judged = _pairs(results)
-    limits = [pair for pair in judged if pair[1].unit is None]
-    ratings = [pair for pair in judged if pair[1].unit is not None]
-    counts = [f"{name} {_counted(pairs)}" for name, pairs in (("limits", limits), ("ratings", ratings)) if pairs]
-    yield from wrap(f"{driver}: {'; '.join([verdict.upper(), *counts])}" if judged else f"{driver}: no limits to judge")
+    counts = counts_sentence(results)
+    yield from wrap(f"{driver}: {verdict.upper()}; {counts}" if judged else f"{driver}: {counts}")
     several = len({result.temperature for result in results}) > 1
     places = {id(result): _place(result, several) for result in results}
     closest = closest_sentence(results)
@@ -177,6 +176,26 @@ def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterato
         found = f"by {format_quantity(max(checks), 'dB', 2)} at most" if max(checks) > _SMALLEST else ""
         found = found or f"by less than {format_quantity(_SMALLEST, 'dB')}"
         yield from wrap(f"check: S differs from ngspice's own .ac at the same biases {found}", "  ")
+
+
+def counts_sentence(results: Sequence[Result]) -> str:
+    """Count how many limits and ratings are met, missed and undefined.
+
+    Parameters
+    ----------
+    results : sequence of Result
+        Of one driver.
+
+    Returns
+    -------
+    str
+        For example ``limits met 3, missed 1; ratings met 4``.
+    """
+    judged = _pairs(results)
+    limits = [pair for pair in judged if pair[1].unit is None]
+    ratings = [pair for pair in judged if pair[1].unit is not None]
+    counts = [f"{name} {_counted(pairs)}" for name, pairs in (("limits", limits), ("ratings", ratings)) if pairs]
+    return "; ".join(counts) or "no limits to judge"
 
 
 def closest_sentence(results: Sequence[Result]) -> str | None:

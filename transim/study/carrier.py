@@ -75,19 +75,20 @@ def run_carrier(case: Case, frequency: float, level: float, quiet: Plot | None =
 def _large_signal(
     case: Case, timeline: Timeline, plots: tuple[Plot, Plot, Plot], frequency: float, level: float
 ) -> LargeSignal:
-    # three periods before each edge of the command: an even mean without the carrier
+    # three periods before each edge: an even mean without the carrier; of the low state at the end of its interval,
+    # as before the first edge the RF's own start-up is still dying away
     span = 3.0 / frequency
-    before_rise = timeline.rising - timeline.edge / 2.0
-    before_fall = timeline.falling - timeline.edge / 2.0
+    offset = case.timeline.lead - timeline.lead
+    end_of_low = case.timeline.stop - offset
+    end_of_high = timeline.falling - timeline.edge / 2.0
     shifts = []
-    for stop in (before_rise, before_fall):
+    for stop in (end_of_low, end_of_high):
         means = [_mean(plot, "v(bias)", stop - span, stop) for plot in plots]
         shifts.append(0.5 * (means[0] + means[1]) - means[2])
     powers = {
         place.instance: _period_mean(plots[0], _junction_power(plots[0], place), 1.0 / frequency)
         for place in case.netlist.junctions
     }
-    offset = case.timeline.lead - timeline.lead
     return LargeSignal(
         level=level,
         bias_shift_low=shifts[0],

@@ -57,7 +57,9 @@ class ClusterPool:
         try:
             self._client = Client(self._address, timeout=_PATIENCE, set_as_default=False)
         except (OSError, TimeoutError, ValueError) as exc:
-            raise StudyError(f"no Dask scheduler answers at {self._address} ({exc}); start one, or leave out --cluster") from exc
+            raise StudyError(
+                f"no Dask scheduler answers at {self._address} ({exc}); start one, or leave out --cluster"
+            ) from exc
         try:
             self._client.wait_for_workers(1, timeout=_PATIENCE)
             versions = set(self._client.run(_version).values())
@@ -67,7 +69,8 @@ class ClusterPool:
         if versions != {__version__}:
             self._client.close()
             raise StudyError(
-                f"the workers have transim {', '.join(sorted(versions))}, and this is {__version__}: results would not be the same"
+                f"the workers have transim {', '.join(sorted(versions))}, and this is {__version__}: results would"
+                " not be the same"
             )
         return self
 
@@ -104,7 +107,9 @@ class ClusterPool:
         arriving = as_completed()
 
         def supply() -> None:
-            threads = sum(worker["nthreads"] for worker in self._client.scheduler_info(n_workers=-1)["workers"].values())
+            threads = sum(
+                worker["nthreads"] for worker in self._client.scheduler_info(n_workers=-1)["workers"].values()
+            )
             while len(keys) < max(2, _AHEAD * threads):
                 try:
                     key, argument = next(source)
@@ -112,9 +117,7 @@ class ClusterPool:
                     return
                 name = f"transim-{self._name}-{key}"
                 keys[name] = key
-                arriving.add(
-                    self._client.submit(_compute, self._function, self._common, argument, key=name, pure=True)
-                )
+                arriving.add(self._client.submit(_compute, self._function, self._common, argument, key=name, pure=True))
 
         supply()
         while keys:

@@ -129,7 +129,7 @@ def draw_corners(tolerances: Sequence[Tolerance]) -> Array:
 def _uniform(trials: int, width: int, seed: int, points: str) -> Array:
     """Return shares of probability, shape (trials, width)."""
     if points == "random":
-        return np.random.Generator(np.random.PCG64(seed)).random((trials, width))
+        return np.asarray(np.random.Generator(np.random.PCG64(seed)).random((trials, width)))
     from scipy.stats import qmc
 
     engine = qmc.Sobol(width, scramble=True, rng=np.random.Generator(np.random.PCG64(seed)))

@@ -188,7 +188,9 @@ class Search:
         if int(np.prod(self.lengths, dtype=float)) <= _WHOLE:
             return [index for index in itertools.product(*map(range, self.lengths)) if index not in self.known]
         everywhere = self._anywhere(20_000)
-        ranked = sorted((index for index, found in self.known.items() if found is not None), key=self._rank, reverse=True)
+        ranked = sorted(
+            (index for index, found in self.known.items() if found is not None), key=self._rank, reverse=True
+        )
         near = []
         for centre in dict.fromkeys([best, *ranked[:4]]):
             steps = self._rng.integers(-3, 4, size=(2000, len(centre)))
@@ -217,7 +219,9 @@ class Search:
         goals = [found.goal for found in sound.values()]
         utilities, distances = [], []
         fit = None
-        if len(sound) > len(self.lengths) + 1 and np.linalg.matrix_rank(places - places.mean(axis=0)) == len(self.lengths):
+        if len(sound) > len(self.lengths) + 1 and np.linalg.matrix_rank(places - places.mean(axis=0)) == len(
+            self.lengths
+        ):
             fit = RBFInterpolator(places, columns, kernel="cubic", degree=1, smoothing=1e-9)
         for first in range(0, len(candidates), _CHUNK):
             chunk = np.array(candidates[first : first + _CHUNK], dtype=float) / scale

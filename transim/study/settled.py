@@ -110,11 +110,10 @@ def _bias_sweep(
     points, first, second = plots[::each], *(netlist.ports[place] for place in netlist.through)
     # the wave at the far port against the one that the source sends
     scale = 2.0 * np.sqrt(first.impedance / second.impedance)
-    s = np.array(
-        [[scale * plots[k * each + 1 + j][f"v({second.node})"][0] for j in range(len(carriers))] for k in range(len(currents))]
-    )
+    waves = [scale * plot[f"v({second.node})"][0] for k, plot in enumerate(plots) if k % each]
+    s = np.array(waves, dtype=complex).reshape(len(currents), len(carriers))
     charge = {
-        probe.junction: np.array([sum(scale * _vector(plot, name) for scale, name in probe.terms) for plot in points])
+        probe.junction: np.array([sum(factor * _vector(plot, name) for factor, name in probe.terms) for plot in points])
         for probe in netlist.probes
         if probe.quantity == "charge"
     }
@@ -123,8 +122,5 @@ def _bias_sweep(
 
 
 def _vector(plot: Plot, name: str) -> float:
-    """Find a vector at an operating point; ngspice prints device quantities with the letter of their kind around."""
-    for known in (name, f"i({name})", f"v({name})"):
-        if known in plot.names:
-            return float(np.real(plot[known][0]))
-    raise RawFileError(f"ngspice did not write {name}")
+    """Return a vector at an operating point."""
+    return float(np.real(plot[name][0]))

@@ -183,9 +183,11 @@ class Store:
         if not self.folder.is_dir():
             raise OutputError(f"{self.folder} is a file, and a folder is wanted for the study")
         if not manifest.exists():
-            strange = [name for name in os.listdir(self.folder) if name not in _OWN and not name.startswith(".")]
+            strange = [file for file in self.folder.iterdir() if file.name not in _OWN and file.name[0] != "."]
             if strange:
-                raise OutputError(f"the folder {self.folder} is not empty and holds no study; name another one with --out")
+                raise OutputError(
+                    f"the folder {self.folder} is not empty and holds no study; name another one with --out"
+                )
             # a study that died before its manifest was written has no points yet
             for name in _OWN:
                 (self.folder / name).unlink(missing_ok=True)

@@ -58,6 +58,8 @@ class Table:
         Each metric in its unit; NaN where it is undefined or the point failed.
     case_good : ndarray of bool, shape (n, c)
         Whether every limit and rating is met in a case.
+    case_margin : ndarray, shape (n, c)
+        Smallest normalised margin of a case; NaN where one is undefined.
     good, failed : ndarray of bool, shape (n,)
         Whether it is met in all cases; whether the point could not be simulated.
     margin : ndarray, shape (n,)
@@ -73,12 +75,15 @@ class Table:
     cases: tuple[CaseLabel, ...]
     figures: Mapping[str, Array]
     case_good: Truth
+    case_margin: Array
     good: Truth
     failed: Truth
     margin: Array
     reasons: tuple[tuple[str, str], ...]
 
-    def write_arrays(self, path: Path, shape: Sequence[int] | None = None, axes: Mapping[str, Array] | None = None) -> None:
+    def write_arrays(
+        self, path: Path, shape: Sequence[int] | None = None, axes: Mapping[str, Array] | None = None
+    ) -> None:
         """Write the arrays to a compressed npz file.
 
         Parameters
@@ -106,6 +111,7 @@ class Table:
             "case.carrier": np.array([case.carrier for case in self.cases]),
             "case.level": np.array([case.level for case in self.cases]),
             "case_good": self.case_good.reshape(*shape, count),
+            "case_margin": self.case_margin.reshape(*shape, count),
             "good": self.good.reshape(shape),
             "failed": self.failed.reshape(shape),
             "margin": self.margin.reshape(shape),
@@ -129,9 +135,17 @@ class Table:
         head = [f"{name} [{unit}]" for name, unit in zip(self.parameters, self.units, strict=True)]
         metrics = [f"{name} [{METRICS[name].unit}]" for name in self.figures]
         labels = ["driver", "temperature [degC]", "carrier [Hz]", "level [dBm]"]
-        writer.writerow(["place", *head, "failed", "all limits met", "smallest margin", *labels, "limits met", *metrics])
+        writer.writerow(
+            ["place", *head, "failed", "all limits met", "smallest margin", *labels, "limits met", *metrics]
+        )
         for n, place in enumerate(self.places):
-            start = [place, *map(_number, self.values[n]), _word(self.failed[n]), _word(self.good[n]), _number(self.margin[n])]
+            start = [
+                place,
+                *map(_number, self.values[n]),
+                _word(self.failed[n]),
+                _word(self.good[n]),
+                _number(self.margin[n]),
+            ]
             if self.failed[n]:
                 writer.writerow(start)
                 continue
@@ -169,6 +183,7 @@ def collect(
     reasons = []
     figures: dict[str, Array] = {}
     case_good = np.zeros((count, 0), dtype=bool)
+    case_margin = np.full((count, 0), np.nan)
     for place, point in points:
         if place not in row:
             continue
@@ -183,8 +198,11 @@ def collect(
             labels = tuple(_label(case, parameters) for case in point.cases)
             figures = {name: np.full((count, len(labels)), np.nan) for name in METRICS}
             case_good = np.zeros((count, len(labels)), dtype=bool)
+            case_margin = np.full((count, len(labels)), np.nan)
         for c, case in enumerate(point.cases):
             case_good[n, c] = case.good
+            own = smallest_margin(Point(point.values, (case,)))
+            case_margin[n, c] = np.nan if own is None else own
             for name, value in case.figures.items():
                 figures[name][n, c] = np.nan if value is None else value
     return Table(
@@ -195,6 +213,7 @@ def collect(
         labels,
         figures,
         case_good,
+        case_margin,
         good,
         failed,
         margin,
