@@ -15,7 +15,7 @@ POINTS = 40
 
 
 def instants(carrier, periods, seed=1):
-    """Steps as ngspice takes them: uneven, at most 1/POINTS of a period."""
+    """Return instants as ngspice takes them: uneven, at most 1/POINTS of a period apart."""
     steps = np.random.default_rng(seed).uniform(0.4, 1.0, 3 * POINTS * periods) / (carrier * POINTS)
     time = np.concatenate([[0.0], np.cumsum(steps)])
     return time[: np.searchsorted(time, periods / carrier)]

@@ -178,7 +178,7 @@ def test_complete_design_is_read_in_si_units(read):
     assert (control.period, control.pulses) == (1e-5, 1)
     assert (design.carrier.frequency, design.carrier.level, design.carrier.impedance) == (
         (3e7, 1.5e8),
-        -10.0,
+        (-10.0,),
         50.0,
     )
     assert design.switch.path.name == "ford"
@@ -564,7 +564,7 @@ def test_values_written_with_units_read_back_exactly(read, lifetime, ideality, f
     design = read(text)
     assert design.switch.junctions["junction"].values == {"lifetime": lifetime, "ideality": ideality}
     assert design.carrier.frequency == tuple(frequency)
-    assert design.carrier.level == level
+    assert design.carrier.level == (level,)
 
 
 @settings(max_examples=40, suppress_health_check=[HealthCheck.function_scoped_fixture])

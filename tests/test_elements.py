@@ -1,7 +1,8 @@
 """The expanded listing read into elements.
 
-Outside reference: the text below is what ngspice 39 itself printed for ``listing expand``, line for line; that it
-still prints so is checked in tests/spice. Multipliers and defaults are those of the ngspice 39 manual, chapters 3 to 8.
+Outside reference: the text below is what ngspice 39 itself printed for ``listing expand`` but for blanks at line ends;
+that it still prints so is checked in tests/spice. Multipliers and defaults are those of the ngspice 39 manual, chapters 3
+to 8.
 """
 
 import numpy as np
@@ -20,20 +21,20 @@ Circuit: * listing
 
 	* listing
 
-     5 : r.xa.r1 p xa.m   3.000000000000000e+03   
-     6 : l.xa.l1 xa.m xa.n 1e-6 ic=0 
-     7 : l.xa.l2 xa.n q 2u 
+     5 : r.xa.r1 p xa.m   3.000000000000000e+03
+     6 : l.xa.l1 xa.m xa.n 1e-6 ic=0
+     7 : l.xa.l2 xa.n q 2u
      8 : k.xa.k1 l.xa.l1 l.xa.l2 0.5
-     9 : c.xa.c1 p q 1p 
+     9 : c.xa.c1 p q 1p
     12 : b.xa.brb p q i= v(p,q) / (   1.0000000000e+03 * (   1.0000000000e+00 + v(p) * v(p) ) ) reciproctc=1 reciprocm=0
     14 : e.xa.ecb xa.cb_int1 0 q p 1
-    15 : c.xa.ccb xa.cb_int1 0 1 
+    15 : c.xa.ccb xa.cb_int1 0 1
     17 : b.xa.bcb p q i= i(e.xa.ecb) * (   1.0000000000e-12 * (   1.0000000000e+00 + v(p) ) ) reciproctc=1
     18 : .model xa:dj d(is=    3.000000000000000e-14     tt=1u)
-    19 : d.xa.d1 p q xa:dj 
+    19 : d.xa.d1 p q xa:dj
     20 : d.xa.d2 p q xa:dj 2
     21 : d.xa.d3 p q xa:dj area=3 m=2 off
-    22 : q.xa.q1 p q 0 xa:qj 
+    22 : q.xa.q1 p q 0 xa:qj
     23 : q.xa.q2 p q 0 0 xa:qj 2
     24 : q.xa.q3 p q 0 xa:qj area=2 m=3
     25 : .model xa:qj npn(is=1e-15 bf=100)

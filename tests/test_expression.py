@@ -140,7 +140,8 @@ def test_partial_derivatives_are_central_differences(text, a, b, i, probe):
 
 @given(a=st.floats(-3.0, 3.0).filter(lambda x: abs(x) > 0.05), n=st.sampled_from([1.0, 2.0, 2.5, 3.0]))
 def test_power_of_a_negative_number_is_that_of_its_magnitude(a, n):
-    for text, law in ((f"v(a)^{n}", lambda x: abs(x) ** n), (f"pwr(v(a),{n})", lambda x: math.copysign(abs(x) ** n, x))):
+    laws = {f"v(a)^{n}": lambda x: abs(x) ** n, f"pwr(v(a),{n})": lambda x: math.copysign(abs(x) ** n, x)}
+    for text, law in laws.items():
         found = evaluate(text, **{"v:a": a})
         assert float(found.value) == pytest.approx(law(a), rel=1e-12)
         slope = (law(a + 1e-6) - law(a - 1e-6)) / 2e-6

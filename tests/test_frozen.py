@@ -1,9 +1,11 @@
 """Frozen solution: S-parameters of linearised networks against closed forms and chain matrices.
 
-Outside references: textbook S-parameters of single elements, chain (ABCD) matrices multiplied by hand in numpy and turned
-into S (D. M. Pozar, Microwave Engineering, 4th edition, 2012, table 4.2), and direct numpy solutions.
-No engine: circuits are listing text, the bias is written here.
+Outside references: textbook S-parameters of single elements, chain (ABCD) matrices multiplied by hand in numpy and
+turned into S (D. M. Pozar, Microwave Engineering, 4th edition, 2012, table 4.2), and direct numpy solutions. No
+engine: circuits are listing text, the bias is written here.
 """
+
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -140,7 +142,7 @@ def test_a_supply_is_ground_for_rf():
 
 
 def test_diode_against_its_equations():
-    """g = IS/(N Vt) exp(v/(N Vt)), C = TT g + CJO (1 - v/VJ)^-M; SPICE, kT/q at 27 degC 25.8649 mV."""
+    """G = IS/(N Vt) exp(v/(N Vt)), C = TT g + CJO (1 - v/VJ)^-M; SPICE, kT/q at 27 degC 25.8649 mV."""
     voltage = np.array([-5.0, 0.2, 0.6, 0.7])
     lines = ["d1 p1 p2 dm", ".model dm d(is=1e-14 n=1.2 tt=5n cjo=1p vj=0.8 m=0.4 fc=0.9)"]
     found = solve(lines, 1e8, vectors={"@d1[vd]": voltage}, time=np.arange(4.0))[:, 1, 0]
@@ -166,7 +168,7 @@ def test_behavioural_sources_along_a_bias():
 
 
 def test_control_of_a_behavioural_source_takes_part_in_the_rf():
-    """i = v(p1)^2/r at a bias of 2 V is a transconductance of 2 * 2 V/r."""
+    """I = v(p1)^2/r at a bias of 2 V is a transconductance of 2 * 2 V/r."""
     lines = ["b1 p2 0 i= v(p1)^2/200", "rb p1 0 1e9"]
     s = solve(lines, 1e8, vectors={"v(p1)": [2.0]})[0]
     # open at port 1: twice the forward wave's 1 V behind 50 ohm drives 2 * 2 V/200 ohm into port 2
@@ -189,14 +191,14 @@ def test_a_node_without_connection_is_refused():
 
 
 def test_what_the_run_did_not_save_is_named():
-    with pytest.raises(RawFileError, match="@d1\\[vd\\]"):
+    with pytest.raises(RawFileError, match=r"@d1\[vd\]"):
         network(["d1 p1 p2 dm", ".model dm d(is=1e-14)"])
-    with pytest.raises(LinearisationError, match="B1.*v\\(q\\)"):
+    with pytest.raises(LinearisationError, match=r"B1.*v\(q\)"):
         network(["b1 p1 p2 i= v(q)", "rq q 0 1"])
 
 
 def test_refused_elements_stop_the_linearisation():
-    with pytest.raises(LinearisationError, match="M1.*MOSFET"):
+    with pytest.raises(LinearisationError, match=r"M1.*MOSFET"):
         network(["r1 p1 p2 3", "m1 p1 p2 0 0 mm"])
 
 
@@ -206,7 +208,7 @@ def test_saved_vectors_are_those_of_the_junctions():
 
 
 def walk(conductance):
-    """A series conductance that follows given values."""
+    """Return a series conductance that follows given values."""
     time = np.arange(float(len(conductance)))
     vectors = {"v(q)": conductance, "v(p1)": np.zeros(len(time)), "v(p2)": np.zeros(len(time))}
     return network(["b1 p1 p2 i= v(p1,p2) * v(q)", "rq q 0 1e3", "v9 q 0 1"], vectors, time)
@@ -224,7 +226,7 @@ def test_changing_points_leave_no_change_out(conductance, share):
     assert points[-1] == len(conductance) - 1
     assert np.all(np.diff(points) > 0)
     scale = np.arcsinh(conductance / 1e-8)
-    for first, last in zip(points[:-1], points[1:], strict=True):
+    for first, last in pairwise(points):
         assert np.all(np.abs(scale[first : max(last, first + 1)] - scale[first]) <= share * (1 + 1e-9))
 
 

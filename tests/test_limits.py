@@ -28,6 +28,8 @@ NAMES = """
     driver_source_peak driver_sink_peak driver_charge_on driver_charge_off driver_power
     junction_charge junction_reverse junction_current_peak supply_current_peak
     junction_dissipation driver_dissipation highest_rate insertion_loss isolation return_loss_on return_loss_off
+    holdoff_peak_margin holdoff_bias_margin charge_margin rf_modulation level_loss level_isolation on_compression
+    bias_shift_on bias_shift_off hot_switching_peak hot_switching_energy
 """
 
 values = st.floats(-1e3, 1e3)

@@ -19,7 +19,7 @@ TERMINATION = ["rport_p1 ep1 p1 50", "rport_p2 ep2 p2 50", "vport_p1 ep1 0 dc 0"
 
 
 def switch(lines, width, inner="m"):
-    """A series conductance that rises from 1 nS to 1 S within some widths [s], behind the given lines."""
+    """Return a series conductance that rises from 1 nS to 1 S within some widths [s], behind the given lines."""
     time = np.linspace(0.0, 100.0 * width, 2001)
     conductance = 10.0 ** (-4.5 + 4.5 * np.tanh((time - 50.0 * width) / width))
     # a source that is controlled by itself alone is a conductance

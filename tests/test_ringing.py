@@ -34,7 +34,7 @@ def network(lines, vectors, time):
 
 
 def conducting(conductance, time, capacitance=C):
-    """A conductance across the resonator that follows given values."""
+    """Return a resonator with a conductance that follows given values."""
     lines = [f"c1 m 0 {capacitance}", "b1 m 0 i= v(m) * v(q)", "rq q 0 1e3", "v9 q 0 1"]
     return network(lines, {"v(q)": conductance, "v(m)": np.zeros(time.size)}, time)
 
@@ -118,7 +118,7 @@ def test_resonator_with_a_diode_as_capacitor():
 
 
 def test_behavioural_capacitor_carries_no_charge_of_its_change():
-    """ngspice makes c = '...' into C dv/dt, not d(C v)/dt, and so does the solution."""
+    """Ngspice makes c = '...' into C dv/dt, not d(C v)/dt, and so does the solution."""
     time = uneven(2001)
 
     def capacitance(t):

@@ -207,6 +207,85 @@ def _fit(console: Any, design: Path, **options: Any) -> int:
     return fit_and_report(console, FitRequest(design, **options))
 
 
+def _study(command: _Command) -> _Command:
+    """Add what every study is asked for."""
+    options = (
+        click.option(
+            "--vary",
+            metavar="TEXT",
+            multiple=True,
+            help="A parameter in place of those in DESIGN, for example"
+            ' "driver.fast.speedup_cap = 100 pF .. 10 nF, E24"; may be repeated.',
+        ),
+        click.option(
+            "--analysis", type=click.Choice(["envelope", "carrier"]), default="envelope", show_default=True
+        ),
+        click.option("--workers", type=click.IntRange(1, 1024), metavar="N", help="Processes; else one a processor."),
+        click.option("--cluster", metavar="ADDRESS", help="A Dask scheduler whose workers simulate the points."),
+        click.option("--out", type=_PATH, metavar="DIR", help="Folder of the study; else named after DESIGN."),
+        click.option("--resume", is_flag=True, help="Go on with a study, and fail where there is none."),
+        click.option("--force", is_flag=True, help="Discard another study in the folder."),
+        _drivers,
+        _ngspice,
+        _design,
+    )
+    return functools.reduce(lambda decorated, option: option(decorated), options, command)
+
+
+_seed = click.option("--seed", type=click.IntRange(0, 2**31 - 1), metavar="N", help="In place of DESIGN's.")
+
+
+def _study_request(design: Path, **options: Any) -> Any:
+    from transim.commands.studying import StudyRequest
+
+    return StudyRequest(design, **options)
+
+
+@_transim.command("sweep", short_help="Step one or two parameters through a range.")
+@_study
+@_common
+def _sweep(console: Any, **options: Any) -> int:
+    """Step the parameters of [sweep] in DESIGN through their values, and show where all limits hold.
+
+    A sweep that was interrupted goes on where it stopped.
+    """
+    from transim.commands.sweep import sweep_and_report
+
+    return sweep_and_report(console, _study_request(**options))
+
+
+@_transim.command("tune", short_help="Choose preferred values so that all limits hold with margin.")
+@click.option("--goal", metavar="TEXT", help='"largest margin", or for example "smallest on_time".')
+@click.option("--runs", type=click.IntRange(1, 100_000), metavar="N", help="Most points that are simulated.")
+@_seed
+@_study
+@_common
+def _tune(console: Any, goal: str | None, runs: int | None, seed: int | None, **options: Any) -> int:
+    """Find the best preferred values of the parameters of [tune] in DESIGN, and how far each may move.
+
+    A search that was interrupted goes on where it stopped.
+    """
+    from transim.commands.tune import tune_and_report
+
+    return tune_and_report(console, _study_request(**options), goal, runs, seed)
+
+
+@_transim.command("spread", short_help="Yield, worst case and its causes within tolerances.")
+@click.option("--trials", type=click.IntRange(1, 1_000_000), metavar="N", help="In place of DESIGN's.")
+@click.option("--points", type=click.Choice(["random", "sobol", "corners"]), help="In place of DESIGN's.")
+@_seed
+@_study
+@_common
+def _spread(console: Any, trials: int | None, points: str | None, seed: int | None, **options: Any) -> int:
+    """Simulate trials within the tolerances of [spread] in DESIGN: yield, distributions, worst trial, causes.
+
+    A spread that was interrupted goes on where it stopped; more trials are added to the ones that are there.
+    """
+    from transim.commands.spread import spread_and_report
+
+    return spread_and_report(console, _study_request(**options), trials, points, seed)
+
+
 @_transim.command("engine", short_help="Say which ngspice is used, and test it.")
 @_ngspice
 @_common
@@ -303,6 +382,10 @@ def _orderly_end() -> Iterator[None]:
         return
 
     def leave(number: int, _frame: object) -> NoReturn:
+        # runs in other threads would have to be waited for; without the engine there are none
+        engine = sys.modules.get("transim.engine.ngspice")
+        if engine is not None:
+            engine.end_all()
         # not KeyboardInterrupt: raised inside exec(), it ends Python by the signal even where it is caught
         raise SystemExit(128 + number)
 

@@ -45,8 +45,8 @@ __all__ = [
     "OutputError",
     "QuantityError",
     "RawFileError",
-    "StudyError",
     "RecordError",
+    "StudyError",
     "TopologyError",
     "TransimError",
 ]

@@ -1,13 +1,13 @@
 """Decks are stored text: the same design gives the same deck, byte for byte.
 
-Outside reference: the stored decks, which run in plain ngspice by themselves (``ngspice -b``) and were read by a person.
-``pytest tests/decks --snapshot-update`` stores them anew after a wanted change; read the difference before it is kept.
+Outside reference: the stored decks, which run in plain ngspice by themselves (``ngspice -b``) and were read by a
+person. ``pytest tests/decks --snapshot-update`` stores them anew after a wanted change; read the difference before it
+is kept.
 """
 
 import shutil
 from pathlib import Path
 
-import pytest
 from syrupy.extensions.single_file import SingleFileSnapshotExtension, WriteMode
 
 from transim.design.toml import read_design
@@ -37,9 +37,9 @@ def written(file):
 NAMES = ("static", "video", "carrier_0", "carrier_90", "carrier_quiet")
 
 
-@pytest.mark.parametrize("name", NAMES)
-def test_deck_is_the_stored_one(name, snapshot):
-    assert written(DESIGN)[name] == snapshot(name=name, extension_class=DeckFile)
+def test_decks_are_the_stored_ones(snapshot):
+    for name, text in written(DESIGN).items():
+        assert text == snapshot(name=name, extension_class=DeckFile)
 
 
 def test_all_decks_are_stored():

@@ -1,18 +1,20 @@
 """RF envelope of a charge-controlled p-i-n diode, end to end: design file, decks, ngspice, envelope, metrics.
 
 Source: charge control and R = W^2/((mun + mup) Q), as in J. F. White, Microwave Semiconductor Engineering, 1982; the
-envelope that follows is derived and has no published numbers: |S21| = 2 Z0/(2 Z0 + R) in series, 2 R/(2 R + Z0) in shunt,
-R = k/Q(t), k = W^2/(mun + mup); on: Q = IF tau (1 - exp(-t/tau)); off: Q = (IF + IR) tau exp(-t/tau) - IR tau.
-Read: W 50 um, 0.18 m^2/Vs, tau 1 us, IF = IR = 10 mA, Z0 50 ohm. Series: on t10 1.5209, t90 116.26 ns, off t90 589.01,
-t10 691.63 ns. Shunt, absolute |S21|: falling t90 6.1920, t50 57.158, rising t50 639.08, t90 686.99 ns, floor 0.052632.
+envelope that follows is derived and has no published numbers: |S21| = 2 Z0/(2 Z0 + R) in series, 2 R/(2 R + Z0) in
+shunt, R = k/Q(t), k = W^2/(mun + mup); on: Q = IF tau (1 - exp(-t/tau)); off: Q = (IF + IR) tau exp(-t/tau) - IR tau.
+Read: W 50 um, 0.18 m^2/Vs, tau 1 us, IF = IR = 10 mA, Z0 50 ohm. Series: on t10 1.5209, t90 116.26 ns, off t90
+589.01, t10 691.63 ns. Shunt, absolute |S21|: falling t90 6.1920, t50 57.158, rising t50 639.08, t90 686.99 ns, floor
+0.052632.
 
-1 %: the closed form has no feed, no junction voltage and no DC blocks. At 1.52 ns the I-region still has 900 ohm and 9 V:
-the DC blocks of shipped paths, 0.1 pF at least, would take 6 % of the 15 pC that are there. So the paths are the user's
-own, written here, with blocks of 1 fF at 100 THz (which no design file may ask for), and a clamp that takes the reverse
-current once the charge is gone. An I-region of 10 kohm without charge keeps the forward voltage below 31 V, where the
-part's breakdown diode would conduct; it stands in the closed form as a conductance beside Q/k, worth 9 % of the first
-instant of the series diode, 2 % of that of the shunt diode and less than 0.5 % of the others. The edge of 3 ns takes the
-current from -10 to 10 mA: the charge grows from its middle, and is a quarter of the edge late after a rise.
+1 %: the closed form has no feed, no junction voltage and no DC blocks. At 1.52 ns the I-region still has 900 ohm and
+9 V: the DC blocks of shipped paths, 0.1 pF at least, would take 6 % of the 15 pC that are there. So the paths are the
+user's own, written here, with blocks of 1 fF at 100 THz (which no design file may ask for), and a clamp that takes
+the reverse current once the charge is gone. An I-region of 10 kohm without charge keeps the forward voltage below 31
+V, where the part's breakdown diode would conduct; it stands in the closed form as a conductance beside Q/k, worth 9 %
+of the first instant of the series diode, 2 % of that of the shunt diode and less than 0.5 % of the others. The edge
+of 3 ns takes the current from -10 to 10 mA: the charge grows from its middle, and is a quarter of the edge late after
+a rise.
 """
 
 import numpy as np

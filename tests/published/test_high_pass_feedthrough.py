@@ -1,9 +1,10 @@
 """Video leakage of a ramp through a DC block: the high-pass response of R and C.
 
-Source: textbook response of a single-pole high-pass to a ramp: peak V (RC/tr) (1 - exp(-tr/RC)), area R C V whatever the
-edge. Read: RC 100 ns, tr 10 ns, 5 V: 4.75813 V; 5 ns, 5 ns, 5 V: 3.16060 V. End to end: the shipped ideal_voltage drives
-the junction's node of the shipped shunt_single, whose DC blocks lead to 50 ohm each; the junction stays reverse biased
-and has no capacitance. 0.1 %: 2 mohm in the feed and the source, and steps of a fiftieth of the ramp or less (ngspice errs by 0.5 % at a fifth).
+Source: textbook response of a single-pole high-pass to a ramp: peak V (RC/tr) (1 - exp(-tr/RC)), area R C V whatever
+the edge. Read: RC 100 ns, tr 10 ns, 5 V: 4.75813 V; 5 ns, 5 ns, 5 V: 3.16060 V. End to end: the shipped ideal_voltage
+drives the junction's node of the shipped shunt_single, whose DC blocks lead to 50 ohm each; the junction stays
+reverse biased and has no capacitance. 0.1 %: 2 mohm in the feed and the source, and steps of a fiftieth of the ramp
+or less (ngspice errs by 0.5 % at a fifth).
 """
 
 import math

@@ -1,7 +1,7 @@
 """Storage time of a charge-controlled diode: ts = tau ln(1 + IF/IR).
 
-Source: J. L. Moll, S. Krakauer, R. Shen, "P-N junction charge-storage diodes", Proc. IRE 50, 43-53, 1962; the formula is
-from memory. Read: tau 100 ns, IF = IR = 10 mA: 69.315 ns; tau 1 us, 10 mA and 6 mA: 980.83 ns. The shipped part
+Source: J. L. Moll, S. Krakauer, R. Shen, "P-N junction charge-storage diodes", Proc. IRE 50, 43-53, 1962; the formula
+is from memory. Read: tau 100 ns, IF = IR = 10 mA: 69.315 ns; tau 1 us, 10 mA and 6 mA: 980.83 ns. The shipped part
 junction_diode is driven by the shipped ideal_current. 1e-4: the charge that is left while the junction falls from its
 forward voltage to zero is below 1e-4 of what was stored, and steps are a thousandth of ts.
 """

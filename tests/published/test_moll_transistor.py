@@ -1,11 +1,11 @@
 """Saturation storage of a transistor: ts = tau_s ln[(IB1 + IB2)/(IC/bF + IB2)].
 
-Source: J. L. Moll, "Large-signal transient response of junction transistors", Proc. IRE 42, 1773-1784, 1954 (from memory):
-tau_s = [bF (1 + bR) TF + bR (1 + bF) TR]/(1 + bF + bR). Parameters: M. T. Thompson, Intuitive Analog Circuit Design,
-chapter 10: bF 416, bR 0.7, TF 0.3 ns, TR 240 ns; IC 10 mA, IB1 = IB2 = 1 mA. Read: 112.61 ns by the formula, 112.71 ns by
-the two charges exactly. On the shipped part bjt_pair without its capacitances and resistances, driven by the shipped
-ideal_current. 0.05 % against the exact value (collector current is constant to 0.01 %, VAF is finite), 0.2 % against the
-formula, whose two poles are one.
+Source: J. L. Moll, "Large-signal transient response of junction transistors", Proc. IRE 42, 1773-1784, 1954 (from
+memory): tau_s = [bF (1 + bR) TF + bR (1 + bF) TR]/(1 + bF + bR). Parameters: M. T. Thompson, Intuitive Analog Circuit
+Design, chapter 10: bF 416, bR 0.7, TF 0.3 ns, TR 240 ns; IC 10 mA, IB1 = IB2 = 1 mA. Read: 112.61 ns by the formula,
+112.71 ns by the two charges exactly. On the shipped part bjt_pair without its capacitances and resistances, driven by
+the shipped ideal_current. 0.05 % against the exact value (collector current is constant to 0.01 %, VAF is finite),
+0.2 % against the formula, whose two poles are one.
 """
 
 import numpy as np
@@ -16,7 +16,8 @@ def test_storage_time(body, transient):
     ideal = " ".join(
         f"{name}=0"
         for name in (
-            "base_resistance", "collector_resistance", "emitter_resistance", "emitter_capacitance", "collector_capacitance",
+            "base_resistance", "collector_resistance", "emitter_resistance", "emitter_capacitance",
+            "collector_capacitance",
         )
     )  # fmt: skip
     deck = (

@@ -1,8 +1,8 @@
 """Diffusion capacitance TT Id/(N Vt) and saturation current against temperature of the shipped junction_diode.
 
-Source: P. Antognetti, G. Massobrio, Semiconductor Device Modeling with SPICE, 1988, chapter 1. Read: TT 1 us, 10 mA, N 1 at
-300.15 K: 386.62 nF; IS 1e-14 A, XTI 3, EG 1.11, N 1, nominal 300.15 K: 9.02855e-10 A at 125 degC, 2.06516e-20 A at
--40 degC (worked out from the formula with CODATA constants, which ngspice has to the sixth digit). 1e-4.
+Source: P. Antognetti, G. Massobrio, Semiconductor Device Modeling with SPICE, 1988, chapter 1. Read: TT 1 us, 10 mA,
+N 1 at 300.15 K: 386.62 nF; IS 1e-14 A, XTI 3, EG 1.11, N 1, nominal 300.15 K: 9.02855e-10 A at 125 degC, 2.06516e-20
+A at -40 degC (worked out from the formula with CODATA constants, which ngspice has to the sixth digit). 1e-4.
 """
 
 import math

@@ -1,8 +1,9 @@
 """A small general-purpose transistor as a series junction pair: what the trade expects of it.
 
-Common practice, no published table: 5 V control gives about 20 dB of isolation at 100 MHz, 50 to 60 dB at 10 MHz, almost none
-at 1 GHz, and under 5 dB of loss in the on state up to 1 GHz. Read with the slack of such statements: 20 +- 5 dB, at least
-50 dB, less than 6 dB, less than 5 dB. On the shipped path series_bjt and part bjt_pair with their defaults.
+Common practice, no published table: 5 V control gives about 20 dB of isolation at 100 MHz, 50 to 60 dB at 10 MHz,
+almost none at 1 GHz, and under 5 dB of loss in the on state up to 1 GHz. Read with the slack of such statements: 20
++- 5 dB, at least 50 dB, less than 6 dB, less than 5 dB. On the shipped path series_bjt and part bjt_pair with their
+defaults.
 """
 
 import pytest
@@ -38,7 +39,9 @@ def figures(engine, tmp_path_factory):
     file = tmp_path_factory.mktemp("pair") / "pair.toml"
     file.write_text(DESIGN)
     outcome = run_design(read_design(file), engine)
-    return {result.carrier: {name: figure.value for name, figure in result.figures.items()} for result in outcome.results}
+    return {
+        result.carrier: {name: figure.value for name, figure in result.figures.items()} for result in outcome.results
+    }
 
 
 def test_isolation(figures):

@@ -1,8 +1,9 @@
 """Resistance of the I-region: Q = IF tau, R = W^2/((mun + mup) Q).
 
-Source: J. F. White, Microwave Semiconductor Engineering, 1982. Read: 50 um, 0.18 m^2/Vs, 10 mA, 1 us: 1.38889 ohm; 100 um,
-100 mA, 5 us: 0.111111 ohm. On the shipped part pin_lumped, by ngspice's AC impedance at 1 GHz, where the RF moves
-no charge (1/(2 pi f tau) is 2e-4, in quadrature), and by its DC voltage. 1e-4: the junction itself is some microohm.
+Source: J. F. White, Microwave Semiconductor Engineering, 1982. Read: 50 um, 0.18 m^2/Vs, 10 mA, 1 us: 1.38889 ohm;
+100 um, 100 mA, 5 us: 0.111111 ohm. On the shipped part pin_lumped, by ngspice's AC impedance at 1 GHz, where the RF
+moves no charge (1/(2 pi f tau) is 2e-4, in quadrature), and by its DC voltage. 1e-4: the junction itself is some
+microohm.
 """
 
 import pytest

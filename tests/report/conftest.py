@@ -100,5 +100,5 @@ def _case(design, driver, tau, points):
     )
     figures = extract(record)
     result = Result(driver.name, 100e6, 25.0, "envelope", figures, judge(figures, design.limits), "frozen: invented")
-    deck = Deck(name="video", text=f"* deck of {driver.name}\n.end\n", stop=1.0)
+    deck = Deck("video", f"* deck of {driver.name}\n.end\n", writes_raw=False)
     return CaseRun(driver.name, 25.0, (result,), (deck,), plot, {("envelope", 100e6): wave}, 0.1)

@@ -1,7 +1,8 @@
 """Expressions have the value that ngspice's own B sources give them at the operating point, and its AC slopes.
 
 Outside reference: ngspice. The text is read from its listing, so that its own rewriting of numbers and of
-``{parameters}`` is part of the check. 1e-9 relative: both are double precision, ngspice prints ten digits of a constant.
+``{parameters}`` is part of the check. 1e-9 relative: both are double precision, ngspice prints ten digits of a
+constant.
 """
 
 import numpy as np

@@ -1,7 +1,7 @@
 """Frozen solution at an operating point against ngspice's AC analysis, for every kind of element.
 
-Outside reference: ngspice on the same deck; its listing, its operating point and its AC response. 0.001 dB, or 1.2e-4 of
-an S-parameter: ngspice's reltol of 1e-9 leaves less. The networks are drawn at random, the same at every run.
+Outside reference: ngspice on the same deck; its listing, its operating point and its AC response. 0.001 dB, or 1.2e-4
+of an S-parameter: ngspice's reltol of 1e-9 leaves less. The networks are drawn at random, the same at every run.
 """
 
 import numpy as np
@@ -35,7 +35,8 @@ def compare(engine, body, temperature=27.0, models=""):
                 steps += [f"ac lin 1 {frequency:.6e} {frequency:.6e}", "write small.raw v(p1) v(p2)"]
             steps.append(f"alter {port.source} acmag = 0")
         deck = (
-            f"* small network\n{body}\n{ENDS}{models}\n.options temp={temperature} reltol=1e-9 abstol=1e-15 vntol=1e-9\n"
+            f"* small network\n{body}\n{ENDS}{models}\n"
+            f".options temp={temperature} reltol=1e-9 abstol=1e-15 vntol=1e-9\n"
             f".control\nlisting expand\nset appendwrite\nop\nwrite small.raw {saved}\n" + "\n".join(steps)
             + "\nquit 0\n.endc\n.end\n"
         )  # fmt: skip
@@ -83,7 +84,8 @@ def draw(random, template):
 
 KINDS = {
     "R L C alone": "",
-    "multipliers": "R9 {a} {b} {x}k m=2\nC9 {b} {c} {y}p m=3\nL9 {a} m9 {x}u m=2\nR9a m9 {d} 50\nG9 {a} 0 {c} {d} {y}m m=2",
+    "multipliers": "R9 {a} {b} {x}k m=2\nC9 {b} {c} {y}p m=3\nL9 {a} m9 {x}u m=2\nR9a m9 {d} 50\n"
+    "G9 {a} 0 {c} {d} {y}m m=2",
     "K": "La {a} ma {x}u\nLb {b} mb {y}u\nRa ma 0 20\nRb mb {c} 30\nK1 La Lb {x}",
     "E": "E1 me 0 {a} {b} {x}\nRe me {c} 75",
     "G": "G1 {a} {b} {c} {d} {x}m",
@@ -97,13 +99,14 @@ KINDS = {
     "B voltage": "B1 mb 0 v = {x} * v({c}) * v({d}) / (1 + v({a})^2)\nRb mb {b} 80",
     "B of a current": "Vi {a} mi 0\nRi mi {b} 150\nB1 mb 0 v = {x}k * i(Vi) * (1 + {y} * v({c}))\nRb mb {d} 80",
     "B of itself": "B1 {a} mb v = 20 * i(B1) * (1 + 50 * i(B1)^2)\nRb mb {b} 60",
-    "B with conditional": "B1 {a} 0 i = v({c}) > 0.1 ? {x}m * v({b}) : {y}m * v({d})\nB2 {b} 0 i = {x}m * max(v({a}), v({c}))",
+    "B with conditional": "B1 {a} 0 i = v({c}) > 0.1 ? {x}m * v({b}) : {y}m * v({d})\n"
+    "B2 {b} 0 i = {x}m * max(v({a}), v({c}))",
     "R by expression": "R9 {a} {b} r='100 * {x} * (1 + v({c}) * v({c}))'",
     "R by expression with multiplier": "R9 {a} {b} r='300 * {x} * (1 + v({c}) * v({c}))' m=2",
     "C by expression": "C9 {a} {b} c='5p * {x} * (1 + 0.2 * v({c}))'",
     "L by expression": "L9 {a} m9 l='50n * {x} * (1 + 0.1 * v({c}))'\nR9 m9 {b} 20",
-    "subcircuit": "X1 {a} {b} {c} cell g={x}\n.subckt cell a b c g=1\nR1 a m {{100 * g}}\nB1 m b v = {{g}} * v(c) * 0.1\n"
-    "C1 m c 1p\n.ends",
+    "subcircuit": "X1 {a} {b} {c} cell g={x}\n.subckt cell a b c g=1\nR1 a m {{100 * g}}\n"
+    "B1 m b v = {{g}} * v(c) * 0.1\nC1 m c 1p\n.ends",
     "D": "D1 {a} {b} dm\nD2 {c} 0 dm 2\nD3 0 {d} dm",
     "Q": "Q1 {a} {b} {c} qm\nQ2 {c} {d} {a} qp",
 }  # fmt: skip

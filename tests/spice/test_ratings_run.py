@@ -6,6 +6,7 @@ spends in a full cycle of a capacitor (common textbook result, from memory); ngs
 
 import math
 
+import numpy as np
 import pytest
 from scipy import constants
 
@@ -78,6 +79,17 @@ part = "push_pull_speedup"
 speedup_cap = "470 pF"
 ratings = { dissipation = "DISSIPATION" }
 """
+TRANSISTOR = """\
+[switch]
+path = "series_bjt"
+junction = "hn3"
+dc_block = "10 pF"
+[junction.hn3]
+part = "bjt_pair"
+ratings = { reverse_voltage = "5 V", forward_current_peak = "100 mA" }
+[driver.gate]
+part = "resistor_feed"
+"""
 POWERS = ("junction_dissipation", "driver_dissipation", "driver_power")
 
 
@@ -110,6 +122,7 @@ def test_a_junction_at_dc_takes_voltage_times_current(design_of, engine):
     judged = rated(result)
     assert judged["junction.plain.forward_current_mean xj"].value == pytest.approx(4e-3, rel=3e-3)
     assert judged["junction.plain.forward_current_peak xj"].value == pytest.approx(10e-3, rel=1e-2)
+    assert judged["junction.plain.dissipation xj"].value == pytest.approx(0.4 * power, rel=3e-3)
     verdicts = [judged[f"junction.plain.{key} xj"].verdict for key in ("forward_current_peak", "dissipation")]
     assert verdicts == ["fail", "pass"]
     assert result.figures["driver_dissipation"].note == "the driver has no supply"
@@ -169,3 +182,19 @@ def test_all_power_of_the_supplies_goes_somewhere(design_of, engine):
     # all from the 5 V rail; then 47 ohm carry the whole current, and each return's 22 ohm half of it
     current = supplied / 5.0
     assert supplied == pytest.approx(kept + 2.0 * junction + current**2 * (47.0 + 22.0 / 2.0), rel=1e-3)
+
+
+def test_three_terminals_take_what_the_driver_delivers_less_the_losses_of_the_path(design_of, engine):
+    design = design_of(TRANSISTOR, on=8.0, period=20.0)
+    (case,) = run_design(design, engine).cases
+    video, (result,) = case.video, case.results
+    end = int(np.searchsorted(video["time"].real, 8.16e-6)) - 1
+    names = ("v(drive)", "v(xpath.b)", "v(xpath.c)", "v(xpath.e)", "i(vdrive)")
+    bias, base, collector, emitter, current = (float(video[name][end].real) for name in names)
+    losses = (bias - base) ** 2 / 330.0 + (collector**2 + emitter**2) / 470.0
+    law = result.rates.laws["junction_dissipation"]
+    assert law.settled_on == pytest.approx(bias * current - losses, rel=1e-3)
+    judged = rated(result)
+    # the base current is the driver's, once all has settled
+    assert judged["junction.hn3.forward_current_peak xj"].value >= current
+    assert {"junction.hn3.reverse_voltage xj", "junction.hn3.reverse_voltage xj 2"} <= set(judged)

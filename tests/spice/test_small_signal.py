@@ -81,8 +81,8 @@ TRANSISTORS = {
 }
 #: Base and collector against the emitter [V], as an NPN has them: active, saturated, reverse, blocked.
 BIASES = [
-    (0.55, 5.0), (0.65, 5.0), (0.75, 2.0), (0.75, 0.1), (0.8, 0.05), (0.6, 0.0), (0.0, 0.0), (-2.0, -1.0), (-1.0, -1.65),
-    (0.0, 3.0), (-3.0, 8.0), (0.0, -0.7), (0.3, 1.0),
+    (0.55, 5.0), (0.65, 5.0), (0.75, 2.0), (0.75, 0.1), (0.8, 0.05), (0.6, 0.0), (0.0, 0.0), (-2.0, -1.0),
+    (-1.0, -1.65), (0.0, 3.0), (-3.0, 8.0), (0.0, -0.7), (0.3, 1.0),
 ]  # fmt: skip
 
 
@@ -122,7 +122,7 @@ def test_transistor(engine, card, temperature):
 
 @pytest.mark.parametrize("temperature", TEMPERATURES)
 def test_emitter_charge_follows_the_collector_voltage(engine, temperature):
-    """ngspice does not print the cross capacitance; its AC base current with the collector driven shows it."""
+    """Ngspice does not print the cross capacitance; its AC base current with the collector driven shows it."""
     text = TRANSISTORS["transit time by voltage"].split(None, 1)[1]
     cells = "".join(
         f"Vb{k} b{k} 0 {b}\nVc{k} c{k} 0 {c} AC 1\nQ{k} c{k} b{k} 0 qm\n" for k, (b, c) in enumerate(BIASES)

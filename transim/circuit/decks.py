@@ -15,7 +15,7 @@ __all__ = [
     "Origin",
     "Tone",
     "carrier_deck",
-    "deck_head",
+    "control_block", "deck_head",
     "option_cards",
     "quiet_ports",
     "static_deck",
@@ -117,6 +117,20 @@ def quiet_ports(ports: Sequence[RfPort]) -> str:
     return "".join(f"{port.source} e{port.node} 0 DC 0 AC 0\n" for port in ports)
 
 
+def control_block(commands: Sequence[str]) -> list[str]:
+    """Return a control block that writes its plots one after the other into one raw file, and a new one at each run.
+
+    Parameters
+    ----------
+    commands : sequence of str
+        With at least one ``write``.
+    """
+    first = next(k for k, command in enumerate(commands) if command.split()[0] == "write")
+    # the first write begins the file anew, the others append
+    ordered = [*commands[: first + 1], "set appendwrite", *commands[first + 1 :]]
+    return [".control", "set filetype=binary", *ordered, "quit 0", ".endc"]
+
+
 def static_deck(
     netlist: Netlist, control: Control, frequencies: Sequence[float], numerics: Numerics, origin: Origin
 ) -> Deck:
@@ -155,22 +169,9 @@ def static_deck(
             number = deck_number(frequency)
             steps += [f"  ac lin 1 {number} {number}", f"  write static.raw {nodes}"]
         steps.append(f"  alter {port.source} acmag = 0")
-    script = "\n".join(
-        [
-            ".control",
-            "listing expand",
-            "set filetype=binary",
-            "set appendwrite",
-            f"foreach level {deck_number(control.low)} {deck_number(control.high)}",
-            "  alter vcontrol dc = $level",
-            "  op",
-            "  write static.raw all",
-            *steps,
-            "end",
-            "quit 0",
-            ".endc",
-        ]
-    )
+    loop = f"foreach level {deck_number(control.low)} {deck_number(control.high)}"
+    body = ["  alter vcontrol dc = $level", "  op", "  write static.raw all", *steps]
+    script = "\n".join(control_block(["listing expand", loop, *body, "end"]))
     text = (
         deck_head("static", origin, what, True)
         + netlist.text

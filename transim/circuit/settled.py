@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from transim.circuit.assemble import Netlist
-from transim.circuit.decks import Deck, Origin, deck_head, option_cards, quiet_ports
+from transim.circuit.decks import Deck, Origin, control_block, deck_head, option_cards, quiet_ports
 from transim.design.model import Control, Numerics, Static
 from transim.quantities import deck_number, format_quantity
 
@@ -128,7 +128,7 @@ def _deck(
 ) -> Deck:
     """Put head, circuit and control block together; `parts` are source lines and commands."""
     sources, commands = parts
-    script = "\n".join([".control", "set filetype=binary", "set appendwrite", *commands, "quit 0", ".endc"])
+    script = "\n".join(control_block(commands))
     text = (
         deck_head(name, origin, what, True)
         + netlist.text

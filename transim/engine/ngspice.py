@@ -14,6 +14,7 @@ import shutil
 import signal
 import subprocess
 import tempfile
+import threading
 import time
 from collections.abc import Iterator
 from dataclasses import dataclass
@@ -26,12 +27,13 @@ from transim.engine.rawfile import Plot, read_raw
 from transim.engine.verdict import Attempt, check_end, check_plots
 from transim.errors import EngineError, EngineNotFound, OutputError, RawFileError
 
-__all__ = ["Engine", "EngineRun", "find_engine"]
+__all__ = ["Engine", "EngineRun", "end_all", "find_engine"]
 
 VARIABLE = "TRANSIM_NGSPICE"
 LOG_LIMIT = 16 * 2**20
 LONGEST_TIMEOUT = 1e6
 KEPT_VARIABLES = ("LD_LIBRARY_PATH", "DYLD_LIBRARY_PATH", "TMPDIR")
+_running: set[subprocess.Popen[bytes]] = set()
 INSTALL = "install it (apt-get install ngspice, or brew install ngspice)"
 
 
@@ -273,27 +275,59 @@ def _execute(command: list[str], folder: Path, timeout: float) -> _Outcome:
     # Two files, since ngspice buffers one stream and not the other and would cut lines in two.
     with _scratch(folder) as output, _scratch(folder) as errors:
         started = time.perf_counter()
+        process, ended = None, False
         try:
-            process = subprocess.Popen(
-                command,
-                cwd=folder,
-                env=environment,
-                stdin=subprocess.DEVNULL,
-                stdout=output,
-                stderr=errors,
-                start_new_session=True,
-            )
+            with _undisturbed():
+                process = subprocess.Popen(
+                    command,
+                    cwd=folder,
+                    env=environment,
+                    stdin=subprocess.DEVNULL,
+                    stdout=output,
+                    stderr=errors,
+                    start_new_session=True,
+                )
+                _running.add(process)
+            ended = _wait(process, timeout)
         except OSError as exc:
             raise EngineNotFound(
                 f"{command[0]} cannot be started: {exc.strerror}; {INSTALL}", command=command
             ) from exc
-        ended = False
-        try:
-            ended = _wait(process, timeout)
         finally:
-            _end_group(process)
+            if process is not None:
+                _end_group(process)
+                _running.discard(process)
         seconds = time.perf_counter() - started
         return _Outcome(process.returncode if ended else None, _text(output), _text(errors), seconds)
+
+
+@contextlib.contextmanager
+def _undisturbed() -> Iterator[None]:
+    """Put off signals while a process is started: one between its start and its registration would lose it."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    caught: list[int] = []
+    # a signal mask would not do: other threads take the signal, and Python handles it here all the same
+    before = {
+        number: signal.signal(number, lambda number, _frame: caught.append(number))
+        for number in (signal.SIGINT, signal.SIGTERM)
+    }
+    try:
+        yield
+    finally:
+        for number, handler in before.items():
+            signal.signal(number, handler)
+        if caught:
+            signal.raise_signal(caught[0])
+
+
+def end_all() -> None:
+    """End every process that is running, in whatever thread; each run then fails, and nothing has to be waited for."""
+    for process in tuple(_running):
+        if process.returncode is None:
+            with contextlib.suppress(ProcessLookupError, PermissionError):
+                os.killpg(process.pid, signal.SIGKILL)
 
 
 def _scratch(folder: Path) -> IO[bytes]:

@@ -15,7 +15,7 @@ from collections.abc import Mapping, Sequence
 import numpy as np
 
 from transim.circuit.assemble import RfPort
-from transim.circuit.decks import Deck, Origin, deck_head
+from transim.circuit.decks import Deck, Origin, control_block, deck_head
 from transim.circuit.elements import Behavioural, Circuit, Device
 from transim.envelope.diode import DiodeLaw
 from transim.envelope.linearise import Bias
@@ -64,7 +64,7 @@ def bias_check_deck(
         f"Check: the flattened circuit at the bias of {float(bias.time[0]):.6e} s of the video run,",
         "every junction held at it by a twin node; AC with 1 V behind each port's impedance in turn.",
     ]
-    script = [".control", "set filetype=binary", "set appendwrite", *steps, "quit 0", ".endc", ".end"]
+    script = [*control_block(steps), ".end"]
     options = f".options temp={deck_number(origin.temperature)} rshunt=1e12 noacct"
     text = deck_head(name, origin, what, True) + "\n".join([*body, *imposed.lines, options, *script]) + "\n"
     return Deck(name, text, writes_raw=True)

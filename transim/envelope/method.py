@@ -95,8 +95,12 @@ def solve_envelope(
     for k, carrier in enumerate(frequency):
         transition = _transition(network, ports, carrier, pair, frozen.s[k])
         methods.append(wanted if wanted != "auto" else ("ringing" if transition.slow_network else "frozen"))
-        share = transition.group_delay / transition.fastest if np.isfinite(transition.fastest) else 0.0
-        reason = f"group delay is {100.0 * share:.2g} % of the fastest RF transition"
+        share = transition.group_delay / transition.fastest
+        reason = (
+            f"group delay is {100.0 * share:.2g} % of the fastest RF transition"
+            if np.isfinite(transition.fastest)
+            else "the RF makes no transition between 10 and 90 % that its network could slow"
+        )
         reasons.append(reason if wanted == "auto" else f"as requested; {reason}")
     s = frozen.s
     slow = [k for k, method in enumerate(methods) if method == "ringing"]

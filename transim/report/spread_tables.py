@@ -36,7 +36,11 @@ def spread_lines(outcome: SpreadOutcome, folder: str) -> list[str]:
     list of str
     """
     spread, table = outcome.spread, outcome.table
-    how = "all corners and the nominal point" if spread.points == "corners" else f"{spread.points} trials, seed {spread.seed}"
+    how = (
+        "all corners and the nominal point"
+        if spread.points == "corners"
+        else f"{spread.points} trials, seed {spread.seed}"
+    )
     lines = [*study_head(outcome.nominal, [f"Spread: {how}"], outcome.drivers, outcome.advance), ""]
     lines += align(
         [
@@ -57,9 +61,7 @@ def spread_lines(outcome: SpreadOutcome, folder: str) -> list[str]:
         values = zip(spread.tolerances, table.values[outcome.worst_place].tolist(), strict=True)
         place = ", ".join(f"{tolerance.parameter} {value_text(value, tolerance.unit)}" for tolerance, value in values)
         margin = percent(float(table.margin[outcome.worst_place]))
-        lines += wrap(
-            f"The worst trial, number {table.places[outcome.worst_place]}, smallest margin {margin}: {place}"
-        )
+        lines += wrap(f"The worst trial, number {table.places[outcome.worst_place]}, smallest margin {margin}: {place}")
         lines += check_lines("Run again with every check", outcome.worst)
     lines += wrap("Other trials are compared with ngspice's .ac before the first edge only.")
     lines += failure_lines(table, folder)
@@ -92,14 +94,19 @@ def _distributions(outcome: SpreadOutcome, driver: str) -> list[str]:
     for name, unit, figures in limit_figures(outcome.table, outcome.design.limits, driver):
         known = figures[np.isfinite(figures)]
         cells = (
-            [format_quantity(float(value), unit) for value in np.quantile(known, _QUANTILES)] if known.size else ["-"] * 5
+            [format_quantity(float(value), unit) for value in np.quantile(known, _QUANTILES)]
+            if known.size
+            else ["-"] * 5
         )
         rows.append((name, *cells, str(int(np.isnan(figures).sum()))))
     names, *columns = zip(*rows, strict=True)
     return align(
         [
             Column("nearest to its limit", names),
-            *(Column(heading, cells, right=True) for heading, cells in zip((*_HEADINGS, "undefined"), columns, strict=True)),
+            *(
+                Column(heading, cells, right=True)
+                for heading, cells in zip((*_HEADINGS, "undefined"), columns, strict=True)
+            ),
         ],
         "  ",
     )
@@ -107,7 +114,8 @@ def _distributions(outcome: SpreadOutcome, driver: str) -> list[str]:
 
 def _causes(outcome: SpreadOutcome) -> list[str]:
     lost = outcome.total.good < outcome.total.judged
-    what = "loss" if lost else "smallest margin (nothing is lost)"
+    by_loss = all(cause.of == "loss" for cause in outcome.causes)
+    what = "loss" if by_loss else "smallest margin (too few trials are lost, or good, to go by the loss)"
     lines = wrap(f"What the {what} goes with, strongest first:")
     for cause in outcome.causes:
         ends = f"; loss {percent(cause.low, False)} in its lowest, {percent(cause.high, False)} in its highest quarter"

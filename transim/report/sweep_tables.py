@@ -104,7 +104,9 @@ def _map(outcome: SweepOutcome, driver: str) -> Iterator[str]:
     yield ""
     names = Column("", tuple(value_text(value, slow.unit) for value in slow.values), right=True)
     columns = [
-        Column(value_text(value, fast.unit), tuple(map(_cell, margins[:, k].tolist(), words[:, k].tolist())), right=True)
+        Column(
+            value_text(value, fast.unit), tuple(map(_cell, margins[:, k].tolist(), words[:, k].tolist())), right=True
+        )
         for k, value in enumerate(fast.values)
     ]
     while columns:

@@ -125,7 +125,9 @@ def _obstacle(obstacle: Obstacle) -> str:
         )
     if obstacle.nearest is None:
         return f"Cannot be met: {name}, is undefined at every simulated point"
-    return f"Cannot be met: {name}; the nearest of all simulated points misses it by {percent(-obstacle.nearest, False)}"
+    return (
+        f"Cannot be met: {name}; the nearest of all simulated points misses it by {percent(-obstacle.nearest, False)}"
+    )
 
 
 def _sensitivity_lines(outcome: TuneOutcome) -> Iterator[str]:

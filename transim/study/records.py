@@ -7,8 +7,10 @@ from dataclasses import replace
 
 import numpy as np
 
+from transim.design.model import Design
 from transim.envelope.junction import Array
 from transim.envelope.stationary import Complex
+from transim.measure.definitions import Definitions
 from transim.measure.record import Record
 from transim.measure.rf import LargeSignal, RfStress
 from transim.measure.waveform import Waveform
@@ -77,7 +79,7 @@ def record_of(
         power = Waveform(time, np.sum(delivered, axis=0), "W")
     record = Record(
         timing=case.timeline.timing(passes),
-        definitions=design.definitions,
+        definitions=_definitions(design),
         carrier=frequency,
         impedance=design.carrier.impedance,
         biased_passes=passes,
@@ -107,3 +109,11 @@ def _vector(vectors: Mapping[str, Array], name: str) -> Array:
         if known in vectors:
             return vectors[known]
     raise KeyError(name)
+
+
+def _definitions(design: Design) -> Definitions:
+    """Return the design's definitions; what counts as off is its isolation limit, where it has one."""
+    for limit in design.limits:
+        if limit.metric == "isolation" and limit.min is not None and limit.min > 0.0:
+            return replace(design.definitions, isolation_level=limit.min)
+    return design.definitions

@@ -85,7 +85,7 @@ def spread_values(tolerance: Tolerance, share: Array) -> Array:
         score = ndtri(tail + share * (1.0 - 2.0 * tail)) / tolerance.sigmas
         found = 0.5 * (low + high) + 0.5 * (high - low) * score
     rounded = [float(f"{value:.12g}") for value in found.tolist()]
-    return np.clip(np.array(rounded), low, high)
+    return np.asarray(np.clip(np.array(rounded), low, high))
 
 
 def draw_corners(tolerances: Sequence[Tolerance]) -> Array:

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, replace
+from typing import Literal
 
 import numpy as np
 import numpy.typing as npt
@@ -25,6 +26,8 @@ __all__ = ["Cause", "SpreadOutcome", "Yield", "loss_causes", "run_spread", "yiel
 _CLASSES = 8
 #: Trials that a class needs.
 _FEWEST = 5
+#: With fewer lost or good trials than this the loss itself tells nothing, and the smallest margin is looked at.
+_TELLING = 10
 
 
 @dataclass(frozen=True)
@@ -64,15 +67,18 @@ class Cause:
     name : str
         Parameter, or the lot and its parameters.
     share : float
-        Share of the variance of the loss that goes with it, 0 .. 1; of the smallest margin where nothing is lost.
+        Share of the variance that goes with it, 0 .. 1: of the loss, or of the smallest margin (`of`).
     low, high : float
         Loss among the lowest and among the highest quarter of its values, 0 .. 1.
+    of : {"loss", "margin"}
+        What is explained; the margin where ten trials are not lost, or ten not good.
     """
 
     name: str
     share: float
     low: float
     high: float
+    of: Literal["loss", "margin"] = "loss"
 
 
 @dataclass(frozen=True)
@@ -255,21 +261,20 @@ def loss_causes(table: Table, tolerances: Sequence[Tolerance]) -> tuple[Cause, .
     """
     sound = ~table.failed
     loss = (~table.good[sound]).astype(float)
-    wanted = loss
-    if loss.size and loss.min() == loss.max():
-        wanted = np.where(np.isfinite(table.margin[sound]), table.margin[sound], np.nan)
+    of: Literal["loss", "margin"] = "loss" if _TELLING <= loss.sum() <= loss.size - _TELLING else "margin"
+    wanted = loss if of == "loss" else table.margin[sound]
     found: dict[object, list[tuple[Tolerance, Cause]]] = {}
     for place, tolerance in enumerate(tolerances):
         values = table.values[sound, place]
         low, high = _quarters(values, loss)
-        cause = Cause(tolerance.parameter, _explained(values, wanted), low, high)
+        cause = Cause(tolerance.parameter, _explained(values, wanted), low, high, of)
         found.setdefault(tolerance.lot or (place,), []).append((tolerance, cause))
     causes = []
     for key, group in found.items():
         best = max((cause for _, cause in group), key=lambda cause: cause.share)
         if len(group) > 1:
             names = ", ".join(tolerance.parameter for tolerance, _ in group)
-            best = Cause(f"lot {key} ({names})", best.share, best.low, best.high)
+            best = replace(best, name=f"lot {key} ({names})")
         causes.append(best)
     return tuple(sorted(causes, key=lambda cause: -cause.share))
 
