@@ -1,9 +1,11 @@
 """The expanded listing read into elements.
 
-Outside reference: the text below is what ngspice 39 itself printed for ``listing expand`` but for blanks at line ends;
-that it still prints so is checked in tests/spice. Multipliers and defaults are those of the ngspice 39 manual, chapters 3
+Outside reference: tests/listing/printed.txt is what ngspice 39 itself printed for ``listing expand`` of the netlist
+beside it; that it still prints so is checked in tests/spice. Multipliers and defaults are those of the ngspice 39 manual, chapters 3
 to 8.
 """
+
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -13,47 +15,7 @@ from transim.envelope.diode import DiodeLaw
 from transim.envelope.transistor import TransistorLaw
 from transim.errors import LinearisationError, NetlistError
 
-LISTING = """
-Note: No compatibility mode selected!
-
-
-Circuit: * listing
-
-	* listing
-
-     5 : r.xa.r1 p xa.m   3.000000000000000e+03
-     6 : l.xa.l1 xa.m xa.n 1e-6 ic=0
-     7 : l.xa.l2 xa.n q 2u
-     8 : k.xa.k1 l.xa.l1 l.xa.l2 0.5
-     9 : c.xa.c1 p q 1p
-    12 : b.xa.brb p q i= v(p,q) / (   1.0000000000e+03 * (   1.0000000000e+00 + v(p) * v(p) ) ) reciproctc=1 reciprocm=0
-    14 : e.xa.ecb xa.cb_int1 0 q p 1
-    15 : c.xa.ccb xa.cb_int1 0 1
-    17 : b.xa.bcb p q i= i(e.xa.ecb) * (   1.0000000000e-12 * (   1.0000000000e+00 + v(p) ) ) reciproctc=1
-    18 : .model xa:dj d(is=    3.000000000000000e-14     tt=1u)
-    19 : d.xa.d1 p q xa:dj
-    20 : d.xa.d2 p q xa:dj 2
-    21 : d.xa.d3 p q xa:dj area=3 m=2 off
-    22 : q.xa.q1 p q 0 xa:qj
-    23 : q.xa.q2 p q 0 0 xa:qj 2
-    24 : q.xa.q3 p q 0 xa:qj area=2 m=3
-    25 : .model xa:qj npn(is=1e-15 bf=100)
-    28 : v1 p 0 1
-    29 : i1 q gnd 1m
-    30 : e1 e 0 p q 2.5
-    31 : g1 g 0 p q 1m
-    32 : f1 f 0 v1 3
-    33 : h1 h 0 v1 50
-    40 : r8 q 0 10 m=2
-    41 : c9 q 0 1p m=2
-    42 : l9 q 0 1u m=2
-    43 : g9 g 0 p q 1m m=2
-    44 : f9 f 0 v1 3 m=2
-    46 : b1 b 0 v= v(p,q) * max ( v(p) ,   0.0000000000e+00 )
-    47 : b9 b 0 i= v(p) *   2.0000000000e+00 m=3
-    48 : brc b 0 i= v(b, 0) / (   1.0000000000e+02 ) m=2.00000000e+00 reciproctc=1 reciprocm=0
-    67 : .end
-"""
+LISTING = Path(__file__).with_name("listing").joinpath("printed.txt").read_text()
 
 
 @pytest.fixture(scope="module")
@@ -64,7 +26,7 @@ def circuit() -> Circuit:
 def test_everything_is_read(circuit):
     assert circuit.refused == ()
     assert [len(some) for some in (circuit.elements, circuit.couplings, circuit.devices, circuit.behaviourals)] == [
-        17, 1, 6, 5,
+        21, 1, 6, 5,
     ]  # fmt: skip
 
 
@@ -84,7 +46,7 @@ def test_everything_is_read(circuit):
         Element("r8", ("q", "0"), 5.0),
         Element("c9", ("q", "0"), 2e-12),
         Element("l9", ("q", "0"), 0.5e-6),
-        Element("g9", ("g", "0", "p", "q"), 2e-3),
+        Element("g9", ("g", "0", "b", "q"), 2e-3),
         Element("f9", ("f", "0"), 6.0, "v1"),
     ],
     ids=lambda element: element.name,
@@ -140,11 +102,11 @@ def test_behavioural_capacitor_is_a_capacitance_times_the_current_of_one_farad(c
 
 def test_multiplier_of_a_behavioural_current(circuit):
     assert value(circuit, "b9", v_p=1.5) == (pytest.approx(9.0), {"v:p": pytest.approx(6.0)})
-    assert value(circuit, "brc", v_b=1.0)[0] == pytest.approx(0.02)
+    assert value(circuit, "brc", v_b9=1.0, v_p=0.0)[0] == pytest.approx(0.02)
 
 
 def test_nodes_are_those_of_the_elements_without_ground(circuit):
-    assert set(circuit.nodes) == {"p", "q", "b", "e", "f", "g", "h", "xa.m", "xa.n", "xa.cb_int1"}
+    assert set(circuit.nodes) == {"p", "q", "b", "b9", "e", "f", "g", "h", "xa.m", "xa.n", "xa.cb_int1"}
 
 
 def one(line: str) -> Circuit:
@@ -206,9 +168,13 @@ def test_what_changes_the_small_signal_form_unseen_is_refused(line, law, words):
 
 
 def test_refusals_do_not_stop_what_can_be_read():
-    found = read_listing(LISTING.replace("67 : .end", "66 : m1 p q 0 0 mm\n    67 : .end"))
-    assert len(found.elements) == 17
+    found = read_listing(LISTING + "    99 : m1 p q 0 0 mm\n")
+    assert len(found.elements) == 21
     assert [str(refusal).split(":")[0] for refusal in found.refused] == ["M1"]
+
+
+def test_other_names_of_ground():
+    assert one("r1 p gnd 5").elements[0].nodes == ("p", "0")
 
 
 def test_zero_ohm_is_what_ngspice_makes_of_it():

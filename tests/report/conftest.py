@@ -1,5 +1,6 @@
 """A run that no engine made: drivers whose RF is a single pole, so that every instant is known in closed form."""
 
+import functools
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -12,6 +13,7 @@ from transim.circuit.timeline import timeline_of
 from transim.design.toml import read_design
 from transim.engine.rawfile import Plot
 from transim.measure import Record, Waveform, extract, judge
+from transim.report.page import page_text
 from transim.study.run import Outcome
 from transim.study.simulate import CaseRun, Result
 
@@ -53,16 +55,28 @@ class Invented:
     spike: float = SPIKE
 
 
-@pytest.fixture
-def invent(tmp_path):
-    """Return a function that makes a run."""
+@pytest.fixture(scope="session")
+def invent(tmp_path_factory):
+    """Return a function that makes a run; the same one for the same arguments."""
 
+    @functools.cache
     def make(title='"Reed, arm 2"', points=1500, comment="") -> Invented:
-        file = Path(tmp_path / "reed.toml")
+        file = Path(tmp_path_factory.mktemp("invented") / "reed.toml")
         file.write_text(f"{comment}\n{DESIGN.replace('TITLE', title)}", encoding="utf-8")
         design = read_design(file)
         cases = tuple(_case(design, driver, TAUS[driver.name], points) for driver in design.drivers)
         return Invented(Outcome(design, "ngspice 39", cases))
+
+    return make
+
+
+@pytest.fixture(scope="session")
+def page_of(invent):
+    """Return a function that gives the page of a run."""
+
+    @functools.cache
+    def make(*arguments) -> str:
+        return page_text(invent(*arguments).outcome)
 
     return make
 

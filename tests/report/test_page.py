@@ -13,8 +13,8 @@ import pytest
 
 from transim.errors import OutputError
 from transim.report.cycle import cycles_of
-from transim.report.page import page_text, require_page
-from transim.report.panels import MOST_POINTS, panels_of
+from transim.report.page import require_page
+from transim.report.panels import MOST_POINTS, panels_of, thinned_note
 from transim.report.places import Places
 
 MEGABYTE = 1_000_000
@@ -44,8 +44,8 @@ class Reader(HTMLParser):
             self.tags.append(f"/{tag}")
 
 
-def test_page_has_its_parts_in_order(invent):
-    text = page_text(invent().outcome)
+def test_page_has_its_parts_in_order(page_of):
+    text = page_of()
     words = " ".join(" ".join(Reader(text).text).split())
     heads = re.findall(r"<h2>(.*?)</h2>", text)
     assert heads == [
@@ -63,38 +63,38 @@ def test_page_has_its_parts_in_order(invent):
     assert 'on_for = "2 us"' in words
 
 
-def test_page_loads_nothing(invent):
-    reader = Reader(page_text(invent().outcome))
+def test_page_loads_nothing(page_of):
+    reader = Reader(page_of())
     assert [place for place in reader.loads if not place.startswith(("#", "data:,"))] == []
-    style = re.findall(r"<style>(.*?)</style>", page_text(invent().outcome), flags=re.DOTALL)
+    style = re.findall(r"<style>(.*?)</style>", page_of(), flags=re.DOTALL)
     assert not re.search(r"@import|url\(", " ".join(style))
 
 
-def test_a_design_file_cannot_put_markup_into_the_page(invent):
+def test_a_design_file_cannot_put_markup_into_the_page(page_of):
     hostile = "</pre></script><script>alert(2)</script><img src=x onerror=alert(3)>{{ 7 * 7 }}"
-    calm = Reader(page_text(invent("'calm'").outcome))
-    reader = Reader(page_text(invent("'<script>alert(1)</script> & <b>'", comment=f"# {hostile}").outcome))
-    assert reader.tags == calm.tags
+    reader = Reader(page_of("'<script>alert(1)</script> & <b>'", 1500, f"# {hostile}"))
+    assert reader.tags == Reader(page_of()).tags
     words = "".join(reader.text)
     assert "<script>alert(1)</script> & <b>" in words
     assert hostile in words
 
 
-def test_page_stays_below_three_megabytes(invent):
-    outcome = invent(points=MOST_POINTS).outcome
+def test_page_stays_below_three_megabytes(invent, page_of):
+    arguments = ("'<script>alert(1)</script>'", MOST_POINTS)
+    outcome = invent(*arguments).outcome
     long = [trace for panel in panels_of(cycles_of(outcome)) for _, trace in panel.traces]
     assert sum(trace.time.size == MOST_POINTS for trace in long) >= 6
-    assert len(page_text(outcome).encode()) < 3 * MEGABYTE
+    assert len(page_of(*arguments).encode()) < 3 * MEGABYTE
 
 
 def test_a_long_run_is_thinned_and_says_so(invent):
-    outcome = invent(points=40_001).outcome
-    words = " ".join("".join(Reader(page_text(outcome)).text).split())
-    assert re.search(r"at most \d+ of up to \d+ samples", words)
-    for panel in panels_of(cycles_of(outcome)):
+    cycles = cycles_of(invent(points=40_001).outcome)
+    panels = panels_of(cycles)
+    assert re.search(r"at most \d+ of up to \d+ samples", thinned_note(panels, cycles))
+    for panel in panels:
         for _, trace in panel.traces:
             assert trace.time.size <= MOST_POINTS
-    leakage = next(panel for panel in panels_of(cycles_of(outcome)) if panel.name == "voltage at p1")
+    leakage = next(panel for panel in panels if panel.name == "voltage at p1")
     assert np.max(leakage.traces[0][1].value) == pytest.approx(0.1, rel=0.02)
 
 
@@ -123,9 +123,13 @@ def test_figures_beside_the_results(tmp_path):
 
 
 def test_nothing_appears_after_an_error(tmp_path):
-    with pytest.raises(ZeroDivisionError), Places(tmp_path / "out", tmp_path / "figures", None) as places:
-        (places.figures / "a.png").write_text("a")
-        raise ZeroDivisionError
+    def interrupted():
+        with Places(tmp_path / "out", tmp_path / "figures", None) as places:
+            (places.figures / "a.png").write_text("a")
+            raise ZeroDivisionError
+
+    with pytest.raises(ZeroDivisionError):
+        interrupted()
     assert list(tmp_path.iterdir()) == []
 
 

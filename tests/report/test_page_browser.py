@@ -9,7 +9,7 @@ import shutil
 
 import pytest
 
-from transim.report.page import page_text
+from transim.report.panels import MOST_POINTS
 
 OPTIONS = ["--headless", "--no-sandbox", "--disable-gpu", "--disable-quic", "--no-first-run", "--disable-background-networking", "--disable-component-update", "--disable-sync", "--disable-default-apps"]
 TITLE = "<script>alert(1)</script>"
@@ -36,13 +36,13 @@ def browser():
 
 
 @pytest.fixture
-def opened(browser, invent, tmp_path):
+def opened(browser, page_of, tmp_path):
     """Return a function that opens the page of a run, and what the page said, asked for and popped up."""
     contexts = []
 
     def open_page(width=1280, **options):
         file = tmp_path / "page.html"
-        file.write_text(page_text(invent(f"'{TITLE}'", points=5000).outcome), encoding="utf-8")
+        file.write_text(page_of(f"'{TITLE}'", MOST_POINTS), encoding="utf-8")
         context = browser.new_context(viewport={"width": width, "height": 900}, **options)
         contexts.append(context)
         page = context.new_page()

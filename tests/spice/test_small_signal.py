@@ -77,7 +77,8 @@ TRANSISTORS = {
     "nominal temperature": "npn is=1e-15 tnom=60 bf=90 xtb=1 cje=3p cjc=2p tf=.3n",
     "split collector junction": "npn is=1e-15 cjc=3p xcjc=0.25 rb=80 rc=4 tr=10n",
     "area of a pnp": "pnp is=1e-16 isc=1e-13 br=3 ikr=1m cjc=1p tr=1n xcjc=0.5",
-    "area and multiplier": "npn is=1e-16 ikf=5m ise=1e-14 rb=100 rc=10 re=1 cje=1p cjc=1p tf=1n xtf=2 itf=5m irb=1m rbm=20",
+    "area and multiplier": "npn is=1e-16 ikf=5m ise=1e-14 rb=100 rc=10 re=1 cje=1p cjc=1p tf=1n xtf=2 itf=5m irb=1m "
+    "rbm=20",
 }
 #: Base and collector against the emitter [V], as an NPN has them: active, saturated, reverse, blocked.
 BIASES = [

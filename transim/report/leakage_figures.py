@@ -24,7 +24,7 @@ Array = npt.NDArray[np.float64]
 #: Frequencies in a decade that the spectrum is averaged around, and instances in each average.
 _DECADE, _AVERAGED = 60, 6
 #: Most terms of Fourier sums in one spectrum.
-_EFFORT = 4e7
+_EFFORT = 2e7
 #: What is shown below the highest power [dB].
 _DEPTH = 110.0
 

@@ -59,6 +59,8 @@ class Plan:
         -------
         Setup
         """
+        # the sweep of the settled states over frequency is no figure of a point
+        design = design.model_copy(update={"static": None})
         return Setup(design, tuple(parameters), tuple(drivers), self.analysis, self.ngspice, self.engine.version)
 
     def say(self, text: str) -> None:

@@ -14,6 +14,7 @@ import numpy as np
 from transim.circuit.decks import Tone, carrier_deck
 from transim.engine.rawfile import Plot
 from transim.envelope.carrier import extract_envelope
+from transim.errors import EngineError
 from transim.measure.rf import RfStress
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
@@ -71,7 +72,12 @@ class TurnOnProbe:
                 f"at {level} the RF across a conducting junction reaches {stress.modulation:.2g} N Vt during a "
                 "transition; whether that moves on_time, the carrier analysis tells",
             )
-        found = self._measure(stress.level)
+        try:
+            found = self._measure(stress.level)
+        except EngineError as error:
+            # the envelope analysis stands without its probe
+            reason = error.message.splitlines()[0]
+            return (f"at {level} the RF may move its turn-on, and a probe of it failed ({reason})",)
         small = format_quantity(self._on_time, "s")
         if found is None:
             return (
