@@ -90,9 +90,9 @@ def test_goal_is_made_best_within_the_limits():
 
 
 def test_without_a_feasible_point_the_nearest_one_is_found():
-    best = max(min(margins(a, b, tight=0.5)) for a, b in itertools.product(CAPACITORS, CAPACITORS))
+    best = max(min(margins(a, b, tight=0.4)) for a, b in itertools.product(CAPACITORS, CAPACITORS))
     assert best < 0.0
-    evaluate = Counted((CAPACITORS, CAPACITORS), lambda a, b: Assessment(margins(a, b, tight=0.5)))
+    evaluate = Counted((CAPACITORS, CAPACITORS), lambda a, b: Assessment(margins(a, b, tight=0.4)))
     search = Search((49, 49), evaluate, runs=240, seed=1)
     search.run()
     assert not search.known[search.best].feasible

@@ -125,8 +125,8 @@ def test_loss_itself_is_explained_where_there_is_enough_of_it():
     good = values[:, 1] < 0.5
     first, second = loss_causes(trials(values, good, np.full(2000, np.nan)), some)
     assert (first.name, first.of) == ("b", "loss")
-    # the limit lies on a class border: the classes explain all of it
-    assert first.share > 0.95
+    # the limit lies on a class border, but for the few trials that chance puts on its other side
+    assert first.share > 0.9
     assert (first.low, first.high) == (0.0, pytest.approx(1.0, abs=0.1))
     assert second.share < 0.02
 

@@ -27,7 +27,9 @@ _EXPLORING = 2
 #: Rounds without a better point before a search with known neighbours ends.
 _PATIENCE = 3
 #: Grids up to this size are predicted as a whole.
-_WHOLE = 60_000
+_WHOLE = 10_000
+#: Of larger ones, as many points, and a tenth of it around each of the best, in every round.
+_SAMPLED = 10_000
 _CHUNK = 8192
 #: A margin that is undefined counts as this.
 _UNDEFINED = -3.0
@@ -187,13 +189,13 @@ class Search:
     def _candidates(self, best: Index) -> list[Index]:
         if int(np.prod(self.lengths, dtype=float)) <= _WHOLE:
             return [index for index in itertools.product(*map(range, self.lengths)) if index not in self.known]
-        everywhere = self._anywhere(20_000)
+        everywhere = self._anywhere(_SAMPLED)
         ranked = sorted(
             (index for index, found in self.known.items() if found is not None), key=self._rank, reverse=True
         )
         near = []
         for centre in dict.fromkeys([best, *ranked[:4]]):
-            steps = self._rng.integers(-3, 4, size=(2000, len(centre)))
+            steps = self._rng.integers(-3, 4, size=(_SAMPLED // 10, len(centre)))
             moved = np.clip(np.array(centre) + steps, 0, np.array(self.lengths) - 1)
             near += [tuple(map(int, row)) for row in moved]
         return [index for index in dict.fromkeys([*near, *everywhere]) if index not in self.known]
