@@ -119,7 +119,6 @@ def one(line: str) -> Circuit:
         ("m1 d g 0 0 mm", "M1", "MOSFET"),
         ("j1 p q 0 jm", "J1", "JFET"),
         ("z1 p q 0 zm", "Z1", "MESFET"),
-        ("t1 p 0 t2 0 z0=50 td=1n", "T1", "transmission line"),
         ("o1 p 0 t2 0 om", "O1", "lossy transmission line"),
         ("s1 p q q 0 sw", "S1", "voltage-controlled switch"),
         ("w1 p q v1 sw", "W1", "current-controlled switch"),

@@ -14,8 +14,9 @@ from hypothesis import strategies as st
 
 from transim.circuit.assemble import RfPort
 from transim.circuit.elements import read_listing
+from transim.envelope.bias import Bias
 from transim.envelope.frozen import changing_points, solve_frozen
-from transim.envelope.linearise import Bias, linearise, saved_vectors
+from transim.envelope.linearise import linearise, saved_vectors
 from transim.errors import LinearisationError, RawFileError
 
 Z0 = 50.0
@@ -240,6 +241,15 @@ def test_a_flat_stretch_needs_two_points():
 def test_leaving_points_out_does_not_show(conductance):
     found = solve_frozen(walk(conductance), PORTS, [1e8]).s[0, :, 1, 0]
     assert np.abs(found - 100.0 / (100.0 + 1.0 / conductance)).max() < 1e-3
+
+
+def test_interpolation_between_the_points_that_are_solved():
+    conductance = np.geomspace(1e-6, 1.0, 20001)
+    changing = walk(conductance)
+    assert changing_points(changing).size < 0.8 * conductance.size
+    found = solve_frozen(changing, PORTS, [1e8]).s[0, :, 1, 0]
+    # the square of a change by 0.2 %
+    assert np.abs(found - 100.0 / (100.0 + 1.0 / conductance)).max() < 4e-6
 
 
 @settings(deadline=None)

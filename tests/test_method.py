@@ -11,7 +11,8 @@ import pytest
 
 from transim.circuit.assemble import RfPort
 from transim.circuit.elements import read_listing
-from transim.envelope.linearise import Bias, linearise
+from transim.envelope.bias import Bias
+from transim.envelope.linearise import linearise
 from transim.envelope.method import Transition, solve_envelope
 
 PORTS = (RfPort("p1", "vport_p1", 50.0), RfPort("p2", "vport_p2", 50.0))

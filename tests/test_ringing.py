@@ -13,8 +13,9 @@ from scipy.integrate import cumulative_simpson, solve_ivp
 
 from transim.circuit.assemble import RfPort
 from transim.circuit.elements import read_listing
+from transim.envelope.bias import Bias
 from transim.envelope.frozen import solve_frozen
-from transim.envelope.linearise import Bias, linearise
+from transim.envelope.linearise import linearise
 from transim.envelope.ringing import solve_ringing
 
 CARRIER = 100e6

@@ -223,6 +223,7 @@ def _study(command: _Command) -> _Command:
         click.option("--workers", type=click.IntRange(1, 1024), metavar="N", help="Processes; else one a processor."),
         click.option("--cluster", metavar="ADDRESS", help="A Dask scheduler whose workers simulate the points."),
         click.option("--out", type=_PATH, metavar="DIR", help="Folder of the study; else named after DESIGN."),
+        click.option("--figures", type=_PATH, metavar="DIR", help="Folder for figures, PNG and SVG."),
         click.option("--resume", is_flag=True, help="Go on with a study, and fail where there is none."),
         click.option("--force", is_flag=True, help="Discard another study in the folder."),
         _drivers,

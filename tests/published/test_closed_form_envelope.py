@@ -17,9 +17,12 @@ of 3 ns takes the current from -10 to 10 mA: the charge grows from its middle, a
 a rise.
 """
 
+import json
+
 import numpy as np
 import pytest
 
+from transim.cli import main
 from transim.design.toml import read_design
 from transim.study.run import run_design
 
@@ -114,11 +117,12 @@ def results(engine, tmp_path_factory):
             if path.endswith("bare"):
                 carrier = design.carrier.model_copy(update={"frequency": (1e14,)})
                 design = design.model_copy(update={"carrier": carrier})
-            done[path] = run_design(design, engine)
-        (case,) = done[path].cases
+            done[path] = run_design(design, engine), file
+        outcome, file = done[path]
+        (case,) = outcome.cases
         (result,) = case.results
         assert result.faults == ()
-        return result, case
+        return result, case, file
 
     return run
 
@@ -181,6 +185,15 @@ def test_series_by_the_shipped_path(results, name):
     assert found == pytest.approx(SERIES[name], rel=0.01)
 
 
+def test_series_by_the_command_line(results, capsys):
+    file = results("series_single")[2]
+    assert main(["run", str(file), "--json", "-"]) == 0
+    document = json.loads(capsys.readouterr().out)
+    (result,) = document["results"]
+    for name in ("on_time", "off_delay", "off_time"):
+        assert result["metrics"][name]["value"] == pytest.approx(SERIES[name], rel=0.01)
+
+
 def level(case, timeline_lead):
     """Return time from the rising edge of the command and |S21|."""
     (waveform,) = case.envelopes.values()
@@ -197,7 +210,7 @@ def crossing(time, value, threshold, start, stop):
 
 @pytest.mark.parametrize("path", ["shunt_bare", "shunt_single"])
 def test_shunt(results, path):
-    result, case = results(path)
+    result, case, _ = results(path)
     time, value = level(case, PULSE / 50.0 + EDGE)
     intrinsic = INTRINSIC if path == "shunt_bare" else 2e3
     for share in (0.9, 0.5):

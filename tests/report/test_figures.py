@@ -168,7 +168,9 @@ def test_map_hatches_what_is_not_feasible():
     x, y = Quantity("a", "F", np.arange(1.0, 5.0) * 1e-12), Quantity("b", "ohm", np.array([10.0, 20.0, 30.0]))
     figure = sweep_map_figure("Reed", x, y, Quantity("on_time", "s", z), feasible)
     axes = figure.axes[0]
-    assert len([patch for patch in axes.patches if patch.get_hatch()]) == int((~feasible).sum())
+    hatched = [patch for patch in axes.patches if patch.get_hatch() and patch.get_edgecolor()[:3] == (1.0, 1.0, 1.0)]
+    # cells are 1 pF wide and 10 ohm high
+    assert sum(patch.get_width() * patch.get_height() for patch in hatched) == pytest.approx(10.0 * (~feasible).sum())
     crosses = next(line for line in axes.get_lines() if line.get_label() == "_undefined")
     assert (crosses.get_xdata().tolist(), crosses.get_ydata().tolist()) == ([1.0], [10.0])
     assert figure.axes[1].get_ylabel() == "on_time [ns]"

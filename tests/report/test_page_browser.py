@@ -12,6 +12,10 @@ import pytest
 from transim.report.panels import MOST_POINTS
 
 OPTIONS = ["--headless", "--no-sandbox", "--disable-gpu", "--disable-quic", "--no-first-run", "--disable-background-networking", "--disable-component-update", "--disable-sync", "--disable-default-apps"]
+#: Whether the cursor is seen in each panel, and where.
+CURSORS = """Bokeh.documents[0].roots().map((plot) => {
+const cursor = plot.toolbar.tools.find((tool) => tool.type === "CrosshairTool").overlay;
+return [cursor.visible, Number(cursor.location.toPrecision(5))]; })"""
 TITLE = "<script>alert(1)</script>"
 
 
@@ -124,6 +128,7 @@ def test_the_cursor_reads_values(opened):
         assert float(words[0].removesuffix(" us")) == pytest.approx(1.0, abs=0.01)
         read = {text.split(": ")[0]: float(re.search(r": (\S+) ", text)[1]) for text in words[1:]}
         assert read == pytest.approx(expected, rel=1e-6)
+        assert page.evaluate(CURSORS) == [[True, float(words[0].removesuffix(" us"))]] * len(names)
 
 
 def test_a_driver_can_be_hidden(opened):

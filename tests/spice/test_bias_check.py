@@ -26,6 +26,7 @@ on_for = "1 us"
 period = "3 us"
 [carrier]
 frequency = ["50 MHz", "400 MHz"]
+level = "-70 dBm"
 [switch]
 path = "{path}"
 junction = "{junction}"

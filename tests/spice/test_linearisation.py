@@ -9,8 +9,9 @@ import pytest
 
 from transim.circuit.assemble import RfPort
 from transim.circuit.elements import read_listing
+from transim.envelope.bias import Bias
 from transim.envelope.frozen import solve_frozen
-from transim.envelope.linearise import Bias, linearise, saved_vectors
+from transim.envelope.linearise import linearise, saved_vectors
 from transim.envelope.stationary import largest_difference, read_scattering
 
 PORTS = (RfPort("p1", "vport_p1", 50.0), RfPort("p2", "vport_p2", 50.0))

@@ -34,7 +34,7 @@ def test_everything_in_it_is_read(log):
     [
         ("M1 a b 0 0 mm\n.model mm nmos", "M1", "MOSFET"),
         ("J1 a b 0 jm\n.model jm njf", "J1", "JFET"),
-        ("T1 a 0 b 0 z0=50 td=1n", "T1", "transmission line"),
+        ("O1 a 0 b 0 om\n.model om ltra(r=0.1 l=9n c=3.6p len=1)", "O1", "lossy transmission line"),
         ("S1 a b b 0 sw\n.model sw sw(vt=1)", "S1", "voltage-controlled switch"),
         ("E1 b 0 poly(1) a 0 1 2 3", "A$POLY$E1", "code model"),
         ("R9 a b 10 tc1=1e-3", "R9", "tc1"),

@@ -7,12 +7,22 @@ import socket
 import subprocess
 import sys
 import time
+from pathlib import Path
 
+import numpy as np
 import pytest
 import tasks
+from pole import DESIGN, PART
 
+from transim.design.studies import Sweep
+from transim.design.toml import read_design
+from transim.design.vary import study_of
+from transim.engine import find_engine
 from transim.errors import StudyError
 from transim.study.cluster import ClusterPool
+from transim.study.plan import Plan
+from transim.study.study import Place, Workers
+from transim.study.sweep import run_sweep
 
 
 def free_port():
@@ -77,3 +87,30 @@ def test_a_scheduler_that_is_not_there(monkeypatch):
     ):
         pass
     assert time.monotonic() - start < 20.0
+
+
+def test_a_study_that_loses_a_worker_ends_complete_and_equal(cluster, tmp_path, monkeypatch):
+    address, workers = cluster
+    monkeypatch.chdir(tmp_path)
+    Path("pole_gate.cir").write_text(PART)
+    Path("pole.toml").write_text(DESIGN.replace("LIMIT", "250 ns"))
+    design, engine = read_design("pole.toml"), find_engine()
+    sweep = study_of(design, Sweep, ["switch.resistance = 500 ohm .. 2 kohm, linear 40"])
+
+    def kill(advance):
+        if advance.done == 12:
+            os.kill(workers[1].pid, signal.SIGKILL)
+
+    outcomes = {}
+    for name, where, told in (("here", Workers(2), None), ("there", Workers(cluster=address), kill)):
+        plan = Plan(engine, Place(tmp_path / name), where, advanced=told)
+        outcomes[name] = run_sweep(design, sweep, plan)
+    assert workers[1].wait(5) == -signal.SIGKILL
+    here, there = outcomes["here"].table, outcomes["there"].table
+    assert here.places == there.places
+    assert not there.failed.any()
+    assert len(here.places) == 40
+    # bit for bit
+    for name, values in here.figures.items():
+        assert np.array_equal(values, there.figures[name], equal_nan=True), name
+    assert (tmp_path / "here" / "table.csv").read_bytes() == (tmp_path / "there" / "table.csv").read_bytes()

@@ -3,9 +3,8 @@
 Outside reference: Python's own arithmetic; signal(7) for how a process ended.
 """
 
-import tasks
-
 import pytest
+import tasks
 
 from transim.errors import EngineNotFound, StudyError
 from transim.study.pool import ATTEMPTS, LocalPool, Lost

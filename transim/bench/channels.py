@@ -8,8 +8,8 @@ from dataclasses import dataclass, field
 import numpy as np
 import numpy.typing as npt
 
-from transim.bench.cycle import Channels
 from transim.bench.records import Table
+from transim.bench.setup import Channels
 from transim.quantities import format_quantity
 
 __all__ = ["Columns", "read_channels"]
@@ -133,21 +133,23 @@ def _even(table: Table, time: Array, traces: dict[str, Array], index: int) -> tu
         raise table.refuse(f"column {table.names[index]}: time does not increase after {at}", line=line)
     step = span / (count - 1)
     even = time[0] + step * np.arange(count)
-    if np.abs(time - even).max() <= max(0.02 * step, 0.6 * _resolution(time)):
+    if np.abs(time - even).max() <= max(0.02 * step, _rounding(time, step)):
         return even, traces
     forward = np.concatenate([[True], np.diff(time) > 0.0])
     time = time[forward]
-    fine = int(min(_LARGEST, max(count, span / float(np.quantile(np.diff(time), 0.05))))) + 1
+    fine = int(min(_LARGEST, max(count - 1, span / float(np.quantile(np.diff(time), 0.05))))) + 1
     even = np.linspace(time[0], time[-1], fine)
     return even, {name: np.interp(even, time, trace[forward]) for name, trace in traces.items()}
 
 
-def _resolution(time: Array) -> float:
-    """Return the step that printed instants are rounded to, as their distances show it."""
-    distances = np.sort(np.diff(time))
-    apart = np.diff(distances)
-    apart = apart[apart > 1e-3 * distances[-1]]
-    return float(apart.min()) if apart.size else 0.0
+def _rounding(time: Array, step: float) -> float:
+    """Return how far printed instants may lie from an even axis because they are rounded."""
+    distances = np.diff(time)
+    apart = np.diff(np.sort(distances))
+    apart = apart[apart > 1e-3 * distances.max()]
+    resolution = float(apart.min()) if apart.size else 0.0
+    # rounding makes neighbouring distances of two sizes; where there are more, the axis is truly uneven
+    return resolution if float(np.ptp(distances)) < 1.5 * resolution < 15.0 * step else 0.0
 
 
 def _line_of_row(table: Table, row: int) -> int:

@@ -12,8 +12,9 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from transim.bench.cycle import Cycle, Levels
+from transim.bench.cycle import Cycle
 from transim.bench.detectors import KINDS, Detector
+from transim.bench.setup import Levels
 from transim.bench.uncertainty import Estimate
 from transim.errors import RecordError
 from transim.measure.definitions import Definitions, Timing

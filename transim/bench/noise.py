@@ -98,10 +98,11 @@ def _correlation(rows: Array, sigma: float, span: float) -> int:
     basis /= np.linalg.norm(basis, axis=1, keepdims=True)
     rest = blocks - (blocks @ basis.T) @ basis
     power = (rest**2).mean(axis=1)
-    alive = power > (_FLOOR * span) ** 2
-    if not alive.any():
+    order = np.argsort(power)[: _BLOCKS // 4]
+    # noise is everywhere; what leaves stretches untouched is the tail of a signal
+    if power[order[0]] < (_FLOOR * span) ** 2:
         return 1
-    quiet: Array = rest[alive][np.argsort(power[alive])[: max(4, _BLOCKS // 4)]]
+    quiet: Array = rest[order]
     energy = float((quiet**2).sum())
     for lag in range(1, min(33, count // 512 + 1)):
         if float((quiet[:, lag:] * quiet[:, :-lag]).sum()) < 0.2 * energy:

@@ -194,8 +194,12 @@ def _body(part: Part, card: str | None, name: str | None = None) -> str:
         text = re.sub(rf"(?im)^(\.subckt\s+){re.escape(part.name)}\b", rf"\g<1>{name}", text, count=1)
     if card is None or part.model is None:
         return text
-    own = re.compile(rf"(?im)^\.model\s+{re.escape(part.model.name)}\b.*(?:\n\+.*)*\n")
-    return own.sub(lambda _match: card.rstrip() + "\n", text, count=1)
+    given = {line.split()[1].lower(): line for line in card.splitlines()}
+    for place in part.model.places:
+        if place.name in given:
+            own = re.compile(rf"(?im)^\.model\s+{re.escape(place.name)}\b.*(?:\n\+.*)*\n")
+            text = own.sub(lambda _match, line=given[place.name]: f"{line}\n", text, count=1)
+    return text
 
 
 def _slot(slot: Slot, junction: Junction) -> str:

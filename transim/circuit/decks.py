@@ -86,7 +86,8 @@ def deck_head(name: str, origin: Origin, what: Sequence[str], writes_raw: bool) 
         f"* {_UNITS}",
         f"* Run: ngspice -b{option} {name}.cir",
     ]
-    return "\n".join(lines) + "\n"
+    # a title or a file's name must not bring a line of its own
+    return "".join(f"{''.join(c if c.isprintable() else '?' for c in line)}\n" for line in lines)
 
 
 def option_cards(numerics: Numerics, temperature: float, method: str) -> str:

@@ -13,7 +13,7 @@ from dataclasses import dataclass
 from transim.circuit.expression import Expression, ExpressionError, parse_expression, spice_number
 from transim.errors import LinearisationError, NetlistError
 
-__all__ = ["Behavioural", "Circuit", "Coupling", "Device", "Element", "Model", "read_listing"]
+__all__ = ["Behavioural", "Circuit", "Coupling", "Device", "Element", "Line", "Model", "read_listing"]
 
 _LISTED = re.compile(r"^\s*(\d+) : (.*)$")
 _OPTION = re.compile(r"\s(?:reciproctc|reciprocm|tc1|tc2|m|temp|dtemp)\s*=", re.IGNORECASE)
@@ -24,7 +24,6 @@ _REFUSED = {
     "m": "MOSFET",
     "j": "JFET",
     "z": "MESFET",
-    "t": "transmission line",
     "o": "lossy transmission line",
     "u": "RC line",
     "y": "lossy transmission line",
@@ -87,6 +86,16 @@ class Device:
 
 
 @dataclass(frozen=True)
+class Line:
+    """T: lossless line between two ports, each a node pair; characteristic impedance [ohm] and delay [s]."""
+
+    name: str
+    nodes: tuple[str, str, str, str]
+    impedance: float
+    delay: float
+
+
+@dataclass(frozen=True)
 class Behavioural:
     """B: current or voltage source given by an expression; ``quantity`` is ``i`` or ``v``."""
 
@@ -102,8 +111,8 @@ class Circuit:
 
     Attributes
     ----------
-    elements, couplings, devices, behaviourals : tuple
-        In the order of the listing.
+    elements, couplings, devices, behaviourals, delays : tuple
+        In the order of the listing; `delays` are the lines.
     refused : tuple of LinearisationError
         Elements that have no small-signal form here, each with its reason; not raised yet, so that decks
         of such circuits still run.
@@ -117,12 +126,14 @@ class Circuit:
     behaviourals: tuple[Behavioural, ...]
     refused: tuple[LinearisationError, ...]
     lines: tuple[str, ...]
+    delays: tuple[Line, ...] = ()
 
     @property
     def nodes(self) -> tuple[str, ...]:
         """Every node except ground, in order of appearance."""
         seen: dict[str, None] = {}
-        parts: tuple[Element | Device | Behavioural, ...] = (*self.elements, *self.devices, *self.behaviourals)
+        parts: tuple[Element | Device | Behavioural | Line, ...]
+        parts = (*self.elements, *self.devices, *self.behaviourals, *self.delays)
         for part in parts:
             for node in part.nodes:
                 seen.setdefault(node)
@@ -160,6 +171,7 @@ def read_listing(log: str) -> Circuit:
     couplings: list[Coupling] = []
     devices: list[Device] = []
     behaviourals: list[Behavioural] = []
+    delays: list[Line] = []
     refused: list[LinearisationError] = []
     for line in lines:
         if not line[:1].isalpha():
@@ -177,11 +189,18 @@ def read_listing(log: str) -> Circuit:
             (Coupling, couplings),
             (Device, devices),
             (Behavioural, behaviourals),
+            (Line, delays),
         ):
             if isinstance(part, kind):
                 home.append(part)  # type: ignore[arg-type]
     return Circuit(
-        tuple(elements), tuple(couplings), tuple(devices), tuple(behaviourals), tuple(refused), lines
+        tuple(elements),
+        tuple(couplings),
+        tuple(devices),
+        tuple(behaviourals),
+        tuple(refused),
+        lines,
+        tuple(delays),
     )
 
 
@@ -223,7 +242,9 @@ def _node(name: str) -> str:
     return "0" if lower == "gnd" else lower
 
 
-def _read_element(line: str, models: Mapping[str, Model]) -> Element | Coupling | Device | Behavioural:
+def _read_element(
+    line: str, models: Mapping[str, Model]
+) -> Element | Coupling | Device | Behavioural | Line:
     words = line.split()
     name = words[0].lower()
     letter = name[0]
@@ -231,6 +252,8 @@ def _read_element(line: str, models: Mapping[str, Model]) -> Element | Coupling 
         raise LinearisationError(name.upper(), f"{_REFUSED[letter]} in the circuit; use the carrier analysis")
     if letter == "b":
         return _read_behavioural(name, line)
+    if letter == "t":
+        return _read_line(name, words)
     if letter == "k":
         return Coupling(name, (words[1].lower(), words[2].lower()), spice_number(words[3]))
     if letter in "dq":
@@ -313,3 +336,14 @@ def _split_options(name: str, text: str) -> tuple[str, dict[str, float]]:
     """Cut off the options after an expression; ngspice appends some to what it makes of behavioural R, C and L."""
     match = _OPTION.search(text)
     return (text, {}) if match is None else (text[: match.start()], _assignments(text[match.start() :], name.upper()))
+
+
+def _read_line(name: str, words: list[str]) -> Line:
+    plain, values = _split(words)
+    impedance, delay = values.get("z0", 50.0), values.get("td")
+    if delay is None and "f" in values:
+        delay = values.get("nl", 0.25) / values["f"]
+    if delay is None or len(plain) != 5 or not impedance > 0.0:
+        raise LinearisationError(name.upper(), "a line needs four nodes, z0, and td or f")
+    first, second, third, fourth = map(_node, plain[1:])
+    return Line(name, (first, second, third, fourth), impedance, delay)

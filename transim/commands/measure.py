@@ -12,8 +12,9 @@ from transim.errors import DesignError, MeasurementError, QuantityError
 from transim.quantities import parse_quantity
 
 if TYPE_CHECKING:
-    from transim.bench.cycle import Cycle, Setup
+    from transim.bench.cycle import Cycle
     from transim.bench.records import Table
+    from transim.bench.setup import Setup
     from transim.bench.uncertainty import Estimate
     from transim.design.model import Design
 
@@ -117,8 +118,8 @@ def measure_record(console: Console, request: MeasureRequest) -> int:
 
 
 def _setup(request: MeasureRequest, design: Design | None, table: Table) -> Setup:
-    from transim.bench.cycle import Setup
     from transim.bench.detectors import Detector
+    from transim.bench.setup import Setup
     from transim.measure import Definitions
 
     slope = _quantity("--slope", request.slope, "V", positive=False)

@@ -90,7 +90,9 @@ def run_and_report(console: Console, request: RunRequest) -> int:
     started = time.perf_counter()
     from transim.design.toml import read_design
     from transim.engine import find_engine
+    from transim.report.budget import budget_lines
     from transim.report.cautions import caution_lines
+    from transim.report.pulses import pulse_lines
     from transim.report.ratings import rating_tables
     from transim.report.settled import settled_lines
     from transim.report.tables import metric_tables
@@ -111,7 +113,9 @@ def run_and_report(console: Console, request: RunRequest) -> int:
         document = run_document(outcome, time.perf_counter() - started)
         extra = [] if record is None else _beside(places, outcome, record, document)
         _write(places, outcome, document)
-    blocks = (head_lines, metric_tables, rating_tables, settled_lines, caution_lines, verdict_lines)
+    blocks = (
+        head_lines, metric_tables, pulse_lines, budget_lines, rating_tables, settled_lines, caution_lines, verdict_lines,
+    )  # fmt: skip
     texts = [lines for block in blocks if (lines := block(outcome))]
     texts[-1:-1] = [extra] if extra else []
     console.write([line for lines in texts for line in (*lines, "")][:-1])

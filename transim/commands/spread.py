@@ -53,6 +53,10 @@ def spread_and_report(
         document = spread_document(outcome, str(folder))
         write_whole(folder / "result.json", json_text(document))
         keep_decks(folder, "worst", outcome.worst)
+        if request.figures is not None:
+            from transim.report.study_gallery import spread_figures, write_study_figures
+
+            write_study_figures(request.figures, spread_figures(outcome))
     console.write(spread_lines(outcome, str(folder)))
     console.document(document)
     if not outcome.total.judged:

@@ -44,6 +44,8 @@ class StudyRequest:
         Address of a Dask scheduler.
     out : Path or None
         The study's folder; None: named after the design file.
+    figures : Path or None
+        Folder for figures.
     resume, force : bool
         Whether there must be a study to go on with; whether another one may be discarded.
     ngspice : str or None
@@ -57,6 +59,7 @@ class StudyRequest:
     workers: int | None = None
     cluster: str | None = None
     out: Path | None = None
+    figures: Path | None = None
     resume: bool = False
     force: bool = False
     ngspice: str | None = None

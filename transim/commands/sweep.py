@@ -44,6 +44,10 @@ def sweep_and_report(console: Console, request: StudyRequest) -> int:
         document = sweep_document(outcome, str(folder))
         write_whole(folder / "result.json", json_text(document))
         keep_decks(folder, "best", outcome.best)
+        if request.figures is not None:
+            from transim.report.study_gallery import sweep_figures, write_study_figures
+
+            write_study_figures(request.figures, sweep_figures(outcome))
     console.write(sweep_lines(outcome, str(folder)))
     console.document(document)
     return 0 if outcome.feasible.any() else 1

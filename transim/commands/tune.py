@@ -52,6 +52,10 @@ def tune_and_report(
         document = tune_document(outcome, str(folder))
         write_whole(folder / "result.json", json_text(document))
         keep_decks(folder, "best", outcome.verified)
+        if request.figures is not None:
+            from transim.report.study_gallery import tune_figures, write_study_figures
+
+            write_study_figures(request.figures, tune_figures(outcome))
     console.write(tune_lines(outcome, str(folder)))
     console.document(document)
     return 3 if outcome.verified is None else EXIT[outcome.verified.verdict]

@@ -12,7 +12,7 @@ from transim.design.locate import KeyPath
 from transim.design.model import Driver, Junction, Switch
 from transim.design.ratings import read_driver_ratings, read_junction_ratings
 from transim.errors import DesignError, NetlistError, TopologyError
-from transim.parts.cards import read_model_card
+from transim.parts.cards import read_model_cards
 from transim.parts.catalogue import Catalogue
 from transim.parts.header import read_part
 from transim.parts.nearest import nearest_name
@@ -199,7 +199,7 @@ class Components:
         return values
 
     def _model(self, part: Part, path: KeyPath, table: Mapping[str, object]) -> str | None:
-        """Return the `.model` card of the file that the key `model` names."""
+        """Return the `.model` cards of the file that the key `model` names, one a line."""
         if part.model is None or "model" not in table:
             return None
         for key in part.model.parameters:
@@ -212,7 +212,7 @@ class Components:
         if name is None:
             return None
         try:
-            return read_model_card(self._folder / name, part.model.name, part.model.kinds)
+            return read_model_cards(self._folder / name, {place.name: place.kinds for place in part.model.places})
         except NetlistError as exc:
             self._faults.adopt((*path, "model"), DesignError(f"the model file cannot be used: {exc}"))
             return None

@@ -158,8 +158,9 @@ def _part_entries(part: Part) -> Iterable[str]:
     """Write every key of a junction or driver table."""
     yield _entry("part", f'"{part.name}"', "a part, or a part file of your own (*.cir)")
     if part.model is not None:
-        kinds = " or ".join(part.model.kinds)
-        meaning = f"file with one .model card of kind {kinds}; it replaces parameters"
+        kinds = [" or ".join(place.kinds) for place in part.model.places]
+        card = f"one .model card of kind {' and one of kind '.join(kinds)}"
+        meaning = f"file with {card}; it replaces parameters"
         yield _entry("model", '"device.lib"', meaning, active=False)
     yield from _parameters(part.settings.values())
     ratings = DriverRatings if part.role == "driver" else JunctionRatings

@@ -126,6 +126,10 @@ _REJECTIONS: tuple[tuple[re.Pattern[str], str], ...] = tuple(
     (re.compile(pattern), message)
     for pattern, message in (
         (
+            r"can't allocate \d+ bytes",
+            "it needed more memory than a run may take; let the circuit be smaller, or the run shorter",
+        ),
+        (
             r"[Cc]ould not find include file (?P<file>[^\n]+)",
             "the include file {file} was not found; give its full path",
         ),

@@ -16,24 +16,30 @@ import subprocess
 import tempfile
 import threading
 import time
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
 from typing import IO
 
+from transim.engine import bounds
 from transim.engine.log import log_tail, warnings_in
 from transim.engine.rawfile import Plot, read_raw
 from transim.engine.verdict import Attempt, check_end, check_plots
 from transim.errors import EngineError, EngineNotFound, OutputError, RawFileError
 
-__all__ = ["Engine", "EngineRun", "end_all", "find_engine"]
+__all__ = ["OLDEST", "TESTED", "Engine", "EngineRun", "discard_kept", "end_all", "find_engine"]
 
 VARIABLE = "TRANSIM_NGSPICE"
 LOG_LIMIT = 16 * 2**20
 LONGEST_TIMEOUT = 1e6
 KEPT_VARIABLES = ("LD_LIBRARY_PATH", "DYLD_LIBRARY_PATH", "TMPDIR")
+#: The log's size is looked at this often [s].
+_LOOK = 0.25
+_PRIVATE = "transim-"
 _running: set[subprocess.Popen[bytes]] = set()
+#: Oldest version that is run, and the one that everything here was tested with.
+OLDEST, TESTED = 36, 39
 INSTALL = "install it (apt-get install ngspice, or brew install ngspice)"
 
 
@@ -70,6 +76,7 @@ class _Outcome:
     output: str
     errors: str
     seconds: float
+    flooded: bool = False
 
     @property
     def log(self) -> str:
@@ -95,7 +102,7 @@ class Engine:
         Raises
         ------
         EngineNotFound
-            Where the executable does not say that it is ngspice.
+            Where the executable does not say that it is ngspice, or is older than 36.
         """
         command = [str(self.path), "--version"]
         with _private_folder(None) as folder:
@@ -108,7 +115,15 @@ class Engine:
                 return_code=outcome.return_code,
                 log_tail=log_tail(outcome.log),
             )
-        return int(found[1])
+        return self._accepted(int(found[1]))
+
+    def _accepted(self, version: int) -> int:
+        if version < OLDEST:
+            raise EngineNotFound(
+                f"{self.path} is ngspice {version}, and {OLDEST} or newer is needed ({TESTED} is what transim was "
+                f"tested with); {INSTALL}, or name another executable in the environment variable {VARIABLE}"
+            )
+        return version
 
     def run(
         self,
@@ -185,8 +200,10 @@ class Engine:
         said = re.search(r"ngspice-(\d+) done", outcome.output[-200:])
         if said is not None:
             # A deck that quits by itself names the version: no need to ask for it.
-            vars(self).setdefault("version", int(said[1]))
-        attempt = Attempt(deck, raw, stop_time, writes_raw, tuple(command), outcome.return_code, outcome.log)
+            vars(self).setdefault("version", self._accepted(int(said[1])))
+        attempt = Attempt(
+            deck, raw, stop_time, writes_raw, tuple(command), outcome.return_code, outcome.log, outcome.flooded
+        )
         check_end(attempt, outcome.errors, timeout)
         try:
             plots = read_raw(raw)
@@ -235,6 +252,23 @@ def find_engine(option: str | None = None) -> Engine:
     )
 
 
+def discard_kept(error: EngineError) -> None:
+    """Remove the private folder that a failed run has kept, once its failure is dealt with.
+
+    Parameters
+    ----------
+    error : EngineError
+        Of the run; where its deck lies in a folder that was asked for, nothing is removed.
+    """
+    deck = error.deck
+    if deck is not None and deck.parent.name.startswith(_PRIVATE) and _in_scratch(deck.parent):
+        shutil.rmtree(deck.parent, ignore_errors=True)
+
+
+def _in_scratch(folder: Path) -> bool:
+    return folder.parent.absolute() == Path(tempfile.gettempdir()).absolute()
+
+
 @contextlib.contextmanager
 def _private_folder(folder: Path | None) -> Iterator[Path]:
     """Give the folder to run in; a private one is kept only after a failure of the engine."""
@@ -244,7 +278,7 @@ def _private_folder(folder: Path | None) -> Iterator[Path]:
         yield folder.absolute()
         return
     with _writing(Path(tempfile.gettempdir())):
-        private = Path(tempfile.mkdtemp(prefix="transim-"))
+        private = Path(tempfile.mkdtemp(prefix=_PRIVATE))
     keep = False
     try:
         yield private
@@ -288,7 +322,8 @@ def _execute(command: list[str], folder: Path, timeout: float) -> _Outcome:
                     start_new_session=True,
                 )
                 _running.add(process)
-            ended = _wait(process, timeout)
+            bounds.bound_process(process.pid, timeout)
+            ended = _wait(process, timeout, (output, errors))
         except OSError as exc:
             raise EngineNotFound(
                 f"{command[0]} cannot be started: {exc.strerror}; {INSTALL}", command=command
@@ -298,7 +333,8 @@ def _execute(command: list[str], folder: Path, timeout: float) -> _Outcome:
                 _end_group(process)
                 _running.discard(process)
         seconds = time.perf_counter() - started
-        return _Outcome(process.returncode if ended else None, _text(output), _text(errors), seconds)
+        flooded = not ended and any(_size(log) > bounds.LOG_ROOM for log in (output, errors))
+        return _Outcome(process.returncode if ended else None, _text(output), _text(errors), seconds, flooded)
 
 
 @contextlib.contextmanager
@@ -335,21 +371,35 @@ def _scratch(folder: Path) -> IO[bytes]:
         return tempfile.TemporaryFile(dir=folder)
 
 
-def _wait(process: subprocess.Popen[bytes], timeout: float) -> bool:
-    """Wait for the end of a process; False where the time limit came first."""
+def _wait(process: subprocess.Popen[bytes], timeout: float, logs: Sequence[IO[bytes]]) -> bool:
+    """Wait for the end of a process; False where the time limit or a flood of its log came first."""
+    deadline = time.monotonic() + timeout
+    while (left := deadline - time.monotonic()) > 0.0:
+        if _ended_within(process, min(left, _LOOK)):
+            return True
+        if any(_size(log) > bounds.LOG_ROOM for log in logs):
+            return False
+    return _ended_within(process, 0.0)
+
+
+def _size(log: IO[bytes]) -> int:
+    return os.fstat(log.fileno()).st_size
+
+
+def _ended_within(process: subprocess.Popen[bytes], seconds: float) -> bool:
     try:
         descriptor = os.pidfd_open(process.pid)
     except (AttributeError, OSError):
         # Not on Linux, or a kernel before 5.3: Popen looks now and then, which costs milliseconds.
         try:
-            process.wait(timeout)
+            process.wait(seconds)
         except subprocess.TimeoutExpired:
             return False
         return True
     try:
         poller = select.poll()
         poller.register(descriptor, select.POLLIN)
-        return bool(poller.poll(timeout * 1e3))
+        return bool(poller.poll(seconds * 1e3))
     finally:
         os.close(descriptor)
 

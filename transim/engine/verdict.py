@@ -12,6 +12,9 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+
+from transim.engine import bounds
 from transim.engine.log import find_failure, log_tail
 from transim.engine.rawfile import Plot, time_reached
 from transim.errors import ConvergenceError, DeckRejected, EngineCrashed, EngineTimeout, RawFileError
@@ -39,6 +42,8 @@ class Attempt:
         Exit status, negative for a signal; None where the run was stopped at the time limit.
     log : str
         All that was printed.
+    flooded : bool
+        Whether the run was stopped because it printed too much.
     """
 
     deck: Path
@@ -48,6 +53,7 @@ class Attempt:
     command: tuple[str, ...]
     return_code: int | None
     log: str
+    flooded: bool = False
 
     @property
     def context(self) -> dict[str, Any]:
@@ -78,7 +84,19 @@ def check_end(attempt: Attempt, errors: str, timeout: float) -> None:
         As their names say.
     """
     code, deck, stop = attempt.return_code, attempt.deck.name, attempt.stop_time
-    if code is None:
+    if code is None and attempt.flooded:
+        raise EngineCrashed(
+            f"ngspice printed more than {bounds.LOG_ROOM // 2**20} MiB while it ran {deck} and was stopped; look for a "
+            "part that makes it warn at every step",
+            **attempt.context,
+        )
+    if code == -signal.SIGXFSZ:
+        raise EngineCrashed(
+            f"ngspice wrote more than {bounds.FILE_LIMIT / 2**30:g} GiB into one file while it ran {deck} and was "
+            f"stopped{_progress(time_reached(attempt.raw), stop)}; let the run be shorter or take longer steps",
+            **attempt.context,
+        )
+    if code is None or code == -signal.SIGXCPU:
         raise EngineTimeout(
             f"ngspice did not finish {deck} within {timeout:g} s and was stopped"
             f"{_progress(time_reached(attempt.raw), stop)}; raise the time limit, "
@@ -139,6 +157,18 @@ def check_plots(attempt: Attempt, plots: tuple[Plot, ...]) -> None:
         if not plot.complete:
             raise RawFileError(
                 f"'{plot.name}' of {deck} was not written to its end; is the disk full?", **attempt.context
+            )
+        lost = np.argwhere(~np.isfinite(plot.data))
+        if lost.size:
+            row, column = (int(k) for k in lost[0])
+            at = float(plot.data[row, 0].real)
+            where = f" from {plot.names[0]} = {at:.6g} on" if math.isfinite(at) else ""
+            raise ConvergenceError(
+                f"{plot.names[column]} in {deck} is not a finite number{where}; look for a division by zero or a "
+                "power that grows without bound in a behavioural source",
+                time_reached=at if plot.names[0] == "time" else None,
+                stop=stop,
+                **attempt.context,
             )
     if stop is None:
         return

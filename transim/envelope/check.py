@@ -17,8 +17,8 @@ import numpy as np
 from transim.circuit.assemble import RfPort
 from transim.circuit.decks import Deck, Origin, control_block, deck_head
 from transim.circuit.elements import Behavioural, Circuit, Device
+from transim.envelope.bias import Bias
 from transim.envelope.diode import DiodeLaw
-from transim.envelope.linearise import Bias
 from transim.envelope.transistor import TransistorLaw
 from transim.quantities import deck_number
 

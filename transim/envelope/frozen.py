@@ -11,7 +11,7 @@ import numpy as np
 import numpy.typing as npt
 
 from transim.circuit.assemble import RfPort
-from transim.envelope.linearise import Network
+from transim.envelope.network import Network
 from transim.envelope.scatter import Complex, Scattering, excitation, scatter, solve_linear
 
 __all__ = ["changing_points", "solve_frozen"]
@@ -102,6 +102,8 @@ def _kept(network: Network, ports: Sequence[RfPort]) -> npt.NDArray[np.intp]:
     for port in ports:
         kept |= {network.unknowns[f"v:{port.node}"], network.unknowns[f"i:{port.source}"]}
     pattern = (network.constant_g != 0.0) | (network.constant_c != 0.0)
+    for entry in network.delays:
+        pattern[entry.row, entry.column] = True
     rest = set(range(network.size)) - kept
     # a source between two nodes that stay has an empty row among the rest, and cannot be eliminated
     lonely = rest
@@ -117,7 +119,7 @@ def _solve_at(
 ) -> Complex:
     """Return S at every time point, shape (n, p, p), for one j w; unknowns that are not kept are eliminated once."""
     right = excitation(network, ports)
-    matrix = network.constant_g + omega * network.constant_c
+    matrix = network.constant(omega)
     rest = np.setdiff1d(np.arange(network.size), kept)
     if rest.size:
         inner = matrix[np.ix_(rest, rest)]

@@ -9,7 +9,7 @@ import numpy.typing as npt
 
 from transim.circuit.assemble import RfPort
 from transim.envelope.junction import Array
-from transim.envelope.linearise import Network
+from transim.envelope.network import Network
 from transim.envelope.scatter import solve_linear
 
 __all__ = ["RfSolution", "solve_internal"]
@@ -89,7 +89,7 @@ def solve_internal(network: Network, port: RfPort, carrier: float) -> RfSolution
     right[network.unknowns[f"i:{port.source}"], 0] = 1.0
     omega = 2j * np.pi * carrier
     matrices = np.broadcast_to(
-        network.constant_g + omega * network.constant_c, (network.time.size, network.size, network.size)
+        network.constant(omega), (network.time.size, network.size, network.size)
     ).copy()
     matrices[:, network.rows, network.columns] += network.varying_g + omega * network.varying_c
     return RfSolution(network, solve_linear(matrices, right)[:, :, 0])

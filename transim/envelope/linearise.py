@@ -1,33 +1,23 @@
-"""The flattened circuit as a time-varying linear network around its bias.
-
-Unknowns are node voltages and branch currents, as in modified nodal analysis (C. W. Ho, A. E. Ruehli,
-P. A. Brennan, IEEE Trans. Circuits Syst. 22(6), 1975). With x the complex envelope at the carrier w, the network is::
-
-    d/dt(C(t) x) + (G(t) + j w C(t)) x = s
-"""
+"""The flattened circuit, element by element, as entries of a linear network around its bias."""
 
 from __future__ import annotations
 
-from collections.abc import Collection, Iterable, Mapping
-from dataclasses import dataclass, replace
+from collections.abc import Collection, Mapping
 
 import numpy as np
-import numpy.typing as npt
 
-from transim.circuit.elements import Behavioural, Circuit, Coupling, Device, Element
+from transim.circuit.elements import Behavioural, Circuit, Coupling, Device, Element, Line
+from transim.envelope.bias import Bias
 from transim.envelope.diode import DiodeLaw
 from transim.envelope.junction import Array
+from transim.envelope.network import Delay, InnerJunction, Network
 from transim.envelope.transistor import TransistorLaw
 from transim.errors import LinearisationError, RawFileError
 
-__all__ = ["Bias", "Network", "linearise", "saved_vectors"]
+__all__ = ["linearise", "saved_vectors"]
 
 #: What ngspice has to save of each device, beside all node voltages and branch currents.
 _DEVICE_VECTORS = {"d": ("vd",), "q": ("vbe", "vbc", "ic")}
-
-#: Entries far below these are no load to a 50 ohm line at any carrier [S, F].
-_SMALL_G = 1e-8
-_SMALL_C = 1e-17
 
 
 def saved_vectors(circuit: Circuit) -> tuple[str, ...]:
@@ -35,166 +25,6 @@ def saved_vectors(circuit: Circuit) -> tuple[str, ...]:
     return tuple(
         f"@{device.name}[{name}]" for device in circuit.devices for name in _DEVICE_VECTORS[device.name[0]]
     )
-
-
-class Bias:
-    """Bias waveforms of one run, by node, source and device.
-
-    Parameters
-    ----------
-    vectors : mapping
-        Name as ngspice prints it (``v(a)``, ``i(v1)``, ``v(@d1[vd])`` ...) to an array of shape (n,).
-    time : ndarray, shape (n,)
-        Time of the samples [s].
-    """
-
-    def __init__(self, vectors: Mapping[str, Array], time: Array) -> None:
-        self._vectors = vectors
-        self.time = time
-
-    @property
-    def points(self) -> int:
-        """Number of samples."""
-        return int(self.time.size)
-
-    def voltage(self, node: str) -> Array:
-        """Return the voltage of a node to ground [V], shape (n,)."""
-        if node == "0":
-            return np.zeros(self.points)
-        return self._find(f"v({node})", node)
-
-    def current(self, source: str) -> Array:
-        """Return the current through a source from its plus to its minus node [A], shape (n,)."""
-        return self._find(f"i({source})", f"{source}#branch")
-
-    def device(self, name: str, quantity: str) -> Array:
-        """Return an internal quantity of a device, such as ``vbe`` [V], shape (n,)."""
-        vector = f"@{name}[{quantity}]"
-        return self._find(vector, f"v({vector})", f"i({vector})")
-
-    def _find(self, *names: str) -> Array:
-        for name in names:
-            if name in self._vectors:
-                return np.broadcast_to(self._vectors[name], self.time.shape)
-        raise RawFileError(f"the run did not save {names[0]}, which the envelope solver needs")
-
-    def probes(self, nodes: Iterable[str], sources: Iterable[str]) -> dict[str, Array]:
-        """Return the bias that an expression depends on, keyed as `Expression.evaluate` wants it."""
-        found = {f"v:{node}": self.voltage(node) for node in nodes}
-        found.update({f"i:{source}": self.current(source) for source in sources})
-        found["time"] = self.time
-        return found
-
-
-@dataclass(frozen=True)
-class InnerJunction:
-    """A p-n junction inside a device, and where its RF voltage stands among the unknowns.
-
-    Attributes
-    ----------
-    device : str
-        Flattened name.
-    plus, minus : int
-        Places of its nodes in x; -1 is ground.
-    scale : float
-        N Vt [V]: an RF voltage well below it leaves the junction linear.
-    current : ndarray, shape (n,)
-        Slope times `scale`: its exponential current along the bias (of a transistor, the base's share) [A].
-    """
-
-    device: str
-    plus: int
-    minus: int
-    scale: float
-    current: Array
-
-
-@dataclass(frozen=True)
-class Network:
-    """Matrices of the linear time-varying network.
-
-    Attributes
-    ----------
-    unknowns : mapping of str to int
-        ``v:node`` and ``i:source`` to the place in x.
-    constant_g, constant_c : ndarray, shape (m, m)
-        Parts of G and C that do not change with time.
-    rows, columns : ndarray of int, shape (k,)
-        Places that change with time.
-    varying_g, varying_c : ndarray, shape (n, k)
-        What is added there, for each time point.
-    time : ndarray, shape (n,)
-        Time of the points [s].
-    junctions : tuple of InnerJunction
-        The p-n junctions of all devices.
-    """
-
-    unknowns: Mapping[str, int]
-    constant_g: Array
-    constant_c: Array
-    rows: npt.NDArray[np.intp]
-    columns: npt.NDArray[np.intp]
-    varying_g: Array
-    varying_c: Array
-    time: Array
-    junctions: tuple[InnerJunction, ...] = ()
-
-    @property
-    def size(self) -> int:
-        """Number of unknowns."""
-        return len(self.unknowns)
-
-    def at(self, points: npt.NDArray[np.intp]) -> Network:
-        """Return the same network at some of its time points only."""
-        junctions = tuple(replace(junction, current=junction.current[points]) for junction in self.junctions)
-        return replace(
-            self,
-            varying_g=self.varying_g[points],
-            varying_c=self.varying_c[points],
-            time=self.time[points],
-            junctions=junctions,
-        )
-
-    def scaled_changes(self) -> Array:
-        """Return every entry that changes on a scale where equal distances are equal shares, shape (n, k or less).
-
-        Entries too small to load a 50 ohm line at any carrier are linear on it, so that their shares do not count.
-        """
-        total_g = self.constant_g[self.rows, self.columns] + self.varying_g
-        total_c = self.constant_c[self.rows, self.columns] + self.varying_c
-        scaled = np.arcsinh(np.concatenate([total_g / _SMALL_G, total_c / _SMALL_C], axis=1))
-        return np.asarray(scaled[:, np.ptp(scaled, axis=0) > 0.0])
-
-    def refined(self, share: float) -> Network:
-        """Return the network with points added wherever an entry changes by more than a share from one to the next.
-
-        Parameters
-        ----------
-        share : float
-            Largest relative change between neighbours.
-        """
-        jumps = np.abs(np.diff(self.scaled_changes(), axis=0)).max(axis=1, initial=0.0)
-        parts = np.maximum(1, np.ceil(jumps / share)).astype(int)
-        position = np.concatenate(
-            [[0.0], *(k + np.arange(1, part + 1) / part for k, part in enumerate(parts.tolist()))]
-        )
-        place = np.arange(self.time.size)
-        varying = []
-        for values, small in ((self.varying_g, _SMALL_G), (self.varying_c, _SMALL_C)):
-            scaled = np.arcsinh(values / small)
-            between = [np.interp(position, place, column) for column in scaled.T]
-            varying.append(small * np.sinh(np.stack(between, axis=1)) if between else values[:0])
-        time = np.interp(position, place, self.time)
-        return Network(
-            self.unknowns,
-            self.constant_g,
-            self.constant_c,
-            self.rows,
-            self.columns,
-            varying[0],
-            varying[1],
-            time,
-        )
 
 
 class _Stamps:
@@ -207,6 +37,7 @@ class _Stamps:
         self.constant: dict[str, dict[tuple[int, int], float]] = {"g": {}, "c": {}}
         self.varying: dict[str, dict[tuple[int, int], Array]] = {"g": {}, "c": {}}
         self.junctions: list[InnerJunction] = []
+        self.delays: list[Delay] = []
 
     def place(self, key: str) -> int:
         return self.unknowns.setdefault(key, len(self.unknowns))
@@ -266,6 +97,7 @@ class _Stamps:
             varying["c"],
             time,
             tuple(self.junctions),
+            tuple(self.delays),
         )
 
 
@@ -302,6 +134,8 @@ def linearise(circuit: Circuit, bias: Bias, temperature: float, ports: Collectio
     for element in circuit.elements:
         if element.name not in supplies:
             _stamp_element(stamps, element, inductance)
+    for line in circuit.delays:
+        _stamp_line(stamps, line)
     for coupling in circuit.couplings:
         _stamp_coupling(stamps, coupling, inductance)
     for device in circuit.devices:
@@ -359,6 +193,23 @@ def _stamp_current_control(stamps: _Stamps, element: Element) -> None:
         stamps.add(stamps.node(element.nodes[1]), column, -element.value)
     else:
         stamps.add(stamps.unknowns[f"i:{element.name}"], column, -element.value)
+
+
+def _stamp_line(stamps: _Stamps, line: Line) -> None:
+    """Add v - Z0 i at each end, equal to v + Z0 i at the other end one delay ago (method of characteristics)."""
+    ends = (line.nodes[:2], line.nodes[2:])
+    currents = [stamps.place(f"i:{line.name}#{k}") for k in (1, 2)]
+    for row, (near, far) in enumerate(((0, 1), (1, 0))):
+        for node, sign in zip(ends[near], (1.0, -1.0), strict=True):
+            place = stamps.node(node)
+            stamps.add(place, currents[near], sign)
+            stamps.add(currents[row], place, sign)
+        stamps.add(currents[row], currents[near], -line.impedance)
+        for node, sign in zip(ends[far], (1.0, -1.0), strict=True):
+            place = stamps.node(node)
+            if place >= 0:
+                stamps.delays.append(Delay(currents[row], place, -sign, line.delay))
+        stamps.delays.append(Delay(currents[row], currents[far], -line.impedance, line.delay))
 
 
 def _stamp_coupling(stamps: _Stamps, coupling: Coupling, inductance: Mapping[str, float]) -> None:

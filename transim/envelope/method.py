@@ -11,7 +11,7 @@ import numpy.typing as npt
 from transim.circuit.assemble import RfPort
 from transim.envelope.frozen import solve_frozen
 from transim.envelope.junction import Array
-from transim.envelope.linearise import Network
+from transim.envelope.network import Network
 from transim.envelope.ringing import solve_ringing
 from transim.envelope.scatter import Scattering
 

@@ -12,7 +12,7 @@ import numpy as np
 
 from transim.circuit.assemble import RfPort
 from transim.envelope.junction import Array
-from transim.envelope.linearise import Network
+from transim.envelope.network import Network
 from transim.envelope.scatter import Complex, Scattering, excitation, scatter, solve_linear
 
 __all__ = ["solve_ringing"]
@@ -56,8 +56,11 @@ def solve_ringing(network: Network, ports: Sequence[RfPort], frequency: Sequence
         c[network.rows, network.columns] += network.varying_c[point]
         return g, c
 
-    conductance, capacitance = at(0)
-    x = solve_linear(conductance + omega * capacitance, right)
+    first = np.stack([network.constant(complex(w)) for w in omega[:, 0, 0]])
+    first[:, network.rows, network.columns] += network.varying_g[0] + omega[:, :, 0] * network.varying_c[0]
+    x = solve_linear(first, right)
+    capacitance = at(0)[1]
+    past = _Past(network, omega, x)
     s = np.empty((len(frequency), time.size, len(ports), len(ports)), dtype=complex)
     s[:, 0] = scatter(network, ports, x)
     charge = [capacitance @ x, capacitance @ x]
@@ -70,14 +73,53 @@ def solve_ringing(network: Network, ports: Sequence[RfPort], frequency: Sequence
         one = (1.0 + ratio) / step
         two = -ratio * ratio / (1.0 + ratio) / step
         conductance, capacitance = at(point)
-        x = solve_linear(
-            conductance + (omega + lead) * capacitance, right + one * charge[0] + two * charge[1]
-        )
+        matrix, known = past.delayed(conductance + (omega + lead) * capacitance, point)
+        x = solve_linear(matrix, right + one * charge[0] + two * charge[1] - known)
+        past.keep(point, x)
         s[:, point] = scatter(network, ports, x)
         charge = [capacitance @ x, charge[0]]
         previous_step = step
     averaged = np.stack([_average(time, s[k], 1.0 / carrier, samples) for k, carrier in enumerate(frequency)])
     return Scattering(samples, np.asarray(frequency, dtype=float), averaged, "ringing")
+
+
+class _Past:
+    """Solutions so far, for what acts on them after a delay: the far ends of lines."""
+
+    def __init__(self, network: Network, omega: Complex, first: Complex) -> None:
+        self._network = network
+        self._factors = [
+            (entry, entry.coefficient * np.exp(-omega[:, 0, 0] * entry.delay)) for entry in network.delays
+        ]
+        # without lines nothing is kept
+        points = network.time.size if network.delays else 1
+        self._x = np.empty((points, *first.shape), dtype=complex)
+        self._x[0] = first
+
+    def keep(self, point: int, x: Complex) -> None:
+        if self._network.delays:
+            self._x[point] = x
+
+    def delayed(self, matrix: Complex, point: int) -> tuple[Complex, Complex]:
+        """Return matrix and known part of one step's delayed terms, shape (f, m, m) and (f, m, p)."""
+        if not self._factors:
+            return matrix, np.zeros(1, dtype=complex)
+        time, known = self._network.time, np.zeros_like(self._x[0])
+        matrix = matrix.copy()
+        for entry, factor in self._factors:
+            at = time[point] - entry.delay
+            if at <= time[0]:
+                known[:, entry.row] += factor[:, None] * self._x[0][:, entry.column]
+                continue
+            after = min(int(np.searchsorted(time, at)), point)
+            share = (at - time[after - 1]) / (time[after] - time[after - 1])
+            known[:, entry.row] += (1.0 - share) * factor[:, None] * self._x[after - 1][:, entry.column]
+            if after == point:
+                # a delay shorter than the step: the far end depends on the step's own solution
+                matrix[:, entry.row, entry.column] += share * factor
+            else:
+                known[:, entry.row] += share * factor[:, None] * self._x[after][:, entry.column]
+        return matrix, known
 
 
 def _average(time: Array, s: Complex, width: float, samples: Array) -> Complex:

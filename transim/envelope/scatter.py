@@ -9,7 +9,7 @@ import numpy as np
 import numpy.typing as npt
 
 from transim.circuit.assemble import RfPort
-from transim.envelope.linearise import Network
+from transim.envelope.network import Network
 from transim.errors import LinearisationError
 
 __all__ = ["Complex", "Scattering", "excitation", "scatter", "solve_linear"]

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from difflib import get_close_matches
 from typing import Literal
 
@@ -82,7 +82,9 @@ class Judgement:
     unit : str or None
         Unit of bounds, value and margin where `metric` is no metric but a rating; None: that of the metric.
     note : str or None
-        Why a rating could not be judged.
+        Why a rating could not be judged, or why a value was not.
+    uncertainty : float or None
+        Numerical uncertainty of the value; None where it was not asked for.
     """
 
     metric: str
@@ -93,6 +95,30 @@ class Judgement:
     verdict: Verdict
     unit: str | None = None
     note: str | None = None
+    uncertainty: float | None = None
+
+    def within(self, uncertainty: float) -> Judgement:
+        """Return the judgement of a value that is known to within an uncertainty.
+
+        Parameters
+        ----------
+        uncertainty : float
+            Of the value, 0 or more.
+
+        Returns
+        -------
+        Judgement
+            "undefined" where the margin, to either side of the bound, is smaller than the uncertainty.
+        """
+        if self.margin is None or self.verdict == "undefined":
+            return replace(self, uncertainty=uncertainty)
+        if abs(self.margin) >= uncertainty:
+            return replace(self, uncertainty=uncertainty)
+        unit = self.unit or METRICS[self.metric].unit
+        width = format_quantity(uncertainty, unit, 3) if math.isfinite(uncertainty) else "unknown"
+        side = "inside" if self.margin >= 0.0 else "outside"
+        note = f"it is {format_quantity(abs(self.margin), unit, 3)} {side} its bound, and its numerical uncertainty is {width}"
+        return replace(self, verdict="undefined", note=note, uncertainty=uncertainty)
 
 
 def judge(figures: Mapping[str, Figure], limits: Sequence[Limit]) -> tuple[Judgement, ...]:
@@ -109,7 +135,7 @@ def judge(figures: Mapping[str, Figure], limits: Sequence[Limit]) -> tuple[Judge
     -------
     tuple of Judgement
         One for each limit, in their order. A figure that is missing, undefined or not finite gives the
-        verdict "undefined".
+        verdict "undefined", and so does one whose margin is smaller than its numerical uncertainty.
     """
     return tuple(_judge(figures.get(limit.metric), limit) for limit in limits)
 
@@ -161,7 +187,9 @@ def _judge(figure: Figure | None, limit: Limit) -> Judgement:
         margins.append(limit.max - value)
     margin = min(margins)
     outcome: Verdict = "pass" if margin >= 0.0 else "fail"
-    return Judgement(limit.metric, limit.min, limit.max, value, margin, outcome)
+    judgement = Judgement(limit.metric, limit.min, limit.max, value, margin, outcome)
+    known = None if figure is None else figure.uncertainty
+    return judgement if known is None else judgement.within(known)
 
 
 def _held(record: Record, rating: Rating) -> Judgement:

@@ -62,11 +62,15 @@ class Figure:
         Its unit.
     note : str or None
         The reason, one line, if there is no value.
+    uncertainty : float or None
+        Half width of the interval in which the value is known numerically [`unit`], infinite where finer settings
+        give no value; None where it was not asked for.
     """
 
     value: float | None
     unit: str
     note: str | None = None
+    uncertainty: float | None = None
 
 
 _metrics: dict[str, Metric] = {}

@@ -15,7 +15,10 @@ from transim.measure.waveform import Waveform
 
 __all__ = ["Record"]
 
-_WAVEFORMS = ("video", "junction_charge", "junction_reverse", "junction_current", "junction_power", "supply_current")
+_WAVEFORMS = (
+    "video", "junction_charge", "junction_reverse", "junction_current", "junction_power", "supply_current",
+    "junction_conduction", "junction_fed", "other_charge",
+)  # fmt: skip
 
 
 @dataclass(frozen=True, eq=False, kw_only=True)
@@ -46,6 +49,8 @@ class Record:
         Voltage at each RF port with the RF off [V].
     drive_current : Waveform or None
         Current out of the driver, positive when it sources [A].
+    driver_voltage : Waveform or None
+        Voltage at the output of the driver [V].
     supply_power : Waveform or None
         Power that all supplies together deliver [W].
     junction_charge : mapping of str to Waveform
@@ -56,6 +61,15 @@ class Record:
         Current into the anode of each junction, of a transistor through its base, positive when forward [A].
     junction_power : mapping of str to Waveform
         Power into each junction [W].
+    junction_conduction : mapping of str to Waveform
+        Current that conducts through each junction and changes its stored charge, without that of its parallel
+        capacitance, positive when forward [A].
+    junction_fed : mapping of str to float
+        Junctions that the driver's current meets first: +1 where forward current comes out of the driver, -1 where
+        it goes into it.
+    other_charge : mapping of str to Waveform
+        Charge on each capacitance that the driver's current reaches before a junction, and what has left through
+        resistances past the junctions; positive when it came out of the driver [C].
     driver_output_power : Waveform or None
         Power out of the driver [W].
     supply_current : mapping of str to Waveform
@@ -85,11 +99,15 @@ class Record:
     match_off: complex | None = None
     video: Mapping[str, Waveform] = field(default_factory=dict)
     drive_current: Waveform | None = None
+    driver_voltage: Waveform | None = None
     supply_power: Waveform | None = None
     junction_charge: Mapping[str, Waveform] = field(default_factory=dict)
     junction_reverse: Mapping[str, Waveform] = field(default_factory=dict)
     junction_current: Mapping[str, Waveform] = field(default_factory=dict)
     junction_power: Mapping[str, Waveform] = field(default_factory=dict)
+    junction_conduction: Mapping[str, Waveform] = field(default_factory=dict)
+    junction_fed: Mapping[str, float] = field(default_factory=dict)
+    other_charge: Mapping[str, Waveform] = field(default_factory=dict)
     driver_output_power: Waveform | None = None
     supply_current: Mapping[str, Waveform] = field(default_factory=dict)
     ratings: tuple[Rating, ...] = ()

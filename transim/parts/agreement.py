@@ -167,24 +167,26 @@ def _check_probes(part: Part, circuit: Subcircuit, lines: Mapping[tuple[str, str
 
 
 def _check_model(part: Part, circuit: Subcircuit, lines: Mapping[tuple[str, str], int]) -> ModelSlot | None:
-    """Look for the default card; fill in the parameters that only this card uses."""
-    if part.model is None:
-        return None
-    line = lines["model", " ".join(part.model.kinds)]
+    """Look for the default cards; fill in the parameters that only these cards use."""
+    checked: ModelSlot | None = None
+    for place in reversed(part.model.places if part.model is not None else ()):
+        _check_card(part, circuit, place, lines["model", " ".join(place.kinds)])
+        elsewhere = circuit.words(without_model=place.name)
+        silenced = tuple(parameter.name for parameter in part.parameters if parameter.name not in elsewhere)
+        checked = dataclasses.replace(place, parameters=silenced, companion=checked)
+    return checked
+
+
+def _check_card(part: Part, circuit: Subcircuit, place: ModelSlot, line: int) -> None:
+    """Look for the default card of one place."""
     cards = [card.text.split(None, 2) for card in circuit.outer if card.text.lower().startswith(".model")]
-    named = [fields for fields in cards if fields[1].lower() == part.model.name]
+    named = [fields for fields in cards if fields[1].lower() == place.name]
     if len(named) != 1:
-        raise NetlistError(
-            f"the subcircuit needs one .model card named {part.model.name}", file=part.file, line=line
-        )
+        raise NetlistError(f"the subcircuit needs one .model card named {place.name}", file=part.file, line=line)
     kind = re.split(r"[\s(]", named[0][2])[0].upper() if len(named[0]) > 2 else ""
-    if kind not in part.model.kinds:
+    if kind not in place.kinds:
         raise NetlistError(
-            f"the default card {part.model.name} is of kind {kind}, the header permits "
-            f"{' '.join(part.model.kinds)}",
+            f"the default card {place.name} is of kind {kind}, the header permits {' '.join(place.kinds)}",
             file=part.file,
             line=line,
         )
-    elsewhere = circuit.words(without_model=part.model.name)
-    silenced = tuple(parameter.name for parameter in part.parameters if parameter.name not in elsewhere)
-    return dataclasses.replace(part.model, parameters=silenced)

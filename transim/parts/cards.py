@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
 from transim.errors import NetlistError
+from transim.parts.guard import check_lines
 
-__all__ = ["Card", "joined_cards", "read_model_card", "read_netlist_text"]
+__all__ = ["Card", "joined_cards", "read_model_card", "read_model_cards", "read_netlist_text"]
 
 _INLINE_COMMENT = re.compile(r";|(?:^|\s)\$(?=\s|$)")
 _MODEL = re.compile(r"\.model\s+(?P<name>[^\s(]+)\s+(?P<kind>[a-z]\w*)\s*(?P<rest>.*)", re.IGNORECASE)
@@ -135,34 +136,66 @@ def read_model_card(path: Path, name: str, kinds: Sequence[str]) -> str:
     NetlistError
         If there is no card or more than one, another kind, any other content, or unbalanced parentheses.
     """
-    found: list[tuple[Card, re.Match[str]]] = []
-    for card in joined_cards(read_netlist_text(path), file=path):
+    return read_model_cards(path, {name: kinds})
+
+
+def read_model_cards(path: Path, places: Mapping[str, Sequence[str]]) -> str:
+    """Read the `.model` cards of a file, at most one for each place, and give each the name of its place.
+
+    Parameters
+    ----------
+    path : Path
+        File that holds `.model` cards and comments, nothing else.
+    places : mapping of str to sequence of str
+        Name that a card gets, and the device kinds that it may be of; no kind has two places.
+
+    Returns
+    -------
+    str
+        The cards, one a line.
+
+    Raises
+    ------
+    NetlistError
+        If there is no card or more than one for a place, another kind, any other content, or unbalanced
+        parentheses.
+    """
+    permitted = " or ".join(kind for kinds in places.values() for kind in kinds)
+    found: dict[str, list[tuple[Card, re.Match[str]]]] = {name: [] for name in places}
+    text = read_netlist_text(path)
+    check_lines(text.split("\n"), file=path)
+    for card in joined_cards(text, file=path):
         match = _MODEL.fullmatch(card.text)
         if match is None:
             raise NetlistError(
-                f'only one .model card and comments may stand here, found "{card.text[:40]}"',
+                f'only one .model card and comments may stand here, found "{card.text[:40]}"'
+                if len(places) == 1
+                else f'only .model cards and comments may stand here, found "{card.text[:40]}"',
                 file=path,
                 line=card.line,
             )
-        found.append((card, match))
-    permitted = " or ".join(kinds)
-    if not found:
+        kind = match["kind"].upper()
+        place = next((name for name, kinds in places.items() if kind in {k.upper() for k in kinds}), None)
+        if place is None:
+            raise NetlistError(
+                f"the card {match['name']} is of kind {match['kind']}, {permitted} is wanted", file=path, line=card.line
+            )
+        found[place].append((card, match))
+    if not any(found.values()):
         raise NetlistError(f"the file holds no .model card; one of kind {permitted} is wanted", file=path)
-    if len(found) > 1:
-        names = ", ".join(f"{match['name']} (line {card.line})" for card, match in found)
-        raise NetlistError(
-            f"the file holds {len(found)} .model cards: {names}; keep the one that is meant",
-            file=path,
-            line=found[1][0].line,
-        )
-    card, match = found[0]
-    if match["kind"].upper() not in {kind.upper() for kind in kinds}:
-        raise NetlistError(
-            f"the card {match['name']} is of kind {match['kind']}, {permitted} is wanted",
-            file=path,
-            line=card.line,
-        )
-    return f".model {name} {match['kind']}({_model_parameters(match['rest'], path, card.line)})"
+    for cards in found.values():
+        if len(cards) > 1:
+            names = ", ".join(f"{match['name']} (line {card.line})" for card, match in cards)
+            raise NetlistError(
+                f"the file holds {len(cards)} .model cards: {names}; keep the one that is meant",
+                file=path,
+                line=cards[1][0].line,
+            )
+    return "\n".join(
+        f".model {name} {match['kind']}({_model_parameters(match['rest'], path, card.line)})"
+        for name, cards in found.items()
+        for card, match in cards
+    )
 
 
 def _model_parameters(rest: str, path: Path, line: int) -> str:

@@ -43,7 +43,7 @@ _OF_ROLE = {
     "path": ("ports", "bias", "through", "passes", "slot"),
     "driver": ("supply",),
 }
-_REPEATED = ("source", "note", "parameter", "probe", "slot", "supply")
+_REPEATED = ("source", "note", "parameter", "model", "probe", "slot", "supply")
 _FACT = re.compile(r"\*\s*([a-z]+)\s*:\s*(.*)")
 _NAME = re.compile(r"[a-z][a-z0-9_]*")
 _VECTOR = r"v\(\s*[\w.#]+(?:\s*,\s*[\w.#]+)?\s*\)|i\(\s*[\w.#]+\s*\)|@[\w.#]+\[\w+\]"
@@ -231,14 +231,18 @@ def _read_probe(header: _Header, fact: _Fact) -> Probe:
 
 
 def _read_model(header: _Header) -> ModelSlot | None:
-    fact = header.optional("model")
-    if fact is None:
-        return None
-    fields = [field.strip() for field in fact.value.split("|", 2)]
-    kinds = tuple(fields[0].split())
-    if len(fields) < 2 or not kinds or set(kinds) - {"D", "NPN", "PNP"}:
-        raise header.fail('write "* model: kinds | name", the kinds out of D, NPN and PNP', fact.line)
-    return ModelSlot(kinds, header.name(fields[1], fact))
+    found: ModelSlot | None = None
+    taken: set[str] = set()
+    for fact in reversed(header.all("model")):
+        fields = [field.strip() for field in fact.value.split("|", 2)]
+        kinds = tuple(fields[0].split())
+        if len(fields) < 2 or not kinds or set(kinds) - {"D", "NPN", "PNP"}:
+            raise header.fail('write "* model: kinds | name", the kinds out of D, NPN and PNP', fact.line)
+        if taken & {*kinds, fields[1]}:
+            raise header.fail("two places for a model need different kinds and names", fact.line)
+        taken |= {*kinds, fields[1]}
+        found = ModelSlot(kinds, header.name(fields[1], fact), companion=found)
+    return found
 
 
 def _read_passes(header: _Header) -> bool:

@@ -117,11 +117,19 @@ class ModelSlot:
         Name that the subcircuit uses for the card.
     parameters : tuple of str
         Parameters of the part that only its own card uses: another card leaves them without effect.
+    companion : ModelSlot or None
+        A second place, for a card of another kind that may stand in the same file.
     """
 
     kinds: tuple[str, ...]
     name: str
     parameters: tuple[str, ...] = ()
+    companion: ModelSlot | None = None
+
+    @property
+    def places(self) -> tuple[ModelSlot, ...]:
+        """The place itself and its companion."""
+        return (self,) if self.companion is None else (self, *self.companion.places)
 
 
 @dataclass(frozen=True)

@@ -8,12 +8,10 @@ from pathlib import Path
 
 from transim.errors import NetlistError
 from transim.parts.cards import Card, joined_cards
+from transim.parts.guard import check_card, check_lines
 
 __all__ = ["Subcircuit", "read_subcircuit"]
 
-_PERMITTED = (
-    ".subckt", ".ends", ".model", ".param", ".func", ".ic", ".nodeset", ".if", ".elseif", ".else", ".endif",
-)  # fmt: skip
 _WORD = re.compile(r"[A-Za-z0-9_#]+")
 
 
@@ -143,14 +141,10 @@ def read_subcircuit(body: str, *, file: Path, first_line: int) -> Subcircuit:
     depth = 0
     cards: list[Card] = []
     outer: list[Card] = []
+    check_lines(body.split("\n"), file=file, first_line=first_line)
     for card in joined_cards(body, file=file, first_line=first_line):
         keyword = card.text.split()[0].lower()
-        if keyword.startswith(".") and keyword not in _PERMITTED:
-            raise NetlistError(
-                f"{keyword} cannot stand in a part file; permitted are {', '.join(_PERMITTED)}",
-                file=file,
-                line=card.line,
-            )
+        check_card(card.text, file=file, line=card.line)
         if depth == 0:
             if keyword != ".subckt" or head is not None:
                 raise NetlistError(

@@ -130,6 +130,8 @@ def limit_document(limit: Limit | Judgement) -> Document:
 
 
 def _result(result: Result) -> Document:
+    from transim.report.budget import budget_document, charge_document
+    from transim.report.pulses import first_document
     from transim.report.ratings import rates_document
     from transim.report.tables import verdict_word
 
@@ -158,6 +160,9 @@ def _result(result: Result) -> Document:
         "metrics": {name: asdict(figure) for name, figure in result.figures.items()},
         "limits": limits,
         "switching_rate": rates_document(result.rates),
+        "budget": budget_document(result.budget),
+        "charge": charge_document(result),
+        "first_pulse": first_document(result),
     }
 
 

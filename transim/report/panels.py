@@ -137,7 +137,7 @@ def embed_panels(panels: Sequence[Panel], cycles: Sequence[Cycle], code: str) ->
     cycles : sequence of Cycle
         The cases that they count.
     code : str
-        JavaScript that shows the values under the cursor; gets ``cb_obj`` and ``panel``.
+        JavaScript that shows the values under the cursor; gets ``cb_obj``, ``panel`` and ``cursor``.
 
     Returns
     -------
@@ -158,7 +158,7 @@ def embed_panels(panels: Sequence[Panel], cycles: Sequence[Cycle], code: str) ->
     plots = []
     for panel in panels:
         plot = _plot(panel, cycles, axes[panel.across])
-        reading = CustomJS(args={"panel": plot}, code=code)
+        reading = CustomJS(args={"panel": plot, "cursor": axes[panel.across].cursor}, code=code)
         for event in ("mousemove", "tap"):
             plot.js_on_event(event, reading)
         plots.append(plot)

@@ -25,4 +25,5 @@ if (strip && Number.isFinite(at)) {
     return word;
   }));
   strip.hidden = false;
+  if (!cursor.visible) cursor.visible = true;
 }

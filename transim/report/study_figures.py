@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -206,20 +207,26 @@ def sweep_map_figure(title: str, x: Quantity, y: Quantity, z: Quantity, feasible
 
 
 def _hatch(axes: Axes, horizontal: Array, vertical: Array, feasible: npt.NDArray[np.bool_]) -> None:
-    """Hatch the cells that are not feasible, and draw the border between both kinds cell by cell."""
+    """Hatch what is not feasible, and draw the border between both kinds along the cells."""
     from matplotlib.collections import LineCollection
     from matplotlib.patches import Rectangle
 
     segments = []
     rows, columns = feasible.shape
     for row in range(rows):
+        low, high = vertical[row], vertical[row + 1]
+        # neighbours are hatched together, or a fine map would take minutes
+        for good, run in itertools.groupby(range(columns), key=feasible[row].item):
+            cells = list(run)
+            left, right = horizontal[cells[0]], horizontal[cells[-1] + 1]
+            # dark on light and light on dark: one of the two shows on every colour
+            for colour, width in () if good else (("white", 1.6), ("#303030", 0.6)):
+                strip = Rectangle((left, low), right - left, high - low)
+                strip.set(facecolor="none", edgecolor=colour, hatch="///", linewidth=0.0, zorder=2.0)
+                strip.set_hatch_linewidth(width)
+                axes.add_patch(strip)
         for column in range(columns):
             left, right = horizontal[column], horizontal[column + 1]
-            low, high = vertical[row], vertical[row + 1]
-            if not feasible[row, column]:
-                cell = Rectangle((left, low), right - left, high - low)
-                cell.set(facecolor="none", edgecolor="#ffffffb0", hatch="///", linewidth=0.0, zorder=2.0)
-                axes.add_patch(cell)
             if column + 1 < columns and feasible[row, column] != feasible[row, column + 1]:
                 segments.append([(right, low), (right, high)])
             if row + 1 < rows and feasible[row, column] != feasible[row + 1, column]:

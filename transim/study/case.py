@@ -16,8 +16,9 @@ from transim.engine.ngspice import Engine, EngineRun
 from transim.engine.rawfile import Plot
 from transim.envelope.check import bias_check_deck
 from transim.envelope.junction import Array
-from transim.envelope.linearise import Bias
+from transim.envelope.bias import Bias
 from transim.envelope.stationary import Complex, read_scattering
+from transim.study.attempt import run_deck
 
 __all__ = ["Case"]
 
@@ -35,18 +36,22 @@ class Case:
             design.title, Path(design.source.path or "design").name, driver.name, temperature
         )
         self.decks: list[Deck] = []
+        #: What is to be said of decks that needed a second try.
+        self.retries: list[str] = []
+        #: Every vector of the video run, once it has run, by name.
+        self.vectors: Mapping[str, Array] = {}
         self.seconds = 0.0
+        #: The flattened circuit, once the static deck has run.
+        self.circuit: Circuit | None = None
 
     def run(self, deck: Deck) -> EngineRun:
         """Run a deck and keep it."""
         self.decks.append(deck)
-        done = self.engine.run(
-            deck.text,
-            name=deck.name,
-            timeout=self.design.numerics.timeout,
-            stop_time=deck.stop,
-            writes_raw=deck.writes_raw,
-        )
+        finished = run_deck(self.engine, deck, self.design.numerics)
+        done = finished.run
+        if finished.retry is not None:
+            self.decks[self.decks.index(deck)] = finished.deck
+            self.retries.append(finished.retry)
         self.seconds += done.seconds
         return done
 
@@ -63,13 +68,16 @@ class Case:
             read_scattering(some, self.netlist.ports, design.carrier.frequency)
             for some in (plots[:half], plots[half:])
         ]
-        return read_listing(done.log), np.stack(states)
+        self.circuit = read_listing(done.log)
+        return self.circuit, np.stack(states)
 
     def video(self, saved: Sequence[str]) -> Plot:
         """Return the run of the control pulse without RF."""
         design = self.design
         deck = video_deck(self.netlist, design.control, self.timeline, design.numerics, self.origin, saved)
-        return self.run(deck).plots[0]
+        plot = self.run(deck).plots[0]
+        self.vectors = {name: np.real(plot.data[:, k]) for k, name in enumerate(plot.names)}
+        return plot
 
     def check(self, name: str, circuit: Circuit, vectors: Mapping[str, Array], point: int) -> Complex:
         """Return S at the bias of one point of the video run, by ngspice, shape (f, p, p)."""

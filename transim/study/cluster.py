@@ -104,7 +104,7 @@ class ClusterPool:
 
         source = iter(tasks)
         keys: dict[str, Hashable] = {}
-        arriving = as_completed()
+        arriving = as_completed(loop=self._client.loop)
 
         def supply() -> None:
             threads = sum(

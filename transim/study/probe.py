@@ -112,8 +112,8 @@ class TurnOnProbe:
             plots.append(case.run(replace(deck, group=group)).plots[0])
         self._quiet = plots[2]
         node = f"v({netlist.ports[second].node})"
-        runs = tuple((np.real(plot["time"]), np.real(plot[node])) for plot in plots)
-        time, envelope = extract_envelope(runs, frequency, design.numerics.carrier_points)
+        runs = [(np.real(plot["time"]), np.real(plot[node])) for plot in plots]
+        time, envelope = extract_envelope((runs[0], runs[1], runs[2]), frequency, design.numerics.carrier_points)
         rising = Waveform(time, np.abs(2.0 * envelope / amplitude), "1").crossings(self._level, "rising")
         after = rising[rising > on_edge]
         return float(after[0] - on_edge) if after.size else None

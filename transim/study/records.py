@@ -15,6 +15,7 @@ from transim.measure.record import Record
 from transim.measure.rf import LargeSignal, RfStress
 from transim.measure.waveform import Waveform
 from transim.study.case import Case
+from transim.study.charges import fed_junctions, other_charges, reached_nodes
 from transim.study.ratings import ratings_of
 from transim.study.terminals import (
     driver_output_power,
@@ -26,6 +27,8 @@ from transim.study.terminals import (
 )
 
 __all__ = ["record_of"]
+
+_UNITS = {"charge": "C", "reverse": "V", "current": "A"}
 
 
 def record_of(
@@ -62,7 +65,7 @@ def record_of(
     first, second = netlist.through
     on, off = (states[1], states[0]) if passes else (states[0], states[1])
     time = vectors["time"]
-    probes: dict[str, dict[str, Waveform]] = {"charge": {}, "reverse": {}}
+    probes: dict[str, dict[str, Waveform]] = {"charge": {}, "reverse": {}, "current": {}}
     signs = {place.instance: polarity(junction_at(design, place)) for place in netlist.junctions}
     for probe in netlist.probes:
         if probe.quantity in probes:
@@ -71,12 +74,17 @@ def record_of(
             name = probe.junction if probe.junction not in found else f"{probe.junction} {len(found) + 1}"
             if probe.quantity == "reverse":
                 total = signs[probe.junction] * total
-            found[name] = Waveform(time, np.asarray(total), "C" if probe.quantity == "charge" else "V")
+            found[name] = Waveform(time, np.asarray(total), _UNITS[probe.quantity])
     power = None
     if netlist.supplies:
         rails = [name.removeprefix("vsupply_") for name in netlist.supplies]
         delivered = [-vectors[f"v({rail})"] * vectors[f"i(vsupply_{rail})"] for rail in rails]
         power = Waveform(time, np.sum(delivered, axis=0), "W")
+    fed: dict[str, float] = {}
+    other: dict[str, Waveform] = {}
+    if case.circuit is not None:
+        fed = fed_junctions(case, reached_nodes(case.circuit, design.switch.path.bias[0].lower()))
+        other = other_charges(case, case.circuit, vectors)
     record = Record(
         timing=case.timeline.timing(passes),
         definitions=_definitions(design),
@@ -90,11 +98,15 @@ def record_of(
         match_off=complex(off[first, first]),
         video={port.node: Waveform(time, vectors[f"v({port.node})"], "V") for port in netlist.ports},
         drive_current=Waveform(time, vectors["i(vdrive)"], "A"),
+        driver_voltage=Waveform(time, vectors["v(drive)"], "V"),
         supply_power=power,
         junction_charge=probes["charge"],
         junction_reverse=probes["reverse"],
         junction_current=junction_currents(case, vectors),
         junction_power=junction_powers(case, vectors),
+        junction_conduction=probes["current"],
+        junction_fed=fed,
+        other_charge=other,
         driver_output_power=driver_output_power(vectors),
         supply_current=supply_currents(case, vectors),
         stress=rf if isinstance(rf, RfStress) else None,

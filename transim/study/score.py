@@ -19,16 +19,15 @@ def normalised_margin(judgement: Judgement) -> float | None:
     Returns
     -------
     float or None
-        Distance to the nearer bound over the magnitude of that bound; over one unit where the bound is zero.
-        Negative where the limit is missed, None where it is undefined.
+        Distance to a bound over the magnitude of that bound, the smaller one of two; over one unit where the bound
+        is zero. Negative where the limit is missed, None where it is undefined.
     """
     value, low, high = judgement.value, judgement.min, judgement.max
     if value is None:
         return None
     ends = [(value - low, low)] if low is not None else []
     ends += [(high - value, high)] if high is not None else []
-    margin, bound = min(ends)
-    return margin / abs(bound) if bound != 0.0 else margin
+    return min(margin / abs(bound) if bound != 0.0 else margin for margin, bound in ends)
 
 
 def point_margins(point: Point) -> list[tuple[CaseFigures, Judgement, float | None]]:

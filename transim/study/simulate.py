@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from contextlib import suppress
 from dataclasses import dataclass, field, replace
 from typing import Literal
 
@@ -14,9 +15,13 @@ from transim.design.model import Design, Driver
 from transim.engine.ngspice import Engine
 from transim.engine.rawfile import Plot
 from transim.envelope.junction import Array
-from transim.envelope.linearise import Bias, linearise, saved_vectors
+from transim.envelope.bias import Bias
+from transim.envelope.linearise import linearise, saved_vectors
 from transim.envelope.method import Envelope, solve_envelope
 from transim.envelope.stationary import Complex, largest_difference
+from transim.errors import MeasurementError
+from transim.measure.account import ChargeAccount, charge_account
+from transim.measure.budget import Budget, time_budget
 from transim.measure.levels import full_on, voltage_share
 from transim.measure.limits import Judgement, Verdict, judge, judge_ratings, verdict
 from transim.measure.metrics import Figure, extract
@@ -27,9 +32,11 @@ from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
 from transim.study.carrier import run_carrier
 from transim.study.case import Case
+from transim.study.holdoff import HoldOffProbe
 from transim.study.probe import TurnOnProbe
 from transim.study.records import record_of
 from transim.study.settled import run_static_sweep
+from transim.study.soundness import numerical_notes, unbounded
 from transim.study.stress import StressSolution, small_signal_warnings
 
 __all__ = ["CaseRun", "Result", "simulate"]
@@ -76,6 +83,16 @@ class Result:
         Largest difference of the envelope to ngspice's AC analysis at the biases that were checked [dB].
     checked : tuple of str
         These biases, in words.
+    notes : tuple of str
+        What makes figures less sure than they look: coarse steps, an unsettled state, few periods of the carrier.
+    retries : tuple of str
+        Decks of the case that found a solution in a second try only, and with which settings.
+    budget : mapping of str to Budget
+        Where the time goes, of ``on_time`` and ``off_time`` as far as they are defined.
+    charge : mapping of str to ChargeAccount
+        Where the charge goes, likewise.
+    first_pulse : mapping of str to Figure or None
+        Every metric of the first pulse of a train; None where there is one pulse.
     """
 
     driver: str
@@ -92,6 +109,11 @@ class Result:
     checked: tuple[str, ...] = ()
     ratings: tuple[Judgement, ...] = ()
     rates: RateStudy | None = None
+    notes: tuple[str, ...] = ()
+    retries: tuple[str, ...] = ()
+    budget: Mapping[str, Budget] = field(default_factory=dict)
+    charge: Mapping[str, ChargeAccount] = field(default_factory=dict)
+    first_pulse: Mapping[str, Figure] | None = None
 
     @property
     def verdict(self) -> Verdict:
@@ -178,7 +200,7 @@ def simulate(
     circuit, states = case.static()
     saved = saved_vectors(circuit) if "envelope" in analyses else ()
     video = case.video(saved)
-    vectors = {name: np.real(video.data[:, k]) for k, name in enumerate(video.names)}
+    vectors = case.vectors
     results: list[Result] = []
     envelopes: dict[tuple[str, float], Waveform] = {}
     if "envelope" in analyses:
@@ -191,6 +213,7 @@ def simulate(
     carriers, levels = design.carrier.frequency, design.carrier.level
     results.sort(key=lambda r: (carriers.index(r.carrier), levels.index(r.level), analyses.index(r.analysis)))
     static = run_static_sweep(case)
+    results = [replace(result, retries=tuple(case.retries)) for result in results]
     return CaseRun(
         driver=driver.name,
         temperature=temperature,
@@ -243,6 +266,8 @@ def _envelope(
             warnings = small_signal_warnings(at_level, frequency)
             time = result.figures["on_time"].value if "on_time" in result.figures else None
             # studies leave the probes out, as they do the checks
+            if checks == "all":
+                warnings = (*warnings, *HoldOffProbe(case, frequency, record).warnings(at_level))
             if checks == "all" and time is not None and record.static_on is not None:
                 probe = probe or TurnOnProbe(case, frequency, voltage_share(record, 90) * full_on(record), time)
                 warnings = (*probe.warnings(at_level), *warnings)
@@ -288,12 +313,15 @@ def _carrier(
 
 def _result(case: Case, record: Record, analysis: str, method: str, differences: Mapping[str, float]) -> Result:
     figures = extract(record)
+    budgets, accounts = _edges(record)
+    first = case.timeline.first_timing(record.biased_passes)
     faults = tuple(
         f"{_CHECKS[name]}, the envelope differs by {format_quantity(difference, 'dB')} from ngspice's AC analysis at "
         f"the same bias; at most {format_quantity(_TOLERATED, 'dB')} is sound"
         for name, difference in differences.items()
         if not difference <= _TOLERATED
     )
+    faults += unbounded(case.vectors)
     return Result(
         driver=case.origin.driver,
         carrier=record.carrier,
@@ -308,4 +336,20 @@ def _result(case: Case, record: Record, analysis: str, method: str, differences:
         level=(record.stress or record.large).level,  # type: ignore[union-attr]
         ratings=judge_ratings(record),
         rates=rate_study(record),
+        notes=numerical_notes(record, figures, case.vectors["time"], case.design.numerics.steps),
+        budget=budgets,
+        charge=accounts,
+        first_pulse=None if first is None else extract(replace(record, timing=first)),
     )
+
+
+def _edges(record: Record) -> tuple[dict[str, Budget], dict[str, ChargeAccount]]:
+    """Return where time and charge of both edges go, as far as they are defined."""
+    budgets: dict[str, Budget] = {}
+    accounts: dict[str, ChargeAccount] = {}
+    for edge in ("on", "off"):
+        with suppress(MeasurementError):
+            budget = time_budget(record, "on" if edge == "on" else "off")
+            budgets[budget.metric] = budget
+            accounts[budget.metric] = charge_account(record, budget)
+    return budgets, accounts

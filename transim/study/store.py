@@ -164,7 +164,7 @@ class Store:
         self._connection.execute("PRAGMA journal_mode=WAL")
         self._connection.execute("PRAGMA synchronous=NORMAL")
         try:
-            # one study, one writer: a second process would simulate the same points again
+            # one writer, or points would be simulated twice; and no shared memory, which network disks do not have
             self._connection.execute("PRAGMA locking_mode=EXCLUSIVE")
             self._connection.execute("BEGIN EXCLUSIVE")
             self._connection.execute(_SCHEMA)

@@ -13,7 +13,7 @@ from transim.envelope.junction import Array
 from transim.measure.waveform import Waveform
 from transim.study.case import Case
 
-__all__ = ["driver_output_power", "junction_at", "junction_currents", "junction_powers", "polarity", "supply_currents"]
+__all__ = ["anode_of", "driver_output_power", "junction_at", "junction_currents", "junction_powers", "polarity", "supply_currents"]
 
 _PNP = re.compile(r"(?i)\s*\.model\s+\S+\s+pnp\b")
 _NODE = re.compile(r"v\((?P<terminal>\w+)\)")
@@ -71,7 +71,7 @@ def junction_currents(case: Case, vectors: Mapping[str, Array]) -> dict[str, Wav
     found = {}
     for place in case.netlist.junctions:
         junction = junction_at(case.design, place)
-        current = polarity(junction) * _terminal_current(place, _anode(junction), vectors)
+        current = polarity(junction) * _terminal_current(place, anode_of(junction), vectors)
         found[place.instance] = Waveform(vectors["time"], current, "A")
     return found
 
@@ -139,7 +139,19 @@ def supply_currents(case: Case, vectors: Mapping[str, Array]) -> dict[str, Wavef
     }
 
 
-def _anode(junction: Junction) -> str:
+def anode_of(junction: Junction) -> str:
+    """Return the terminal that forward current enters.
+
+    Parameters
+    ----------
+    junction : Junction
+        Of the design.
+
+    Returns
+    -------
+    str
+        The one that the part's probe of its reverse voltage subtracts, without such a probe the first.
+    """
     terminals = [name.lower() for name in junction.part.terminals]
     for probe in junction.part.probes:
         if probe.quantity != "reverse":

@@ -1,0 +1,96 @@
+"""First and last pulse of a train, side by side."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import asdict
+from typing import Any
+
+from transim.measure.metrics import METRICS, Figure
+from transim.quantities import format_quantity
+from transim.report.layout import Column, align, wrap
+from transim.study.run import Outcome
+from transim.study.simulate import Result
+
+__all__ = ["first_document", "pulse_lines"]
+
+#: Figures that differ by less than this are as good as equal.
+_EQUAL = 1e-3
+
+
+def pulse_lines(outcome: Outcome) -> list[str]:
+    """Set the figures of the first pulse beside those of the last, where they differ.
+
+    Parameters
+    ----------
+    outcome : Outcome
+        The run of a design.
+
+    Returns
+    -------
+    list of str
+        A table for each result of a train; empty for single pulses.
+    """
+    lines: list[str] = []
+    for result in outcome.results:
+        if result.first_pulse is None:
+            continue
+        place = f"{result.driver} at {format_quantity(result.carrier, 'Hz', 12)}"
+        place += f" and {format_quantity(result.temperature, 'degC', 12)}, {result.analysis} analysis"
+        rows = _rows(result.figures, result.first_pulse)
+        if not rows:
+            lines += [*wrap(f"{place}: first and last pulse differ by less than {_EQUAL:.1%} in every figure"), ""]
+            continue
+        lines += [f"First and last pulse, {place}; equal figures left out", "", *_table(rows), ""]
+    return lines[:-1]
+
+
+def _rows(last: Mapping[str, Figure], first: Mapping[str, Figure]) -> list[tuple[str, Figure, Figure]]:
+    found = []
+    for name, figure in last.items():
+        other = first[name]
+        if figure.value is None or other.value is None:
+            different = (figure.value is None) != (other.value is None)
+        else:
+            different = abs(figure.value - other.value) > _EQUAL * max(abs(figure.value), abs(other.value))
+        if different:
+            found.append((name, other, figure))
+    return found
+
+
+def _table(rows: Sequence[tuple[str, Figure, Figure]]) -> list[str]:
+    changes = []
+    for _, first, last in rows:
+        known = first.value is not None and last.value is not None and first.value != 0.0
+        plain = last.unit not in ("dB", "dBm")
+        changes.append(f"{last.value / first.value - 1.0:+.1%}" if known and plain else "")  # type: ignore[operator]
+    columns = [
+        Column("metric", tuple(name for name, *_ in rows)),
+        Column("first", tuple(_value(first) for _, first, _ in rows), right=True),
+        Column("last", tuple(_value(last) for *_, last in rows), right=True),
+        Column("change", tuple(changes), right=True),
+        Column("meaning", tuple(METRICS[name].title for name, *_ in rows)),
+    ]
+    return align(columns, "  ")
+
+
+def _value(figure: Figure) -> str:
+    return "-" if figure.value is None else format_quantity(figure.value, figure.unit)
+
+
+def first_document(result: Result) -> dict[str, Any] | None:
+    """Return the figures of the first pulse.
+
+    Parameters
+    ----------
+    result : Result
+        Of a run.
+
+    Returns
+    -------
+    dict or None
+        As ``metrics`` of the last pulse; None where there is one pulse.
+    """
+    if result.first_pulse is None:
+        return None
+    return {name: asdict(figure) for name, figure in result.first_pulse.items()}
