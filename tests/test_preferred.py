@@ -1,6 +1,7 @@
 """Preferred numbers against IEC 60063:2015 (E24 as printed there; E48 and E96 from memory of its tables)."""
 
 import math
+from itertools import pairwise
 
 import pytest
 from hypothesis import given
@@ -39,7 +40,7 @@ def test_nearest_in_ratio(series, value, nearest):
 
 
 def test_values_are_the_floats_that_a_design_file_gives():
-    assert preferred_values("E12", 1e-10, 1e-9) == tuple(float(f"{n}e-11") for n in map(int, E12.split())) + (1e-9,)
+    assert preferred_values("E12", 1e-10, 1e-9) == (*(float(f"{n}e-11") for n in E12.split()), 1e-9)
 
 
 @given(st.sampled_from(sorted(SERIES)), st.floats(1e-15, 1e9), st.floats(1.0, 1e4))
@@ -53,6 +54,6 @@ def test_range_holds_all_values_of_the_series_and_no_other(series, low, ratio):
     if values:
         assert values[0] <= low * step
         assert values[-1] >= high / step
-        assert all(b / a <= step for a, b in zip(values, values[1:], strict=False))
+        assert all(b / a <= step for a, b in pairwise(values))
     else:
         assert math.log(ratio) <= math.log(step)

@@ -34,10 +34,7 @@ class Counted:
 
     def __call__(self, indices):
         self.count += len(indices)
-        found = []
-        for index in indices:
-            found.append(self.model(*(axis[k] for axis, k in zip(self.axes, index, strict=True))))
-        return found
+        return [self.model(*(axis[k] for axis, k in zip(self.axes, index, strict=True))) for index in indices]
 
 
 def plain(*values):

@@ -148,7 +148,9 @@ def _deck(console: Any, design: Path, out: Path, drivers: Sequence[str], force: 
 @click.option("--figures", type=_PATH, metavar="DIR", help="Folder for figures, PNG and SVG; may lie in --out.")
 @click.option("--report", type=_PATH, metavar="FILE.html", help="A page with everything that opens offline.")
 @_force
+@click.option("--certify", is_flag=True, help="Repeat at finer settings; give every figure its numerical uncertainty.")
 @click.option("--beside", metavar="[DRIVER=]FILE", help="A record to compare with, as measure --json wrote it.")
+@click.option("--shortest", is_flag=True, help="Find the shortest usable pulse and gap too, by bisection.")
 @_ngspice
 @_common
 def _run(console: Any, design: Path, **options: Any) -> int:

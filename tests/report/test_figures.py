@@ -107,7 +107,7 @@ def test_limits_are_hatched_and_in_sight(invent):
     assert not [patch for patch in by_title["Return loss, on"].patches if patch.get_hatch()]
 
 
-@pytest.mark.parametrize("title", ["costs $5 and $\\\\frac", "\u65e5\u672c", "a_b^c " * 30])
+@pytest.mark.parametrize("title", [r"costs $\frac$ each", "\u65e5\u672c", "a_b^c " * 30])
 def test_a_title_is_text_whatever_it_holds(tmp_path, title):
     save_figure(tune_figure(title, [WINDOW]), tmp_path / "tune")
     assert (tmp_path / "tune.png").read_bytes().startswith(b"\x89PNG")

@@ -82,7 +82,7 @@ def test_a_scheduler_that_is_not_there(monkeypatch):
     monkeypatch.setattr("transim.study.cluster._PATIENCE", 1.0)
     start = time.monotonic()
     with (
-        pytest.raises(StudyError, match="no Dask scheduler answers at tcp://127.0.0.1"),
+        pytest.raises(StudyError, match="no Dask scheduler answers at tcp:"),
         ClusterPool(tasks.square, {}, f"tcp://127.0.0.1:{free_port()}", "none"),
     ):
         pass

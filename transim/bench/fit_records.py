@@ -114,7 +114,7 @@ def _prepare(design: Design, one: Comparison) -> tuple[Design, float]:
     if second <= timing.stop:
         on_for = second - first
         period = max(control.period, on_for + 2.0 * control.edge, timing.stop - first)
-        control = control.model_copy(update={"on_for": on_for, "period": period})
+        control = control.model_copy(update={"on_for": on_for, "period": period, "record": None})
     own = design.model_copy(
         update={"control": control, "carrier": design.carrier.model_copy(update={"frequency": (carrier,)})}
     )

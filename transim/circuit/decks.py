@@ -100,6 +100,12 @@ def option_cards(numerics: Numerics, temperature: float, method: str) -> str:
 
 def _command(control: Control, timeline: Timeline) -> str:
     """Return the command source; its 0 to 100 % edges are centred on the timeline's 50 % points."""
+    if timeline.command:
+        # a point at zero, then the record; twelve digits as below
+        corners = [(float(f"{time:.12g}"), volts) for time, volts in timeline.command]
+        points = [(0.0, control.low)] * (corners[0][0] > 0.0) + corners
+        lines = "".join(f"+ {deck_number(time)} {deck_number(volts)}\n" for time, volts in points)
+        return f"Vcontrol ctl 0 DC {deck_number(control.low)} PWL(\n{lines}+ )\n"
     times = (
         timeline.lead - timeline.edge / 2.0,
         timeline.edge,

@@ -72,6 +72,14 @@ def _command(design: Design) -> Iterator[str]:
     timeline = timeline_of(design)
     low, high = format_quantity(control.low, "V"), format_quantity(control.high, "V")
     times = {name: format_quantity(getattr(control, name), "s") for name in ("edge", "on_for", "period")}
+    if control.record is not None:
+        yield from wrap(
+            f"command: recorded in {control.record.file}, {len(control.record.time)} corners;"
+            f" {control.pulses} complete pulse{'s' * (control.pulses > 1)}, of which the last is judged: from {low} to"
+            f" {high}, edges of {times['edge']} (0 to 100 %), high for {times['on_for']} between its 50 % points, every"
+            f" {times['period']}; {format_quantity(timeline.stop, 's')} are simulated"
+        )
+        return
     train = "a single pulse" if control.pulses == 1 else f"{control.pulses} pulses, of which the last is judged"
     yield from wrap(
         f"command: from {low} to {high} with edges of {times['edge']} (0 to 100 %), high for {times['on_for']}"
@@ -210,7 +218,10 @@ def _document(design: Design) -> dict[str, Any]:
         "format": FORMAT,
         "title": design.title,
         "design": design.source.path.name,
-        "control": design.control.model_dump(),
+        "control": {
+            **design.control.model_dump(exclude={"record"}),
+            "record": None if design.control.record is None else design.control.record.file,
+        },
         "carrier": design.carrier.model_dump(),
         "path": {"part": path.name, "values": dict(design.switch.values)},
         "junctions": {slot: _component(junction) for slot, junction in design.switch.junctions.items()},

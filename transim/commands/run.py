@@ -46,8 +46,12 @@ class RunRequest:
         File for the report page; may lie in `out`.
     force : bool
         Whether results of an earlier run in it are replaced.
+    certify : bool
+        Whether every figure gets its numerical uncertainty, by runs at finer settings.
     beside : str or None
         A measured record that the run is held against: ``DRIVER=FILE`` or ``FILE``.
+    shortest : bool
+        Whether shortest usable pulse and gap are looked for, whatever the design says.
     """
 
     design_file: Path
@@ -59,6 +63,8 @@ class RunRequest:
     report: Path | None = None
     force: bool = False
     beside: str | None = None
+    certify: bool = False
+    shortest: bool = False
 
 
 def run_and_report(console: Console, request: RunRequest) -> int:
@@ -95,11 +101,14 @@ def run_and_report(console: Console, request: RunRequest) -> int:
     from transim.report.pulses import pulse_lines
     from transim.report.ratings import rating_tables
     from transim.report.settled import settled_lines
+    from transim.report.shortest import shortest_lines
     from transim.report.tables import metric_tables
     from transim.report.verdicts import head_lines, verdict_lines
     from transim.study.run import choose_drivers, run_design
 
     design = read_design(request.design_file)
+    if request.shortest:
+        design = design.model_copy(update={"shortest": True})
     choose_drivers(design, request.drivers)
     record = None if request.beside is None else _record(request.beside, design)
     engine = find_engine(request.ngspice)
@@ -108,13 +117,18 @@ def run_and_report(console: Console, request: RunRequest) -> int:
     with places:
         with console.progress() as progress:
             outcome = run_design(
-                design, engine, drivers=request.drivers, analysis=request.analysis, progress=progress
+                design,
+                engine,
+                drivers=request.drivers,
+                analysis=request.analysis,
+                progress=progress,
+                certify=request.certify,
             )
         document = run_document(outcome, time.perf_counter() - started)
         extra = [] if record is None else _beside(places, outcome, record, document)
         _write(places, outcome, document)
     blocks = (
-        head_lines, metric_tables, pulse_lines, budget_lines, rating_tables, settled_lines, caution_lines, verdict_lines,
+        head_lines, metric_tables, pulse_lines, shortest_lines, budget_lines, rating_tables, settled_lines, caution_lines, verdict_lines,
     )  # fmt: skip
     texts = [lines for block in blocks if (lines := block(outcome))]
     texts[-1:-1] = [extra] if extra else []

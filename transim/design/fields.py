@@ -20,7 +20,7 @@ from transim.parts.nearest import nearest_name
 from transim.parts.part import Parameter
 from transim.quantities import UNITS, format_quantity, format_range, parse_quantity
 
-__all__ = ["FROM_FILE", "Choice", "Count", "ElementErrors", "Kind", "Line", "Quantity", "Series", "shown", "table_keys"]
+__all__ = ["FROM_FILE", "Choice", "Count", "ElementErrors", "Flag", "Kind", "Line", "Quantity", "Series", "shown", "table_keys"]
 
 _CONTROL = re.compile("[\\x00-\\x1f\\x7f-\\x9f\\u2028\\u2029]")
 
@@ -299,6 +299,41 @@ class Count(_Checked):
             raise DesignError("this is not a whole number", expected=self.expected, found=shown(raw))
         if not self.low <= raw <= self.high:
             raise DesignError("the value is out of range", expected=self.expected, found=shown(raw))
+        return raw
+
+
+@dataclass(frozen=True)
+class Flag(_Checked):
+    """True or false."""
+
+    @property
+    def expected(self) -> str:
+        """What an error says was expected."""
+        return "true or false, without quotes"
+
+    def read(self, raw: object, *, from_file: bool) -> bool:
+        """Check a value.
+
+        Parameters
+        ----------
+        raw : object
+            True or false.
+        from_file : bool
+            Without effect.
+
+        Returns
+        -------
+        bool
+            The value.
+
+        Raises
+        ------
+        DesignError
+            If it is neither.
+        """
+        del from_file
+        if not isinstance(raw, bool):
+            raise DesignError("this is neither true nor false", expected=self.expected, found=shown(raw))
         return raw
 
 

@@ -9,7 +9,8 @@ from typing import Annotated, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, InstanceOf, ValidationInfo, field_validator
 
-from transim.design.fields import Choice, Count, Line, Quantity, Series
+from transim.design.command import Command
+from transim.design.fields import Choice, Count, Flag, Line, Quantity, Series
 from transim.design.frozen import Frozen
 from transim.design.ratings import DriverRatings, JunctionRatings
 from transim.errors import DesignError
@@ -54,6 +55,9 @@ class Control(_Table):
         Duration of an edge from 0 to 100 % [s], no longer than `on_for` and the pause.
     pulses : int
         How many pulses are simulated; the last is judged.
+    record : Command or None
+        The command as recorded, where it comes from a file; the other fields are then those of its judged pulse,
+        the last complete one.
     """
 
     low: Annotated[float, Quantity("V", -1e3, 1e3)] = Field(description="level of the command that is off")
@@ -69,6 +73,9 @@ class Control(_Table):
     )
     pulses: Annotated[int, Count(1, 1000)] = Field(
         default=1, description="pulses in the train; the last is judged"
+    )
+    record: InstanceOf[Command] | None = Field(
+        default=None, description="file with a recorded command (time in s, volts) in place of all but period"
     )
 
     @field_validator("high")
@@ -211,6 +218,8 @@ class Measure(_Table):
     ----------
     basis, reference, settle_band, phase_band, video_bandwidth, resolution_bandwidth, isolation_level
         As in `transim.measure.definitions.Definitions`.
+    shortest : bool
+        Whether shortest usable pulse and gap are looked for.
     """
 
     basis: Annotated[Literal["voltage", "power"], Choice(("voltage", "power"))] = Field(
@@ -234,6 +243,9 @@ class Measure(_Table):
     isolation_level: Annotated[float, Quantity("dB", 0.0, 300.0, True)] = Field(
         default=_STANDARD.isolation_level, description="what counts as off where isolation has no limit"
     )
+    shortest: Annotated[bool, Flag()] = Field(
+        default=False, description="true: look for shortest_pulse and shortest_gap too, by bisection"
+    )
 
     def definitions(self) -> Definitions:
         """Return the definitions for the metrics.
@@ -243,7 +255,7 @@ class Measure(_Table):
         Definitions
             With the values of this table.
         """
-        return Definitions(**{name: getattr(self, name) for name in type(self).model_fields})
+        return Definitions(**{name: getattr(self, name) for name in type(self).model_fields if name != "shortest"})
 
 
 class Environment(_Table):
@@ -386,6 +398,8 @@ class Design(_Table):
         How finely the circuit is simulated.
     static : Static or None
         Frequencies and currents at which the settled states are swept; None: they are not.
+    shortest : bool
+        Whether shortest usable pulse and gap are looked for.
     source : Source
         Where the design comes from.
     """
@@ -400,4 +414,5 @@ class Design(_Table):
     environment: Environment = Environment()
     numerics: Numerics = Numerics()
     static: Static | None = None
+    shortest: bool = False
     source: Source

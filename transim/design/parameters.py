@@ -40,6 +40,8 @@ def parameters_of(design: Design) -> dict[str, Quantity]:
     """
     found: dict[str, Quantity] = {}
     for table in _TABLES:
+        if table == "control" and design.control.record is not None:
+            continue
         model: BaseModel = getattr(design, table)
         for name, field in type(model).model_fields.items():
             for kind in field.metadata:

@@ -31,6 +31,9 @@ _STATIC: dict[str, str | list[str]] = {
     "to": "1 GHz",
     "bias_sweep": ["10 uA", "100 uA", "1 mA", "10 mA"],
 }
+#: Keys whose values are no quantity, count or choice; those that name a file are shown as comments.
+_PLAIN = {"record": '"command.csv"', "shortest": "false"}
+_FILES = ("record",)
 _LARGER_IS_BETTER = ("isolation", "return_loss", "highest_rate")
 _PREFERRED_JUNCTION = "pin_lumped"
 
@@ -130,8 +133,11 @@ def _table(model: type[BaseModel], given: Mapping[str, str | list[str]]) -> Iter
     """Write every key of a table that has a model."""
     for key, field in table_keys(model).items():
         kinds = (entry for entry in field.metadata if isinstance(entry, Quantity | Series | Count | Choice))
-        kind = next(kinds)
+        kind = next(kinds, None)
         meaning = str(field.description)
+        if kind is None:
+            yield _entry(key, _PLAIN[key], meaning, active=key not in _FILES)
+            continue
         if isinstance(kind, Choice):
             yield _entry(key, f'"{field.default}"', f"{kind.expected}: {meaning}")
             continue

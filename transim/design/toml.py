@@ -13,6 +13,7 @@ from transim.design.faults import Faults
 from transim.design.fields import Line
 from transim.design.limits import Unitful, read_limits
 from transim.design.model import Carrier, Control, Design, Environment, Measure, Numerics, Source, Static
+from transim.design.recorded import read_recorded_control
 from transim.design.starting import starting_design
 from transim.errors import DesignError, InvalidDesign, NetlistError
 from transim.parts.catalogue import Catalogue, load_catalogue
@@ -71,7 +72,9 @@ def read_design(
     title = faults.value(("title",), document.get("title", file.stem[:200]), Line(200))
     components = Components(faults, _catalogue(faults, document, catalogue, file), file.parent)
     tables = {
-        name: faults.model(model, (name,), table)
+        name: read_recorded_control(faults, table, file.parent)
+        if name == "control" and "record" in table
+        else faults.model(model, (name,), table)
         for name, model in (
             ("control", Control),
             ("carrier", Carrier),
@@ -96,6 +99,7 @@ def read_design(
             "drivers": drivers,
             "limits": limits,
             "definitions": measure.definitions() if isinstance(measure, Measure) else None,
+            "shortest": isinstance(measure, Measure) and measure.shortest,
             "source": Source(path=file, text=text),
         }
     )

@@ -10,7 +10,7 @@ from typing import Literal
 import numpy as np
 
 from transim.errors import MeasurementError
-from transim.measure.pulse import fall_time, off_delay, off_time, on_delay, on_time
+from transim.measure.pulse import fall_time, off_time, on_delay, on_time
 from transim.measure.record import Record
 from transim.measure.waveform import Waveform
 
@@ -100,11 +100,11 @@ def time_budget(record: Record, edge: Literal["on", "off"]) -> Budget:
     zero = timing.on_edge if edge == "on" else timing.off_edge
     total = on_time(record) if edge == "on" else off_time(record)
     moves = _first_change(record, edge, total)
-    until = zero + min(moves, total)
+    until = zero + (total if isinstance(moves, str) else min(moves, total))
     found: list[float | str] = [
         _output_half(record, begin, until),
         _current_half(record, begin, until),
-        zero + moves,
+        moves if isinstance(moves, str) else zero + moves,
     ]
     later = zero + total
     # from the end backwards: what is nearer to the RF decides
@@ -142,14 +142,12 @@ def _joined(
     return Budget(metric, tuple(parts), total, zero + total, notes)
 
 
-def _first_change(record: Record, edge: str, total: float) -> float:
-    """Return when the RF leaves its old level, from the command's 50 % point [s]."""
-    if edge == "on":
-        return on_delay(record)
+def _first_change(record: Record, edge: str, total: float) -> float | str:
+    """Return when the RF leaves its old level, from the command's 50 % point [s], or why that is not known."""
     try:
-        return total - fall_time(record)
-    except MeasurementError:
-        return off_delay(record)
+        return on_delay(record) if edge == "on" else total - fall_time(record)
+    except MeasurementError as reason:
+        return reason.message
 
 
 def _output_half(record: Record, begin: float, until: float) -> float | str:

@@ -115,9 +115,12 @@ class Judgement:
         if abs(self.margin) >= uncertainty:
             return replace(self, uncertainty=uncertainty)
         unit = self.unit or METRICS[self.metric].unit
+        # levels differ by decibels
+        unit = "dB" if unit == "dBm" else unit
         width = format_quantity(uncertainty, unit, 3) if math.isfinite(uncertainty) else "unknown"
         side = "inside" if self.margin >= 0.0 else "outside"
-        note = f"it is {format_quantity(abs(self.margin), unit, 3)} {side} its bound, and its numerical uncertainty is {width}"
+        margin = format_quantity(abs(self.margin), unit, 3)
+        note = f"it is {margin} {side} its bound, and its numerical uncertainty is {width}"
         return replace(self, verdict="undefined", note=note, uncertainty=uncertainty)
 
 

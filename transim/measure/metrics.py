@@ -30,7 +30,8 @@ class Metric:
     function : callable
         Takes a `Record`, returns the value, raises MeasurementError where there is none.
     analysis : str or None
-        The one analysis, ``envelope`` or ``carrier``, that can know it; None: any.
+        The one analysis, ``envelope`` or ``carrier``, that can know it; ``request``: a study that has to be asked
+        for; None: any.
     """
 
     name: str

@@ -11,6 +11,7 @@ from transim.errors import MeasurementError
 from transim.measure.definitions import Definitions, Timing
 from transim.measure.rating import Rating
 from transim.measure.rf import LargeSignal, RfStress
+from transim.measure.usable import Shortest
 from transim.measure.waveform import Waveform
 
 __all__ = ["Record"]
@@ -78,6 +79,8 @@ class Record:
         Maximum ratings, each with the waveform that it applies to.
     stress : RfStress or None
         RF voltages and currents in the junctions at the stated level.
+    shortest : Shortest or None
+        Shortest usable pulse and gap, where they were asked for.
     large : LargeSignal or None
         What carrier-resolved runs show beside the envelope.
 
@@ -112,6 +115,7 @@ class Record:
     supply_current: Mapping[str, Waveform] = field(default_factory=dict)
     ratings: tuple[Rating, ...] = ()
     stress: RfStress | None = None
+    shortest: Shortest | None = None
     large: LargeSignal | None = None
 
     def __post_init__(self) -> None:

@@ -86,7 +86,8 @@ def edge_sentences(result: Result, metric: str) -> list[str]:
     """
     budget, account = result.budget[metric], result.charge.get(metric)
     parts = ", ".join(
-        f"{name} {format_quantity(seconds, 's', 3)}" + (f" ({seconds / budget.total:.0%})" if budget.total > 0.0 else "")
+        f"{name} {format_quantity(seconds, 's', 3)}"
+        + (f" ({100.0 * seconds / budget.total:.0f} %)" if budget.total > 0.0 else "")
         for name, seconds in budget.parts
     )
     found = [f"{metric} {format_quantity(budget.total, 's')} = {parts}"]
@@ -102,15 +103,17 @@ def _charge_sentence(account: ChargeAccount) -> str:
     def charge(value: float) -> str:
         return format_quantity(value, "C", 3)
 
-    verb, size = ("delivers", account.delivered) if account.delivered >= 0.0 else ("removes", -account.delivered)
-    sign = 1.0 if account.delivered >= 0.0 else -1.0
-    text = (
-        f"the driver {verb} {charge(size)}, {format_quantity(sign * account.mean_current, 'A', 3)} on average once the"
-        f" junction current has turned; of it {charge(sign * account.stored)} is stored charge,"
-        f" {charge(sign * account.recombined)} recombination, {charge(sign * account.displaced)} on capacitances"
-        f" and past the junctions; the account closes within {max(account.closing_share, 1e-4):.2%}"
+    out = account.delivered >= 0.0
+    sign = 1.0 if out else -1.0
+    stored, others = sign * account.stored, sign * account.displaced
+    junctions = "the junctions store" if out else "the junctions give up"
+    where = "onto" if out else "from"
+    return (
+        f"the driver {'delivers' if out else 'removes'} {charge(sign * account.delivered)}, on average"
+        f" {format_quantity(sign * account.mean_current, 'A', 3)} once the junction current has turned: {junctions}"
+        f" {charge(stored)}, {charge(account.recombined)} recombine, {charge(others)} go {where} capacitances;"
+        f" the account closes within {100.0 * max(account.closing_share, 1e-4):.2g} %"
     )
-    return text
 
 
 def _needed_sentence(account: ChargeAccount, budget: Budget, judgements: Sequence[Judgement]) -> str:
@@ -130,7 +133,7 @@ def _needed_sentence(account: ChargeAccount, budget: Budget, judgements: Sequenc
     )
     if abs(account.displaced) > _MUCH * abs(account.delivered):
         share = abs(account.displaced / account.delivered)
-        text += f"; capacitances take {share:.0%} of the charge: less bypass would do more"
+        text += f"; capacitances take {100.0 * share:.0f} % of the charge: less bypass would do more"
     return text
 
 

@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from transim.engine.ngspice import Engine
     from transim.engine.reference import SelfCheck
     from transim.measure.limits import Judgement, Limit
+    from transim.measure.usable import Shortest
     from transim.parts.part import Parameter, Part
     from transim.study.run import Outcome
     from transim.study.simulate import Result
@@ -105,9 +106,10 @@ def run_document(outcome: Outcome, seconds: float) -> Document:
         "engine": outcome.engine,
         "seconds": round(seconds, 3),
         "definitions": asdict(design.definitions),
+        "certified": outcome.certified,
         "verdict": outcome.verdict,
         "cautions": list(cautions(outcome)),
-        "results": [_result(result) for result in outcome.results],
+        "results": [_result(result, case.shortest) for case in outcome.cases for result in case.results],
         **settled_documents(outcome),
     }
 
@@ -129,10 +131,11 @@ def limit_document(limit: Limit | Judgement) -> Document:
     return {"metric": limit.metric, **{name: bound for name, bound in bounds.items() if bound is not None}}
 
 
-def _result(result: Result) -> Document:
+def _result(result: Result, shortest: Shortest | None) -> Document:
     from transim.report.budget import budget_document, charge_document
     from transim.report.pulses import first_document
     from transim.report.ratings import rates_document
+    from transim.report.shortest import shortest_document
     from transim.report.tables import verdict_word
 
     limits = [
@@ -142,6 +145,7 @@ def _result(result: Result) -> Document:
             "margin": judgement.margin,
             "verdict": verdict_word(result, judgement).lower(),
             # a rating is no metric: unit and reason stand here
+            **({} if judgement.uncertainty is None else {"uncertainty": judgement.uncertainty}),
             **({"rating": True, "unit": judgement.unit, "note": judgement.note} if judgement.unit else {}),
         }
         for judgement in (*result.judgements, *result.ratings)
@@ -156,6 +160,8 @@ def _result(result: Result) -> Document:
         "check_db": result.check,
         "faults": list(result.faults),
         "warnings": list(result.warnings),
+        "notes": list(result.notes),
+        "retries": list(result.retries),
         "verdict": result.verdict,
         "metrics": {name: asdict(figure) for name, figure in result.figures.items()},
         "limits": limits,
@@ -163,6 +169,7 @@ def _result(result: Result) -> Document:
         "budget": budget_document(result.budget),
         "charge": charge_document(result),
         "first_pulse": first_document(result),
+        "shortest": shortest_document(shortest),
     }
 
 

@@ -8,8 +8,10 @@ from typing import TYPE_CHECKING
 
 from transim import __version__
 from transim.errors import OutputError
+from transim.report.budget import budget_lines
 from transim.report.cycle import cycles_of
 from transim.report.panels import embed_panels, key_of, panels_of, thinned_note, time_scale
+from transim.report.pulses import pulse_lines
 from transim.report.ratings import rating_tables
 from transim.report.settled import settled_lines
 from transim.report.summary import (
@@ -81,6 +83,8 @@ def page_text(outcome: Outcome) -> str:
         cautions=caution_rows(outcome),
         limits=limit_tables(outcome),
         figures=figure_tables(outcome),
+        budgets=budget_lines(outcome),
+        pulses=pulse_lines(outcome),
         ratings=rating_tables(outcome),
         settled=settled_lines(outcome),
         key=key_of(cycles),

@@ -218,7 +218,12 @@ def caution_rows(outcome: Outcome) -> list[tuple[str, str]]:
             if judgement.value is None
         ]
         faults = [f"fault: {fault}" for fault in result.faults]
-        for text in (*faults, *undefined, *result.warnings):
+        uncertain = [
+            f"limit on {judgement.metric} not judged: {judgement.note}"
+            for judgement in result.judgements
+            if judgement.value is not None and judgement.verdict == "undefined"
+        ]
+        for text in (*faults, *undefined, *uncertain, *result.warnings, *result.notes, *result.retries):
             found.setdefault(text, []).append(place)
     rows = [("; ".join(places), text) for text, places in found.items()]
     return [*rows, *(("the whole design", text) for text in cautions(outcome))]

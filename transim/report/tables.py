@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import itertools
+import math
 from collections.abc import Iterable, Iterator, Sequence
 
 from transim.measure.limits import Judgement, Limit
@@ -120,7 +121,18 @@ def _plain(result: Result, names: Iterable[str]) -> Column:
 
 def _value(result: Result, name: str) -> str:
     figure = result.figures[name]
-    return "-" if figure.value is None else format_quantity(figure.value, figure.unit)
+    if figure.value is None:
+        return "-"
+    text = format_quantity(figure.value, figure.unit)
+    if figure.uncertainty is None:
+        return text
+    width = format_quantity(figure.uncertainty, _width_unit(figure.unit), 2) if math.isfinite(figure.uncertainty) else "?"
+    return f"{text} \N{PLUS-MINUS SIGN} {width}"
+
+
+def _width_unit(unit: str) -> str:
+    """Return the unit of a difference: two powers in dBm differ by decibels."""
+    return "dB" if unit == "dBm" else unit
 
 
 def side_by_side(names: Column, columns: Sequence[Column], last: Column | None) -> Iterator[str]:

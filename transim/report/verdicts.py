@@ -76,6 +76,7 @@ def head_lines(outcome: Outcome) -> list[str]:
         *wrap(design.title),
         *wrap(f"{outcome.engine}; {analyses} analysis; {degrees}; design file {design.source.path.name}"),
         *(line for sentence in definition_lines(design.definitions) for line in wrap(sentence)),
+        *(wrap(f"{outcome.certified}.") if outcome.certified else ()),
     ]
 
 
@@ -97,7 +98,21 @@ def verdict_lines(outcome: Outcome) -> list[str]:
     for driver in dict.fromkeys(case.driver for case in outcome.cases):
         results = [result for result in outcome.results if result.driver == driver]
         lines += [*_driver(driver, results, joined_verdict(results)), ""]
-    return [*lines, *wrap(overall_sentence(outcome))]
+    return [*lines, *_hold_off(outcome), *wrap(overall_sentence(outcome))]
+
+
+def _hold_off(outcome: Outcome) -> list[str]:
+    """Say where a model's own hold-off differs from the relation, if a figure of the relation is shown."""
+    figures = (result.figures.get("holdoff_bias_margin") for result in outcome.results)
+    if not any(figure is not None and figure.value is not None for figure in figures):
+        return []
+    parts = {junction.part.name: junction.part for junction in outcome.design.switch.junctions.values()}
+    lines = []
+    for name, part in parts.items():
+        if any(note.startswith("Hold-off") for note in part.notes):
+            said = f"holdoff_bias_margin is by the published relation; {name} lets go later (transim parts {name})"
+            lines += [*wrap(said), ""]
+    return lines
 
 
 def joined_verdict(results: Sequence[Result]) -> Verdict:
@@ -159,8 +174,9 @@ def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterato
     if closest is not None:
         yield from wrap(closest, "  ")
     for result, judgement in judged:
-        if judgement.value is None:
-            note = result.figures[judgement.metric].note if judgement.unit is None else judgement.note
+        if judgement.verdict == "undefined":
+            # a value that is too uncertain has its reason in the judgement, as a rating has
+            note = judgement.note or result.figures[judgement.metric].note
             yield from wrap(f"undefined: {judgement.metric} {_where(judgement, places[id(result)])}, {note}", "  ")
     for result in results:
         for fault in result.faults:
@@ -168,6 +184,11 @@ def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterato
     for result in results:
         for warning in result.warnings:
             yield from wrap(f"warning at {places[id(result)]}: {warning}", "  ")
+    for result in results:
+        for note in result.notes:
+            yield from wrap(f"note at {places[id(result)]}: {note}", "  ")
+    for retry in dict.fromkeys(retry for result in results for retry in result.retries):
+        yield from wrap(f"second try: {retry}", "  ")
     methods = {f"{result.analysis} at {places[id(result)]}": result.method for result in results}
     for place, method in methods.items():
         yield from wrap(f"{place}: {method}", "  ")

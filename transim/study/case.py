@@ -18,6 +18,7 @@ from transim.envelope.check import bias_check_deck
 from transim.envelope.junction import Array
 from transim.envelope.bias import Bias
 from transim.envelope.stationary import Complex, read_scattering
+from transim.measure.usable import Shortest
 from transim.study.attempt import run_deck
 
 __all__ = ["Case"]
@@ -43,6 +44,8 @@ class Case:
         self.seconds = 0.0
         #: The flattened circuit, once the static deck has run.
         self.circuit: Circuit | None = None
+        #: Shortest usable pulse and gap, where they are asked for.
+        self.shortest: Shortest | None = None
 
     def run(self, deck: Deck) -> EngineRun:
         """Run a deck and keep it."""

@@ -89,7 +89,7 @@ class HoldOffProbe:
         interval = control.on_for if high else control.period - control.on_for
         stop = min(interval, _PERIODS / frequency) + 2.0 * _LAST / frequency
         # the command stands still: its first edge lies beyond the end, both of its levels are that of the state
-        timeline = replace(carrier_timeline(design, frequency), lead=2.0 * stop, stop=stop)
+        timeline = replace(carrier_timeline(design, frequency), lead=2.0 * stop, stop=stop, command=())
         held = control.model_copy(update={"low": control.high} if high else {})
         amplitude = amplitude_of(level, design.carrier.impedance)
         first, second = netlist.through

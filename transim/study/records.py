@@ -107,6 +107,7 @@ def record_of(
         junction_conduction=probes["current"],
         junction_fed=fed,
         other_charge=other,
+        shortest=case.shortest,
         driver_output_power=driver_output_power(vectors),
         supply_current=supply_currents(case, vectors),
         stress=rf if isinstance(rf, RfStress) else None,

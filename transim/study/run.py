@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from transim.design.model import Design, Driver
 from transim.engine.ngspice import Engine
@@ -11,6 +11,7 @@ from transim.errors import DesignError
 from transim.measure.limits import Verdict
 from transim.measure.sweep import BiasSweep
 from transim.parts.nearest import nearest_name
+from transim.study.certify import certified, finer_designs, settings_text
 from transim.study.settled import run_bias_sweeps
 from transim.study.simulate import CaseRun, Result, simulate
 
@@ -39,6 +40,8 @@ class Outcome:
         One for each temperature, where the design asks for them.
     bias_seconds : float
         Time that ngspice took for these [s].
+    certified : str or None
+        What the uncertainties of the figures come from; None where they were not asked for.
     """
 
     design: Design
@@ -46,6 +49,7 @@ class Outcome:
     cases: tuple[CaseRun, ...]
     bias_sweeps: tuple[BiasSweep, ...] = ()
     bias_seconds: float = 0.0
+    certified: str | None = None
 
     @property
     def results(self) -> tuple[Result, ...]:
@@ -73,6 +77,7 @@ def run_design(
     drivers: Sequence[str] = (),
     analysis: str = "envelope",
     progress: Progress | None = None,
+    certify: bool = False,
 ) -> Outcome:
     """Simulate and judge a design.
 
@@ -88,6 +93,8 @@ def run_design(
         How the RF envelope is found.
     progress : callable or None
         Told before each case.
+    certify : bool
+        Whether each case is repeated at finer settings, to give every figure its numerical uncertainty.
 
     Returns
     -------
@@ -98,19 +105,32 @@ def run_design(
     DesignError
         If a driver's name is not in the design.
     EngineError
-        If a deck fails.
+        If a deck fails, or ngspice is older than what is run.
     """
+    # an engine that will not do is refused before it is used
+    version = engine.version
     chosen = choose_drivers(design, drivers)
     todo = [(driver, temperature) for driver in chosen for temperature in design.environment.temperature]
     cases = []
     for done, (driver, temperature) in enumerate(todo):
         if progress is not None:
             progress(done, len(todo), f"{driver.name} at {temperature:g} degC")
-        cases.append(simulate(design, driver, temperature, engine, ANALYSES[analysis]))
+        case = simulate(design, driver, temperature, engine, ANALYSES[analysis])
+        if certify:
+            finer = [
+                simulate(other, driver, temperature, engine, ANALYSES[analysis], checks="start")
+                for other in finer_designs(design)
+            ]
+            several = zip(case.results, *(other.results for other in finer), strict=True)
+            case = replace(case, results=tuple(certified(first, rest, design) for first, *rest in several))
+            seconds = sum(other.engine_seconds for other in finer)
+            case = replace(case, engine_seconds=case.engine_seconds + seconds)
+        cases.append(case)
     sweeps, seconds = run_bias_sweeps(design, engine)
     if progress is not None:
         progress(len(todo), len(todo), "")
-    return Outcome(design, f"ngspice {engine.version}", tuple(cases), sweeps, seconds)
+    said = settings_text(design.numerics) if certify else None
+    return Outcome(design, f"ngspice {version}", tuple(cases), sweeps, seconds, said)
 
 
 def choose_drivers(design: Design, names: Sequence[str]) -> list[Driver]:

@@ -28,6 +28,7 @@ from transim.measure.metrics import Figure, extract
 from transim.measure.rate import RateStudy, rate_study
 from transim.measure.record import Record
 from transim.measure.sweep import StaticSweep
+from transim.measure.usable import Shortest
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
 from transim.study.carrier import run_carrier
@@ -36,6 +37,7 @@ from transim.study.holdoff import HoldOffProbe
 from transim.study.probe import TurnOnProbe
 from transim.study.records import record_of
 from transim.study.settled import run_static_sweep
+from transim.study.shortest import find_shortest, wants_shortest
 from transim.study.soundness import numerical_notes, unbounded
 from transim.study.stress import StressSolution, small_signal_warnings
 
@@ -145,6 +147,8 @@ class CaseRun:
         Time spent in ngspice [s].
     static : StaticSweep or None
         Both settled states against frequency, where the design asks for it.
+    shortest : Shortest or None
+        Shortest usable pulse and gap, where the design asks for them.
     """
 
     driver: str
@@ -156,6 +160,7 @@ class CaseRun:
     engine_seconds: float
     level_envelopes: Mapping[tuple[float, float], Waveform] = field(default_factory=dict)
     static: StaticSweep | None = None
+    shortest: Shortest | None = None
 
 
 def simulate(
@@ -201,6 +206,8 @@ def simulate(
     saved = saved_vectors(circuit) if "envelope" in analyses else ()
     video = case.video(saved)
     vectors = case.vectors
+    if wants_shortest(case):
+        case.shortest = find_shortest(case, circuit, states)
     results: list[Result] = []
     envelopes: dict[tuple[str, float], Waveform] = {}
     if "envelope" in analyses:
@@ -224,6 +231,7 @@ def simulate(
         engine_seconds=case.seconds,
         level_envelopes=by_level,
         static=static,
+        shortest=case.shortest,
     )
 
 
