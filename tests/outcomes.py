@@ -8,10 +8,12 @@ from __future__ import annotations
 import contextlib
 import io
 import json
+import unittest.mock
 from pathlib import Path
 
 import numpy as np
 
+from transim.bench.uncertainty import measure_cycle
 from transim.cli import main
 from transim.engine.rawfile import read_raw
 from transim.errors import NetlistError, RawFileError
@@ -81,11 +83,12 @@ def raw_outcome(folder: Path, content: bytes) -> str:
 
 
 def record_outcome(folder: Path, text: str) -> str:
-    """Measure a record; its figures are numbers."""
+    """Measure a record, with fewer repetitions under noise than the command takes: they all go the same way."""
     file = folder / "record.csv"
     file.write_text(text, encoding="utf-8", errors="surrogatepass", newline="")
     words = ["measure", str(file), "--command", "CH1", "--rf", "CH2", "--detector", "linear", "--carrier", "100 MHz"]
-    return _status([*words, "--period", "10 us"], file, (0,))
+    with unittest.mock.patch.dict(measure_cycle.__kwdefaults__, replicates=4):
+        return _status([*words, "--period", "10 us"], file, (0,))
 
 
 __all__ = ["design_outcome", "part_outcome", "raw_outcome", "record_outcome"]

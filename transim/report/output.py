@@ -3,7 +3,10 @@
 from __future__ import annotations
 
 import contextlib
+import errno
+import fcntl
 import os
+import re
 import shutil
 import signal
 import tempfile
@@ -11,6 +14,7 @@ import threading
 from collections.abc import Iterable, Iterator
 from pathlib import Path, PurePosixPath
 from types import TracebackType
+from typing import IO
 
 from transim.errors import OutputError
 
@@ -18,6 +22,8 @@ __all__ = ["LISTING", "ResultFolder", "write_file"]
 
 #: Lists every file of a result folder, so that a later run knows which ones it may replace.
 LISTING = "files.txt"
+#: What the system says where a disk, a quota or a file's size is at its end, or the disk cannot be written.
+_NO_ROOM = (errno.ENOSPC, errno.EDQUOT, errno.EFBIG, errno.EROFS, errno.EIO)
 
 
 class ResultFolder:
@@ -37,14 +43,15 @@ class ResultFolder:
     Raises
     ------
     OutputError
-        On entry where the folder is not empty and `force` is not set, or cannot be written. At the end where
-        a file in it that transim did not write stands in the way.
+        On entry where the folder is not empty and `force` is not set, cannot be written, or is just being written by
+        another run. At the end where a file in it that transim did not write stands in the way, or the disk is full.
     """
 
     def __init__(self, path: Path, *, force: bool = False) -> None:
         self.path = path
         self._force = force
         self._temporary: Path | None = None
+        self._lock: IO[bytes] | None = None
 
     def __enter__(self) -> Path:
         with _writing(self.path):
@@ -61,12 +68,47 @@ class ResultFolder:
             self._place.parent.mkdir(parents=True, exist_ok=True)
             if self._place.is_dir() and not os.access(self._place, os.W_OK | os.X_OK):
                 raise OutputError(f"the folder {self.path} cannot be written: permission denied")
-            self._temporary = Path(
-                tempfile.mkdtemp(prefix=f".{self._place.name}.", suffix=".transim", dir=self._place.parent)
-            )
-            # mkdtemp gives access to the owner alone; a result is as readable as any new folder
-            self._temporary.chmod(0o777 & ~_umask())
+            self._lock = self._locked()
+            try:
+                self._temporary = Path(
+                    tempfile.mkdtemp(prefix=f".{self._place.name}.", suffix=".transim", dir=self._place.parent)
+                )
+                # mkdtemp gives access to the owner alone; a result is as readable as any new folder
+                self._temporary.chmod(0o777 & ~_umask())
+            except BaseException:
+                self._unlock()
+                raise
         return self._temporary
+
+    def _locked(self) -> IO[bytes]:
+        """Take the folder for this run; what a killed run has left beside it is removed."""
+        file = self._place.parent / f".{self._place.name}.lock.transim"
+        while True:
+            stream = file.open("ab")
+            try:
+                # the system gives it back however this process ends
+                fcntl.flock(stream, fcntl.LOCK_EX | fcntl.LOCK_NB)
+            except BlockingIOError:
+                stream.close()
+                raise OutputError(
+                    f"another run is just writing into {self.path}; wait for its end, or name another folder"
+                ) from None
+            # another run may have removed the file between its opening and its locking
+            if file.exists() and file.stat().st_ino == os.fstat(stream.fileno()).st_ino:
+                break
+            stream.close()
+        left = re.compile(rf"\.{re.escape(self._place.name)}\.[a-z0-9_]{{8}}\.transim")
+        for folder in self._place.parent.iterdir():
+            if left.fullmatch(folder.name) and folder.is_dir() and not folder.is_symlink():
+                shutil.rmtree(folder, ignore_errors=True)
+        return stream
+
+    def _unlock(self) -> None:
+        if self._lock is not None:
+            with contextlib.suppress(OSError):
+                Path(self._lock.name).unlink(missing_ok=True)
+            self._lock.close()
+            self._lock = None
 
     def __exit__(
         self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
@@ -80,6 +122,9 @@ class ResultFolder:
                     self._move(temporary)
         finally:
             shutil.rmtree(temporary, ignore_errors=True)
+            self._unlock()
+        if isinstance(error, OSError) and error.errno in _NO_ROOM:
+            raise OutputError(f"{self.path} cannot be written: {error.strerror}; nothing was left behind") from error
 
     def _move(self, temporary: Path) -> None:
         new = sorted(

@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from dataclasses import asdict
 from typing import Any
 
 from transim.measure.metrics import METRICS, Figure
 from transim.quantities import format_quantity
-from transim.report.layout import Column, align, wrap
+from transim.report.layout import GAP, WIDTH, Column, align, wrap
 from transim.study.run import Outcome
 from transim.study.simulate import Result
 
@@ -16,6 +17,10 @@ __all__ = ["first_document", "pulse_lines"]
 
 #: Figures that differ by less than this are as good as equal.
 _EQUAL = 1e-3
+#: Smaller values are rounding, in any unit.
+_NOTHING = 1e-18
+#: A larger ratio is no percentage that one reads.
+_MOST = 10.0
 
 
 def pulse_lines(outcome: Outcome) -> list[str]:
@@ -29,12 +34,16 @@ def pulse_lines(outcome: Outcome) -> list[str]:
     Returns
     -------
     list of str
-        A table for each result of a train; empty for single pulses.
+        A table for the first carrier of each driver, temperature and analysis; empty for single pulses.
     """
     lines: list[str] = []
+    told: set[tuple[str, float, str]] = set()
     for result in outcome.results:
-        if result.first_pulse is None:
+        key = (result.driver, result.temperature, result.analysis)
+        # one carrier tells enough; the document has them all
+        if result.first_pulse is None or key in told:
             continue
+        told.add(key)
         place = f"{result.driver} at {format_quantity(result.carrier, 'Hz', 12)}"
         place += f" and {format_quantity(result.temperature, 'degC', 12)}, {result.analysis} analysis"
         rows = _rows(result.figures, result.first_pulse)
@@ -52,7 +61,8 @@ def _rows(last: Mapping[str, Figure], first: Mapping[str, Figure]) -> list[tuple
         if figure.value is None or other.value is None:
             different = (figure.value is None) != (other.value is None)
         else:
-            different = abs(figure.value - other.value) > _EQUAL * max(abs(figure.value), abs(other.value))
+            largest = max(abs(figure.value), abs(other.value))
+            different = largest > _NOTHING and abs(figure.value - other.value) > _EQUAL * largest
         if different:
             found.append((name, other, figure))
     return found
@@ -63,15 +73,17 @@ def _table(rows: Sequence[tuple[str, Figure, Figure]]) -> list[str]:
     for _, first, last in rows:
         known = first.value is not None and last.value is not None and first.value != 0.0
         plain = last.unit not in ("dB", "dBm")
-        changes.append(f"{last.value / first.value - 1.0:+.1%}" if known and plain else "")  # type: ignore[operator]
+        ratio = last.value / first.value - 1.0 if known and plain else math.inf  # type: ignore[operator]
+        changes.append(f"{100.0 * ratio:+.1f} %" if abs(ratio) < _MOST else "")
+    titles = Column("meaning", tuple(METRICS[name].title for name, *_ in rows))
     columns = [
         Column("metric", tuple(name for name, *_ in rows)),
         Column("first", tuple(_value(first) for _, first, _ in rows), right=True),
         Column("last", tuple(_value(last) for *_, last in rows), right=True),
         Column("change", tuple(changes), right=True),
-        Column("meaning", tuple(METRICS[name].title for name, *_ in rows)),
     ]
-    return align(columns, "  ")
+    fits = 2 + sum(column.width + len(GAP) for column in (*columns, titles)) <= WIDTH
+    return align([*columns, titles] if fits else columns, "  ")
 
 
 def _value(figure: Figure) -> str:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 
@@ -14,9 +15,9 @@ from transim.circuit.timeline import Timeline, timeline_of
 from transim.design.model import Design, Driver
 from transim.engine.ngspice import Engine, EngineRun
 from transim.engine.rawfile import Plot
+from transim.envelope.bias import Bias
 from transim.envelope.check import bias_check_deck
 from transim.envelope.junction import Array
-from transim.envelope.bias import Bias
 from transim.envelope.stationary import Complex, read_scattering
 from transim.measure.usable import Shortest
 from transim.study.attempt import run_deck
@@ -47,10 +48,13 @@ class Case:
         #: Shortest usable pulse and gap, where they are asked for.
         self.shortest: Shortest | None = None
 
-    def run(self, deck: Deck) -> EngineRun:
-        """Run a deck and keep it."""
+    def run(self, deck: Deck, longest: float = math.inf) -> EngineRun:
+        """Run a deck and keep it; `longest` shortens the design's time limit [s]."""
         self.decks.append(deck)
-        finished = run_deck(self.engine, deck, self.design.numerics)
+        numerics = self.design.numerics
+        if longest < numerics.timeout:
+            numerics = numerics.model_copy(update={"timeout": longest})
+        finished = run_deck(self.engine, deck, numerics)
         done = finished.run
         if finished.retry is not None:
             self.decks[self.decks.index(deck)] = finished.deck

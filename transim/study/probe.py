@@ -18,6 +18,7 @@ from transim.errors import EngineError
 from transim.measure.rf import RfStress
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
+from transim.study.attempt import discard_kept
 from transim.study.case import Case
 from transim.study.decks import carrier_timeline
 from transim.study.stress import amplitude_of
@@ -30,6 +31,8 @@ _WORTHWHILE = 0.5
 _DEPARTURE = 0.05
 #: The probe runs on to this multiple of the small-signal time; a later turn-on is said to be later than that.
 _LONGEST = 1.5
+#: A run that takes longer costs more than it tells [s].
+_SECONDS = 5.0
 #: More carrier periods than this are not probed.
 _PERIODS = 3000.0
 
@@ -76,6 +79,7 @@ class TurnOnProbe:
             found = self._measure(stress.level)
         except EngineError as error:
             # the envelope analysis stands without its probe
+            discard_kept(error)
             reason = error.message.splitlines()[0]
             return (f"at {level} the RF may move its turn-on, and a probe of it failed ({reason})",)
         small = format_quantity(self._on_time, "s")
@@ -109,7 +113,7 @@ class TurnOnProbe:
                 continue
             tone = Tone(frequency, size, phase, first)
             deck = carrier_deck(netlist, design.control, timeline, design.numerics, case.origin, tone)
-            plots.append(case.run(replace(deck, group=group)).plots[0])
+            plots.append(case.run(replace(deck, group=group), longest=_SECONDS).plots[0])
         self._quiet = plots[2]
         node = f"v({netlist.ports[second].node})"
         runs = [(np.real(plot["time"]), np.real(plot[node])) for plot in plots]

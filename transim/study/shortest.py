@@ -32,8 +32,8 @@ _NARROW = 0.01
 _SAME = 0.05
 #: Longer intervals than this multiple of the pulse are not tried: nothing moves any more.
 _LONGEST = 20.0
-#: Time steps in the shortest interval of a trial, at least.
-_STEPS = 200
+#: Time steps that the shorter interval of a trial gets, while that makes the step no finer than a quarter.
+_STEPS, _FINER = 200, 4
 
 #: Returns why an interval is not usable; None where it is.
 _Trial = Callable[[float], str | None]
@@ -87,9 +87,6 @@ def _bisect(trial: _Trial, shortest: float, longest: float, name: str) -> Usable
         reason = trial(longest)
         if reason is not None:
             return Usable(None, 0.0, f"not even a {name} of {format_quantity(longest, 's')} is usable: {reason}")
-        reason = trial(shortest)
-        if reason is None:
-            return Usable(shortest, 0.0, "as short as the command's edges allow")
         low, high = shortest, longest
         while high > low * (1.0 + _NARROW):
             middle = math.sqrt(low * high)
@@ -98,6 +95,8 @@ def _bisect(trial: _Trial, shortest: float, longest: float, name: str) -> Usable
                 high = middle
             else:
                 low, reason = middle, found
+        if reason is None and (reason := trial(shortest)) is None:
+            return Usable(shortest, 0.0, "as short as the command's edges allow")
     except EngineError as error:
         return Usable(None, 0.0, f"a trial failed: {error.message.splitlines()[0]}")
     return Usable(high, high - low, f"in a shorter one: {reason}")
@@ -165,7 +164,8 @@ class _Trials:
         control = design.control.model_copy(
             update={"on_for": high, "period": high + max(low, design.control.edge), "pulses": pulses}
         )
-        steps = max(design.numerics.steps, math.ceil(_STEPS * high / min(high, low)))
+        usual = design.numerics.steps
+        steps = min(max(usual, math.ceil(_STEPS * high / min(high, low))), _FINER * usual)
         numerics = design.numerics.model_copy(update={"steps": steps})
         case = Case(
             design.model_copy(update={"control": control, "numerics": numerics}),

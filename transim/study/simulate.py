@@ -14,8 +14,8 @@ from transim.circuit.elements import Circuit
 from transim.design.model import Design, Driver
 from transim.engine.ngspice import Engine
 from transim.engine.rawfile import Plot
-from transim.envelope.junction import Array
 from transim.envelope.bias import Bias
+from transim.envelope.junction import Array
 from transim.envelope.linearise import linearise, saved_vectors
 from transim.envelope.method import Envelope, solve_envelope
 from transim.envelope.stationary import Complex, largest_difference

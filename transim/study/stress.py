@@ -73,8 +73,9 @@ class StressSolution:
         instants = _transition_points(np.abs(through))
         self._modulation = 0.0 if instants.size else None
         if instants.size:
+            currents = [np.abs(vectors[f"i({name})"][instants]) for name in self._ammeters()]
             # zero stands for a path without junctions
-            currents = [np.zeros(instants.size), *(np.abs(vectors[f"i({name})"][instants]) for name in self._ammeters())]
+            currents.append(np.zeros(instants.size))
             least = _CONDUCTING * np.max(currents, axis=0)
             found = solve_internal(network.at(instants), port, carrier).modulation(least)
             self._modulation = max((float(values.max()) for values in found.values()), default=0.0)
