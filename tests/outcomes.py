@@ -20,6 +20,10 @@ from transim.errors import NetlistError, RawFileError
 from transim.parts.header import read_part
 
 
+#: What is missing has no line.
+MISSING = ("this required table is missing", "no driver is given")
+
+
 def _placed(errors: list[dict[str, object]], file: Path) -> None:
     assert errors, "an error without a record"
     for error in errors:
@@ -28,6 +32,8 @@ def _placed(errors: list[dict[str, object]], file: Path) -> None:
         assert not str(error["message"]).startswith("unexpected "), error
         # the place is a field of its own, or begins the message where the whole file is meant
         assert str(file.parent) in f"{error['file']} {error['message']}", error
+        if file.suffix == ".toml":
+            assert error["line"] is not None or error["message"] in MISSING, error
 
 
 def _status(words: list[str], file: Path, good: tuple[int, ...]) -> str:

@@ -198,7 +198,10 @@ def _body(part: Part, card: str | None, name: str | None = None) -> str:
     for place in part.model.places:
         if place.name in given:
             own = re.compile(rf"(?im)^\.model\s+{re.escape(place.name)}\b.*(?:\n\+.*)*\n")
-            text = own.sub(lambda _match, line=given[place.name]: f"{line}\n", text, count=1)
+            # cut and joined, since a replacement template would read backslashes in the card
+            found = own.search(text)
+            if found is not None:
+                text = f"{text[: found.start()]}{given[place.name]}\n{text[found.end() :]}"
     return text
 
 

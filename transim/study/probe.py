@@ -12,13 +12,13 @@ from dataclasses import replace
 import numpy as np
 
 from transim.circuit.decks import Tone, carrier_deck
+from transim.engine.ngspice import discard_kept
 from transim.engine.rawfile import Plot
 from transim.envelope.carrier import extract_envelope
 from transim.errors import EngineError
 from transim.measure.rf import RfStress
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
-from transim.study.attempt import discard_kept
 from transim.study.case import Case
 from transim.study.decks import carrier_timeline
 from transim.study.stress import amplitude_of
