@@ -1,4 +1,4 @@
-"""Does the stated numerical uncertainty cover the difference to a run at ten times finer settings, in every metric?
+"""Whether the stated numerical uncertainty covers the difference to a run at ten times finer settings, in every metric.
 
 Run by hand: ``python tests/bench_certify.py [DESIGN ...]``. Without designs both examples are run as they stand, and
 then changed (other edges, temperatures and carriers), since the settings of ``--certify`` were chosen on the examples

@@ -23,7 +23,7 @@ ODD = (
     '"1 parsec"', '"2 ns\\n.control"', '"\\u2028"', '"' + "x" * 300 + '"', "[[[[", "]", "=", '"', "'''", "\\", "\t", "#",
     "1979-05-27", '["1 V", 2, []]', "{ max = 3 }", "\u00b5", "\u202e", "a.b.c = 1", "[switch]", "[driver]", '[""]',
     "9" * 400, "0x10", '"10 MHz" .. "20 MHz"', '"../../../etc/passwd"', '"/dev/zero"', '"."', '"a/../b\\u0000"',
-    ".", ".model", ".subckt", ".ends", "X1", "x=3", "R1", "+", "* key: value", "* slot: a | b | c", ".model d",
+    ".", ".model", ".subckt", ".ends", "X1", "x=3", "X1 =", "X1 a=2", "R1", "+", "* key: value", "* slot: a | b | c", ".model d",
     ".subckt a", "B1 a k v=", "D1 a k", "|", "1 s .. 0 s", "> .. <", ",", ";;;;", "nan,nan", "1;2;3", "1,5",
 )  # fmt: skip
 

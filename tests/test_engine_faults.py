@@ -103,8 +103,8 @@ def test_flooded_log_is_stopped_before_the_disk_is_full(tmp_path, monkeypatch):
 @linux
 def test_file_that_grows_without_end_is_stopped(tmp_path, monkeypatch):
     monkeypatch.setattr(bounds, "FILE_LIMIT", 2**20)
-    with pytest.raises(EngineCrashed, match="wrote more than .* into one file"):
-        stand_in(tmp_path, 'exec head -c 8000000 /dev/zero > "$4"').run(DECK, timeout=30)
+    with pytest.raises(EngineCrashed, match=r"wrote more than .* into one file"):
+        stand_in(tmp_path, 'exec cat /dev/zero > "$4"').run(DECK, timeout=30)
 
 
 @linux
@@ -168,7 +168,7 @@ def test_no_solution_gets_one_second_try_that_is_told(tmp_path, scratch):
 
 def test_a_second_failure_is_the_last(tmp_path, scratch):
     engine = stand_in(tmp_path, f"echo run >> {tmp_path}/runs", NO_SOLUTION)
-    with pytest.raises(ConvergenceError, match="a second try with reltol=0.001 .* found no solution either") as caught:
+    with pytest.raises(ConvergenceError, match=r"a second try with reltol=0.001 .* found no solution either") as caught:
         run_deck(engine, deck(), Numerics())
     assert (tmp_path / "runs").read_text().count("run") == 2
     assert [caught.value.deck.parent] == list(scratch.iterdir())

@@ -22,7 +22,7 @@ from tests.mutations import (
 )
 from tests.outcomes import design_outcome, part_outcome, raw_outcome, record_outcome
 
-FEW = settings(max_examples=60, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture, HealthCheck.too_slow])
+FEW = settings(max_examples=40, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture, HealthCheck.too_slow])
 
 
 @FEW
@@ -38,14 +38,14 @@ def test_mutated_part_is_refused_with_its_place_or_read(tmp_path: Path, part: tu
 
 
 @pytest.fixture(scope="module")
-def _raws(tmp_path_factory: pytest.TempPathFactory) -> Path:
+def raws(tmp_path_factory: pytest.TempPathFactory) -> Path:
     return tmp_path_factory.mktemp("raws")
 
 
 @FEW
 @given(data=st.data())
-def test_mutated_raw_file_is_refused_or_read(_raws: Path, data: st.DataObject) -> None:
-    assert raw_outcome(_raws, data.draw(mutated_raw(_raws))) in ("read", "refused")
+def test_mutated_raw_file_is_refused_or_read(raws: Path, data: st.DataObject) -> None:
+    assert raw_outcome(raws, data.draw(mutated_raw(raws))) in ("read", "refused")
 
 
 @FEW
@@ -60,3 +60,9 @@ def test_what_is_not_mutated_is_read(tmp_path: Path) -> None:
     for part in PARTS:
         assert part_outcome(tmp_path, part.name, part.read_text()) == "read"
     assert record_outcome(tmp_path, record_text()) == "read"
+
+
+@pytest.mark.parametrize("card", ["x=3", "X1", "X1 a=2", "Xj =", ".model", ".model d", ".subckt"])
+def test_cards_that_are_cut_short_are_refused(tmp_path: Path, card: str) -> None:
+    head = "* transim part\n* name: mast\n* role: junction\n* terminals: a k\n* summary: s\n.subckt mast a k\nR1 a k 1\n"
+    assert part_outcome(tmp_path, "mast.cir", f"{head}{card}\n.ends\n") == "refused"

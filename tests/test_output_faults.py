@@ -41,7 +41,7 @@ def writing(out):
 def test_a_second_run_is_told_at_once_and_the_first_is_whole(tmp_path):
     out = tmp_path / "out"
     first = start(writing(out))
-    with pytest.raises(OutputError, match="another run is just writing into .*out; wait"), ResultFolder(out):
+    with pytest.raises(OutputError, match=r"another run is just writing into .*out; wait"), ResultFolder(out):
         pytest.fail("two runs write at once")
     first.communicate("\n", timeout=20)
     assert first.returncode == 0

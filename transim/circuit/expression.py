@@ -10,6 +10,7 @@ from __future__ import annotations
 import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
+from functools import lru_cache
 
 import numpy as np
 import numpy.typing as npt
@@ -397,6 +398,7 @@ def _binary(operator: str, left: Node, right: Node) -> Node:
     return lambda bias, constants: combine(left(bias, constants), right(bias, constants))
 
 
+@lru_cache(maxsize=1024)
 def parse_expression(text: str) -> Expression:
     """Parse the expression of a behavioural source.
 

@@ -128,7 +128,8 @@ def run_and_report(console: Console, request: RunRequest) -> int:
         extra = [] if record is None else _beside(places, outcome, record, document)
         _write(places, outcome, document)
     blocks = (
-        head_lines, metric_tables, pulse_lines, shortest_lines, budget_lines, rating_tables, settled_lines, caution_lines, verdict_lines,
+        head_lines, metric_tables, pulse_lines, shortest_lines, budget_lines, rating_tables, settled_lines,
+        caution_lines, verdict_lines,
     )  # fmt: skip
     texts = [lines for block in blocks if (lines := block(outcome))]
     texts[-1:-1] = [extra] if extra else []

@@ -20,7 +20,19 @@ from transim.parts.nearest import nearest_name
 from transim.parts.part import Parameter
 from transim.quantities import UNITS, format_quantity, format_range, parse_quantity
 
-__all__ = ["FROM_FILE", "Choice", "Count", "ElementErrors", "Flag", "Kind", "Line", "Quantity", "Series", "shown", "table_keys"]
+__all__ = [
+    "FROM_FILE",
+    "Choice",
+    "Count",
+    "ElementErrors",
+    "Flag",
+    "Kind",
+    "Line",
+    "Quantity",
+    "Series",
+    "shown",
+    "table_keys",
+]
 
 _CONTROL = re.compile("[\\x00-\\x1f\\x7f-\\x9f\\u2028\\u2029]")
 

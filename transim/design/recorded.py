@@ -7,7 +7,7 @@ from pathlib import Path
 
 from pydantic import ValidationError
 
-from transim.design.command import read_command
+from transim.design.command import Command, read_command
 from transim.design.faults import Faults
 from transim.design.fields import Line, Quantity
 from transim.design.model import Control
@@ -55,6 +55,11 @@ def read_recorded_control(faults: Faults, table: Mapping[str, object], folder: P
     if period is None and (period := command.spacing) is None:
         faults.missing(("control", "period"), 'from one pulse to the next, such as "8 us": the record holds one pulse')
         return None
+    return _control(faults, command, period, stated="period" in table)
+
+
+def _control(faults: Faults, command: Command, period: float, *, stated: bool) -> Control | None:
+    """Make the table; what does not fit is due to the period, where that was stated, else to the record."""
     rise, fall = command.pulses[-1]
     values = {
         "low": command.low,
@@ -70,9 +75,6 @@ def read_recorded_control(faults: Faults, table: Mapping[str, object], folder: P
     except ValidationError as exc:
         for detail in exc.errors(include_url=False):
             cause = detail.get("ctx", {}).get("error")
-            key = "period" if "period" in table and detail["loc"][:1] != ("high",) else "record"
-            if isinstance(cause, DesignError):
-                faults.adopt(("control", key), cause)
-            else:
-                faults.adopt(("control", key), DesignError("the recorded command cannot be used"))
+            error = cause if isinstance(cause, DesignError) else DesignError("the recorded command cannot be used")
+            faults.adopt(("control", "period" if stated else "record"), error)
         return None

@@ -85,8 +85,8 @@ def time_budget(record: Record, edge: Literal["on", "off"]) -> Budget:
     -----
     The instants between the parts:
 
-    - driver output: voltage at the driver's output half way for the first time from its value before the edge to the value
-      farthest from that which it takes until the RF begins to move;
+    - driver output: voltage at the driver's output half way for the first time from its value before the edge to
+      the value farthest from that which it takes until the RF begins to move;
     - junction current: half way for the last time from its value before the edge to that at the instant at which
       the RF begins to move, of the junction whose terminal current changes most between these two;
     - first change of the RF: the first rise through 10 % (on), the last fall through 90 % before 10 % (off);

@@ -37,8 +37,9 @@ _ACTS = {
     ".options": "changes the simulation of the whole circuit", ".option": "changes the simulation of the whole circuit",
     ".opt": "changes the simulation of the whole circuit", ".temp": "changes the simulation of the whole circuit",
     ".global": "connects to the circuit around it", ".csparam": "hands values to commands",
-    ".tran": "starts an analysis", ".ac": "starts an analysis", ".dc": "starts an analysis", ".op": "starts an analysis",
-    ".noise": "starts an analysis", ".meas": "starts an analysis", ".measure": "starts an analysis",
+    ".tran": "starts an analysis", ".ac": "starts an analysis", ".dc": "starts an analysis",
+    ".op": "starts an analysis", ".noise": "starts an analysis", ".meas": "starts an analysis",
+    ".measure": "starts an analysis",
     ".end": "ends the deck", ".title": "belongs to a deck",
 }  # fmt: skip
 #: Words that are commands of ngspice which act on files; no element is called so by chance.
@@ -110,6 +111,8 @@ def check_card(text: str, *, file: Path, line: int) -> None:
         kind = {"a": "a code model", "n": "a compiled model"}.get(keyword[0], "no element of a circuit")
         letters = " ".join(ELEMENTS.upper())
         complaint = f'"{_shortened(words[0])}" is {kind}, which is not allowed here; elements begin with {letters}'
+    elif keyword[0] == "x" and len(re.sub(r"\s*=.*", "", text).split()) < (3 if "=" in text else 2):
+        complaint = f'"{_shortened(text)}" calls no subcircuit: X... nodes NAME name=value ...'
     elif keyword in _COMMANDS:
         complaint = f'"{words[0]}" is a command of ngspice, and a netlist only describes a circuit'
     if complaint is not None:
@@ -121,7 +124,8 @@ def _model_complaint(text: str) -> str | None:
     if len(fields) < 3:
         return "a .model card has a name and a kind: .model NAME KIND(...)"
     if fields[2].lower() not in MODELS:
-        return f'a model of kind "{_shortened(fields[2])}" is not allowed here; known kinds are {", ".join(MODELS).upper()}'
+        known = ", ".join(MODELS).upper()
+        return f'a model of kind "{_shortened(fields[2])}" is not allowed here; known kinds are {known}'
     return None
 
 

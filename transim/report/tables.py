@@ -126,7 +126,8 @@ def _value(result: Result, name: str) -> str:
     text = format_quantity(figure.value, figure.unit)
     if figure.uncertainty is None:
         return text
-    width = format_quantity(figure.uncertainty, _width_unit(figure.unit), 2) if math.isfinite(figure.uncertainty) else "?"
+    known = math.isfinite(figure.uncertainty)
+    width = format_quantity(figure.uncertainty, _width_unit(figure.unit), 2) if known else "?"
     return f"{text} \N{PLUS-MINUS SIGN} {width}"
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 
 from transim.measure.definitions import Definitions
 from transim.measure.limits import Judgement, Verdict
@@ -178,17 +178,7 @@ def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterato
             # a value that is too uncertain has its reason in the judgement, as a rating has
             note = judgement.note or result.figures[judgement.metric].note
             yield from wrap(f"undefined: {judgement.metric} {_where(judgement, places[id(result)])}, {note}", "  ")
-    for result in results:
-        for fault in result.faults:
-            yield from wrap(f"fault at {places[id(result)]}: {fault}", "  ")
-    for result in results:
-        for warning in result.warnings:
-            yield from wrap(f"warning at {places[id(result)]}: {warning}", "  ")
-    for result in results:
-        for note in result.notes:
-            yield from wrap(f"note at {places[id(result)]}: {note}", "  ")
-    for retry in dict.fromkeys(retry for result in results for retry in result.retries):
-        yield from wrap(f"second try: {retry}", "  ")
+    yield from _remarks(results, places)
     methods = {f"{result.analysis} at {places[id(result)]}": result.method for result in results}
     for place, method in methods.items():
         yield from wrap(f"{place}: {method}", "  ")
@@ -197,6 +187,16 @@ def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterato
         found = f"by {format_quantity(max(checks), 'dB', 2)} at most" if max(checks) > _SMALLEST else ""
         found = found or f"by less than {format_quantity(_SMALLEST, 'dB')}"
         yield from wrap(f"check: S differs from ngspice's own .ac at the same biases {found}", "  ")
+
+
+def _remarks(results: Sequence[Result], places: Mapping[int, str]) -> Iterator[str]:
+    """Write faults, warnings and notes with the place of each, and what needed a second try."""
+    for word, name in (("fault", "faults"), ("warning", "warnings"), ("note", "notes")):
+        for result in results:
+            for text in getattr(result, name):
+                yield from wrap(f"{word} at {places[id(result)]}: {text}", "  ")
+    for retry in dict.fromkeys(retry for result in results for retry in result.retries):
+        yield from wrap(f"second try: {retry}", "  ")
 
 
 def counts_sentence(results: Sequence[Result]) -> str:

@@ -43,6 +43,8 @@ class Case:
         #: Every vector of the video run, once it has run, by name.
         self.vectors: Mapping[str, Array] = {}
         self.seconds = 0.0
+        #: Whether only figures and verdicts are wanted, as in a study.
+        self.lean = False
         #: The flattened circuit, once the static deck has run.
         self.circuit: Circuit | None = None
         #: Shortest usable pulse and gap, where they are asked for.

@@ -76,8 +76,8 @@ def settings_text(numerics: Numerics) -> str:
     steps = sorted({one.steps for one in finer})
     return (
         f"\N{PLUS-MINUS SIGN} is the numerical uncertainty, {SAFETY:g} times the spread between this run (reltol "
-        f"{numerics.reltol:g}, {numerics.steps} steps) and {len(finer)} finer ones (reltol down to {tolerances[0]}, up to "
-        f"{steps[-1]} steps); a limit closer than that is undefined"
+        f"{numerics.reltol:g}, {numerics.steps} steps) and {len(finer)} finer ones (reltol down to {tolerances[0]}, "
+        f"up to {steps[-1]} steps); a limit closer than that is undefined"
     )
 
 

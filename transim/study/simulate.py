@@ -188,7 +188,7 @@ def simulate(
         ``envelope``, ``carrier`` or both.
     checks : {"all", "start"}
         Biases at which the envelope is compared with ngspice's AC analysis: ``all`` four of them, or only the
-        ``start``, which needs no deck of its own.
+        ``start``, which needs no deck of its own. With ``start``, figures and verdicts are all that a result has.
 
     Returns
     -------
@@ -202,6 +202,7 @@ def simulate(
         If the envelope analysis is asked for and an element has no small-signal form.
     """
     case = Case(design, driver, temperature, engine)
+    case.lean = checks == "start"
     circuit, states = case.static()
     saved = saved_vectors(circuit) if "envelope" in analyses else ()
     video = case.video(saved)
@@ -321,8 +322,6 @@ def _carrier(
 
 def _result(case: Case, record: Record, analysis: str, method: str, differences: Mapping[str, float]) -> Result:
     figures = extract(record)
-    budgets, accounts = _edges(record)
-    first = case.timeline.first_timing(record.biased_passes)
     faults = tuple(
         f"{_CHECKS[name]}, the envelope differs by {format_quantity(difference, 'dB')} from ngspice's AC analysis at "
         f"the same bias; at most {format_quantity(_TOLERATED, 'dB')} is sound"
@@ -330,7 +329,7 @@ def _result(case: Case, record: Record, analysis: str, method: str, differences:
         if not difference <= _TOLERATED
     )
     faults += unbounded(case.vectors)
-    return Result(
+    result = Result(
         driver=case.origin.driver,
         carrier=record.carrier,
         temperature=case.temperature,
@@ -343,8 +342,18 @@ def _result(case: Case, record: Record, analysis: str, method: str, differences:
         checked=tuple(_CHECKS[name] for name in differences),
         level=(record.stress or record.large).level,  # type: ignore[union-attr]
         ratings=judge_ratings(record),
+    )
+    return result if case.lean else _with_accounts(case, record, result)
+
+
+def _with_accounts(case: Case, record: Record, result: Result) -> Result:
+    """Add what only the report of a single run shows."""
+    budgets, accounts = _edges(record)
+    first = case.timeline.first_timing(record.biased_passes)
+    return replace(
+        result,
         rates=rate_study(record),
-        notes=numerical_notes(record, figures, case.vectors["time"], case.design.numerics.steps),
+        notes=numerical_notes(record, result.figures, case.vectors["time"], case.design.numerics.steps),
         budget=budgets,
         charge=accounts,
         first_pulse=None if first is None else extract(replace(record, timing=first)),

@@ -116,9 +116,10 @@ def _few_periods(record: Record, figures: Mapping[str, Figure]) -> list[str]:
         figure = figures.get(name)
         if figure is None or figure.value is None or figure.value * record.carrier >= FEWEST_PERIODS:
             continue
+        periods = figure.value * record.carrier
         notes.append(
-            f"the {words} takes {format_quantity(figure.value, 's')}, {figure.value * record.carrier:.2g} periods of the "
-            f"carrier, and an envelope needs at least {FEWEST_PERIODS:g}: {name} and the times at this edge depend on "
-            "the carrier's phase"
+            f"the {words} takes {format_quantity(figure.value, 's')}, {periods:.2g} periods of the carrier, and "
+            f"an envelope needs at least {FEWEST_PERIODS:g}: {name} and the times at this edge depend on the carrier's "
+            "phase"
         )
     return notes

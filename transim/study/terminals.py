@@ -13,7 +13,15 @@ from transim.envelope.junction import Array
 from transim.measure.waveform import Waveform
 from transim.study.case import Case
 
-__all__ = ["anode_of", "driver_output_power", "junction_at", "junction_currents", "junction_powers", "polarity", "supply_currents"]
+__all__ = [
+    "anode_of",
+    "driver_output_power",
+    "junction_at",
+    "junction_currents",
+    "junction_powers",
+    "polarity",
+    "supply_currents",
+]
 
 _PNP = re.compile(r"(?i)\s*\.model\s+\S+\s+pnp\b")
 _NODE = re.compile(r"v\((?P<terminal>\w+)\)")
