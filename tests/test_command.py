@@ -93,7 +93,8 @@ def test_samples_on_straight_lines_are_left_out(tmp_path):
     time = np.linspace(0, 12, 24001)
     volts = np.interp(time, *zip(*POINTS, strict=True)) + 1e-3 * np.sin(40 * math.pi * time)
     command = read_command(write(tmp_path, tuple(zip(time, volts, strict=True))))
-    assert len(command.time) == len(POINTS)
+    # of 24001 samples, the ten corners and a few that the ripple adds
+    assert len(POINTS) <= len(command.time) <= 2 * len(POINTS)
     assert command.pulses[-1][0] == pytest.approx(4.01 * US, abs=1e-9)
 
 

@@ -127,3 +127,13 @@ def test_a_title_brings_no_line_into_a_deck(yard, capsys, title):
     design.write_text(text.replace('title = "hostile"', f"title = {title}"))
     assert main(["deck", str(design), "--out", str(yard / "decks")]) == 2
     assert "title" in capsys.readouterr().err
+
+
+@pytest.mark.parametrize("name", ["n" * 180 + "/" + "n" * 15, "parts", "missing.lib", "../secret", "/dev/zero"])
+def test_model_file_that_cannot_be_used_is_named(yard, capsys, name):
+    design, _ = design_of(yard, HOSTILE[0])
+    design.write_text(DESIGN.format(part="junction_diode", model=f'model = "{name}"'))
+    assert main(["check", str(design)]) == 2
+    said = capsys.readouterr().err
+    assert said.startswith(f"error: {design}:")
+    assert "unexpected" not in said

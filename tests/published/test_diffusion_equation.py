@@ -58,15 +58,17 @@ def test_turn_off(body, transient):
         + f"Vctl ctl 0 PWL(0 1 {STEP} 1 {STEP + 1e-12} 0)\n"
     )
     plot = transient(deck, 1.2 * storage + STEP, storage / 500.0, "reltol=1e-5")
-    time, voltage = plot["time"] - STEP, plot["v(xd.m41)"]
+    time, voltage = plot["time"] - STEP, plot["v(xd.n)"]
     end = int(np.flatnonzero(voltage < 0.0)[0])
     found = np.interp(0.0, -voltage[end - 1 : end + 1], time[end - 1 : end + 1])
     assert found == pytest.approx(storage, rel=0.01)
     current = plot["i(v.xd.vsense)"]
-    drop = (plot["v(xd.m1)"] - plot["v(xd.m41)"]) / current
+    drop = (plot["v(xd.m0)"] - plot["v(xd.n)"]) / current
+    print(found/storage)
     for share in (-0.01, 0.1, 0.3, 0.5, 0.7, 0.9):
         moment = max(share, 0.0) * storage
         at = share * storage if share > 0.0 else -0.5 * STEP
+        print(share,np.interp(at,time,drop)/resistance(moment))
         assert 1e-9 * np.interp(at, time, plot["v(xd.q)"]) == pytest.approx(charge(moment), rel=0.01)
         assert np.interp(at, time, drop) == pytest.approx(resistance(moment), rel=0.01)
     # far from what a lumped store would do

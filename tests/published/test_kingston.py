@@ -31,7 +31,8 @@ def test_storage_time(body, transient, forward, reverse, storage):
     )
     plot = transient(deck, 1.2 * storage + STEP, storage / 500.0, "reltol=1e-5")
     # the junction's own voltage, without that of the I-region
-    time, voltage = plot["time"] - STEP, plot["v(xd.m41)"]
+    time, voltage = plot["time"] - STEP, plot["v(xd.n)"]
     end = int(np.flatnonzero(voltage < 0.0)[0])
     found = np.interp(0.0, -voltage[end - 1 : end + 1], time[end - 1 : end + 1])
+    print(found/storage)
     assert found == pytest.approx(storage, rel=0.02)

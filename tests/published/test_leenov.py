@@ -22,7 +22,7 @@ def resistance(engine, body, values, current):
     )
     bias, response = engine.run(deck, name="region", writes_raw=True).plots
     assert 1e-9 * float(bias["v(xd.q)"][0].real) > 0.0
-    drop = float((bias["v(xd.m1)"] - bias["v(xd.m41)"])[0].real)
+    drop = float((bias["v(xd.m0)"] - bias["v(xd.n)"])[0].real)
     return drop / current, float(response["v(a)"][0].real)
 
 
@@ -31,6 +31,7 @@ def test_resistance(engine, body):
     u = 200e-6 / 2.0 / np.sqrt(0.09 * thermal * 1e-6)
     assert 2.0 * thermal / 50e-3 * np.sinh(u) * np.arctan(np.sinh(u)) == pytest.approx(5.34203, rel=1e-3)
     found = {n: resistance(engine, body, f"width=200e-6 lifetime=1e-6 mobility=0.18 cells={n}", 50e-3) for n in (10, 20, 40)}
+    print(found)
     for value in found[40]:
         assert value == pytest.approx(5.34203, rel=0.01)
     errors = [abs(found[n][0] / 5.34203 - 1.0) for n in (10, 20, 40)]

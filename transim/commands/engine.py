@@ -6,7 +6,7 @@ import os
 
 from transim.commands.console import Console
 from transim.engine import find_engine, self_check
-from transim.engine.ngspice import VARIABLE
+from transim.engine.ngspice import OLDEST, TESTED, VARIABLE
 from transim.errors import EngineError
 from transim.report.document import engine_document
 
@@ -42,12 +42,13 @@ def show_engine(console: Console, ngspice: str | None) -> int:
     else:
         origin = f"found on PATH; neither the option --ngspice nor the variable {VARIABLE} names another"
     check = self_check(engine)
+    tested = "" if check.version == TESTED else f"; it is run from {OLDEST} on, and was tested with {TESTED}"
     deviation = f"{check.deviation:.2g} V at most (limit {check.limit:g} V)"
     console.write(
         [
             f"engine     {engine.path}",
             f"           {origin}",
-            f"version    ngspice {check.version}",
+            f"version    ngspice {check.version}{tested}",
             f"self-test  {'PASS' if check.passed else 'FAIL'}; the discharge of a capacitor from 1 V differs from",
             f"           exp(-t/RC) by {deviation}; {1e3 * check.seconds:.0f} ms",
         ]

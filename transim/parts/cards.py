@@ -54,11 +54,11 @@ def read_netlist_text(path: Path) -> str:
     NetlistError
         If it does not exist, is no ordinary file, is larger than 2 MB, or is not UTF-8 text.
     """
-    if not path.exists():
-        raise NetlistError("the file does not exist", file=path)
-    if not path.is_file():
-        raise NetlistError("a SPICE file is wanted, this is a folder or a device", file=path)
     try:
+        if not path.exists():
+            raise NetlistError("the file does not exist", file=path)
+        if not path.is_file():
+            raise NetlistError("a SPICE file is wanted, this is a folder or a device", file=path)
         if path.stat().st_size > _LARGEST_FILE:
             raise NetlistError("the file is larger than 2 MB", file=path)
         text = path.read_text(encoding="utf-8-sig")

@@ -110,7 +110,7 @@ def _hold_off(outcome: Outcome) -> list[str]:
     lines = []
     for name, part in parts.items():
         if any(note.startswith("Hold-off") for note in part.notes):
-            said = f"holdoff_bias_margin is by the published relation; {name} lets go later (transim parts {name})"
+            said = f"holdoff_bias_margin is by the published relation; {name} lets go later, see its notes"
             lines += [*wrap(said), ""]
     return lines
 

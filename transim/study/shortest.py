@@ -32,8 +32,8 @@ _NARROW = 0.01
 _SAME = 0.05
 #: Longer intervals than this multiple of the pulse are not tried: nothing moves any more.
 _LONGEST = 20.0
-#: Time steps that the shorter interval of a trial gets, while that makes the step no finer than a quarter.
-_STEPS, _FINER = 200, 4
+#: Time steps that the shorter interval of a trial gets, while that makes the step no finer than half.
+_STEPS, _FINER = 200, 2
 
 #: Returns why an interval is not usable; None where it is.
 _Trial = Callable[[float], str | None]
