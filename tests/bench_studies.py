@@ -155,8 +155,8 @@ def bench_tune(design: Design, engine: Engine) -> None:
             f"  seed {seed}: {100 * found:.3f} % at {outcome.best.values} in {outcome.runs} runs ({len(points) // 10} allowed)"
         )
     more = [*words, f"{RESISTOR} = 100 ohm .. 470 ohm, E24"]
-    names, _ = points_of(design, more)
-    axes = study_of(design, Sweep, more).axes
+    axes = study_of(design, Tune, more).axes
+    names = tuple(axis.parameter for axis in axes)
     chance = random.Random(1)
     picks = [(str(n), tuple(chance.choice(axis.values) for axis in axes)) for n in range(3000)]
     setup = replace(setup, parameters=names)
