@@ -156,7 +156,7 @@ def test_account_needs_its_waveforms():
     budget = time_budget(found, "off")
     for name in ("drive_current", "junction_conduction", "other_charge"):
         gone = replace(found, **{name: None if name == "drive_current" else {}})
-        with pytest.raises(MeasurementError, match="in this record|that the driver feeds"):
+        with pytest.raises(MeasurementError, match=r"in this record|that the driver feeds"):
             charge_account(gone, budget)
 
 

@@ -129,7 +129,7 @@ def test_what_is_wrong_with_a_record_is_said_at_its_key(tmp_path, points, head, 
 def test_words_among_the_rows_are_an_error(tmp_path):
     file = write(tmp_path)
     file.write_text(file.read_text() + "end, of it\n")
-    with pytest.raises(DesignError, match="line 12 .* is no row"):
+    with pytest.raises(DesignError, match=r"line 12 .* is no row"):
         read_command(file)
 
 
@@ -148,7 +148,7 @@ def test_keys_that_the_record_sets_are_refused(tmp_path):
 
 def test_a_single_pulse_needs_a_period(tmp_path):
     with pytest.raises(InvalidDesign) as caught:
-        design(tmp_path, points=POINTS[:5] + ((8, 0),))
+        design(tmp_path, points=(*POINTS[:5], (8, 0)))
     assert [error.key for error in caught.value.errors] == ["control.period"]
 
 

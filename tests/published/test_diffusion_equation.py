@@ -3,8 +3,8 @@
 dp/dt = D d2p/dx2 - p/tau on 0 < x < W, half of the current entering at each end (equal mobilities), so that by symmetry
 one half has -D dp/dx = i/2 at its end and no flow in its middle; charge Q = integral of p, junction voltage from the
 density at the end, resistance of the I-region as the integral of W^2/(mobility Q(x)) (J. F. White, 1982). SciPy
-(`scipy.integrate.solve_ivp`, Radau) has 400 cells that grow towards the middle; the part has 40 even ones. 1 % in the
-storage time, the charge that is left then and the resistance on the way.
+(`scipy.integrate.solve_ivp`, Radau) has 400 cells that grow towards the middle; the part has 40. 1 % in the storage
+time, the charge that is left then and the resistance on the way.
 """
 
 import numpy as np
@@ -64,11 +64,9 @@ def test_turn_off(body, transient):
     assert found == pytest.approx(storage, rel=0.01)
     current = plot["i(v.xd.vsense)"]
     drop = (plot["v(xd.m0)"] - plot["v(xd.n)"]) / current
-    print(found/storage)
     for share in (-0.01, 0.1, 0.3, 0.5, 0.7, 0.9):
         moment = max(share, 0.0) * storage
         at = share * storage if share > 0.0 else -0.5 * STEP
-        print(share,np.interp(at,time,drop)/resistance(moment))
         assert 1e-9 * np.interp(at, time, plot["v(xd.q)"]) == pytest.approx(charge(moment), rel=0.01)
         assert np.interp(at, time, drop) == pytest.approx(resistance(moment), rel=0.01)
     # far from what a lumped store would do

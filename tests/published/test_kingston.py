@@ -3,8 +3,7 @@
 Source: R. H. Kingston, "Switching time in junction diodes and junction transistors", Proc. IRE 42, 829-834, 1954, as in
 D. A. Neamen, Semiconductor Physics and Devices, 4th edition, eq. 8.109. Read: 1.75 mA and 0.5 mA, tau 100 ns:
 74.498 ns; IF = IR: 0.22747 tau. On the shipped part pin_distributed with an I-region of eight diffusion lengths, so that
-each end is a long base, and driven by the shipped ideal_current; 2 %, as 40 cells of a fifth of a diffusion length are
-coarse against the charge that is left at the end. The lumped formula tau ln(1 + IF/IR) would give 150.4 and 69.3 ns.
+each end is a long base, and driven by the shipped ideal_current; 2 %, for the division into 40 cells. The lumped formula tau ln(1 + IF/IR) would give 150.4 and 69.3 ns.
 """
 
 import math
@@ -34,5 +33,4 @@ def test_storage_time(body, transient, forward, reverse, storage):
     time, voltage = plot["time"] - STEP, plot["v(xd.n)"]
     end = int(np.flatnonzero(voltage < 0.0)[0])
     found = np.interp(0.0, -voltage[end - 1 : end + 1], time[end - 1 : end + 1])
-    print(found/storage)
     assert found == pytest.approx(storage, rel=0.02)

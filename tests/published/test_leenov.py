@@ -31,7 +31,6 @@ def test_resistance(engine, body):
     u = 200e-6 / 2.0 / np.sqrt(0.09 * thermal * 1e-6)
     assert 2.0 * thermal / 50e-3 * np.sinh(u) * np.arctan(np.sinh(u)) == pytest.approx(5.34203, rel=1e-3)
     found = {n: resistance(engine, body, f"width=200e-6 lifetime=1e-6 mobility=0.18 cells={n}", 50e-3) for n in (10, 20, 40)}
-    print(found)
     for value in found[40]:
         assert value == pytest.approx(5.34203, rel=0.01)
     errors = [abs(found[n][0] / 5.34203 - 1.0) for n in (10, 20, 40)]
