@@ -6,8 +6,9 @@ import shutil
 import pytest
 
 from transim.errors import DesignError, NetlistError
-from transim.parts.cards import joined_cards, read_model_card
+from transim.parts.cards import joined_cards, read_model_card, read_model_cards
 from transim.parts.catalogue import Catalogue, load_catalogue, shipped_folder
+from transim.parts.foreign import read_foreign_junction
 from transim.parts.header import read_part
 from transim.parts.nearest import nearest_name
 from transim.parts.part import ROLES
@@ -369,3 +370,60 @@ def test_long_faulty_card_is_refused_at_once(tmp_path):
 def test_nearest_name_ignores_case_and_distant_names():
     assert nearest_name("LIFETME", ["lifetime", "width"]) == "lifetime"
     assert nearest_name("zzz", ["lifetime", "width"]) is None
+
+
+def test_two_places_for_models_of_different_kinds(tmp_path):
+    part = load_catalogue().find("driver", "complementary_follower")
+    places = {place.name: place.kinds for place in part.model.places}
+    assert places == {"upper": ("NPN",), "lower": ("PNP",)}
+    file = tmp_path / "pair.lib"
+    file.write_text(".model Q1 PNP(bf=50)\n.model Q2 NPN(bf=90)\n")
+    assert read_model_cards(file, places) == ".model upper NPN(bf=90)\n.model lower PNP(bf=50)"
+    file.write_text(".model Q1 PNP(bf=50)\n")
+    assert read_model_cards(file, places) == ".model lower PNP(bf=50)"
+    file.write_text(".model Q1 PNP(bf=50)\n.model Q2 PNP(bf=90)\n")
+    with pytest.raises(NetlistError, match=r"2 \.model cards") as caught:
+        read_model_cards(file, places)
+    assert caught.value.line == 2
+    faulty = DRIVER.replace("* model: NPN PNP | switching", "* model: NPN | switching\n* model: NPN | other")
+    with pytest.raises(NetlistError, match="different kinds"):
+        read_part(write(tmp_path, faulty))
+
+
+FOREIGN = """\
+* invented diode in a package
+.model chip D(is=1e-14 tt=60n
++ cjo=0.4p)
+.SUBCKT WT7 1 2 PARAMS: L = 0.6n
+L1 1 3 {L}
+D1 2 3 chip
+.ENDS WT7
+"""
+
+
+def test_subcircuit_without_header_becomes_a_junction(tmp_path):
+    file = tmp_path / "wt7.lib"
+    file.write_text(FOREIGN)
+    part = read_foreign_junction(file, "wt7", ["k", "a"], "tag")
+    assert (part.role, part.terminals, part.settings) == ("junction", ("a", "k"), {})
+    assert part.body.splitlines()[:3] == [".subckt tag a k", "X1 k a wt7", ".model chip D(is=1e-14 tt=60n cjo=0.4p)"]
+    assert [probe.terms for probe in part.probes] == [((1.0, "v(k)"), (-1.0, "v(a)"))]
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "terminals", "message"),
+    [
+        ("", "", ["a", "k", "k"], "terminals of a junction"),
+        ("", "", ["c", "b", "e"], "has 2 nodes"),
+        ("WT7", "WT8", ["a", "k"], "did you mean WT8"),
+        ("D1 2 3 chip", ".include chip.lib", ["a", "k"], "reads another file"),
+        (".ENDS WT7", "", ["a", "k"], "no .ends"),
+        (".ENDS WT7", ".ENDS\nR1 1 2 5", ["a", "k"], "outside its subcircuits"),
+    ],
+)
+def test_subcircuit_that_cannot_be_a_junction_is_refused(tmp_path, old, new, terminals, message):
+    file = tmp_path / "wt7.lib"
+    file.write_text(FOREIGN.replace(old, new) if old else FOREIGN)
+    with pytest.raises(NetlistError, match=message) as caught:
+        read_foreign_junction(file, "WT7", terminals, "tag")
+    assert caught.value.file == file

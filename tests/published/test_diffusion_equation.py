@@ -52,7 +52,7 @@ def test_turn_off(body, transient):
     deck = (
         body("junction", "pin_distributed")
         + body("driver", "ideal_current")
-        + f"Xd a 0 pin_distributed cells=40 lifetime={LIFETIME} width={WIDTH} mobility={MOBILITY} transit_time=1e-12 "
+        + f"Xd a 0 pin_distributed cells=40 lifetime_exponent=0 mobility_exponent=0 lifetime={LIFETIME} width={WIDTH} mobility={MOBILITY} transit_time=1e-12 "
         + "capacitance=0 series_resistance=0 intrinsic_resistance=1e7\n"
         + f"Xi ctl a ideal_current on_current={CURRENT} off_current={CURRENT}\n"
         + f"Vctl ctl 0 PWL(0 1 {STEP} 1 {STEP + 1e-12} 0)\n"

@@ -23,7 +23,7 @@ def test_storage_time(body, transient, forward, reverse, storage):
     deck = (
         body("junction", "pin_distributed")
         + body("driver", "ideal_current")
-        + f"Xd a 0 pin_distributed cells=40 lifetime={LIFETIME} width={8 * LENGTH} mobility=0.18 transit_time=1e-12 "
+        + f"Xd a 0 pin_distributed cells=40 lifetime_exponent=0 mobility_exponent=0 lifetime={LIFETIME} width={8 * LENGTH} mobility=0.18 transit_time=1e-12 "
         + "capacitance=0 series_resistance=0\n"
         + f"Xi ctl a ideal_current on_current={forward} off_current={reverse}\n"
         + f"Vctl ctl 0 PWL(0 1 {STEP} 1 {STEP + 1e-12} 0)\n"

@@ -11,7 +11,7 @@ the junction falls from its forward voltage to the clamp, 0.05 pF takes 0.08 pC 
 import numpy as np
 import pytest
 
-PIN = "Xd a 0 pin_lumped lifetime=1e-7 transit_time=25e-9 capacitance=5e-14 series_resistance=0 width=1e-5\n"
+PIN = "Xd a 0 pin_lumped lifetime_exponent=0 mobility_exponent=0 lifetime=1e-7 transit_time=25e-9 capacitance=5e-14 series_resistance=0 width=1e-5\n"
 START = 1e-9
 
 

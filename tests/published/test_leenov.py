@@ -10,7 +10,7 @@ charge; 1 %, and twice the accuracy with every doubling of the cells shows that 
 import numpy as np
 import pytest
 
-PART = "Xd a 0 pin_distributed transit_time=1e-13 capacitance=0 series_resistance=0 intrinsic_resistance=1e9 "
+PART = "Xd a 0 pin_distributed lifetime_exponent=0 mobility_exponent=0 transit_time=1e-13 capacitance=0 series_resistance=0 intrinsic_resistance=1e9 "
 
 
 def resistance(engine, body, values, current):

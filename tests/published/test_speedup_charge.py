@@ -31,3 +31,4 @@ def test_charge_that_the_capacitor_has_to_draw(body, transient):
     plot = transient(deck, 1e-9, 1e-11)
     stored = sum(float(np.real(plot[name][-1])) for name in plot.names if "[qb" in name)
     assert stored / SWING == pytest.approx(CAPACITANCE, rel=5e-3)
+    assert nearest_preferred("E24", stored / SWING) == pytest.approx(33e-12)

@@ -11,7 +11,8 @@ import math
 import numpy as np
 import pytest
 
-NOMINAL = 300.15
+#: Where lifetime and mobility are the parameters' own values; IS is at SPICE's nominal 300.15 K.
+NOMINAL = 298.15
 
 
 def arora(kelvin):

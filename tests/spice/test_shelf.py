@@ -48,7 +48,7 @@ RAILS = 'part = "push_pull_speedup"'
 DRIVERS = {"ideal_current": "", "ideal_voltage": 'output_resistance = "220 ohm"', "resistor_feed": 'vn = "-5 V"'}
 GATE = 'part = "resistor_feed"\nvn = "-1 V"'
 #: Drivers whose fast edge needs a higher carrier for ten periods.
-CARRIERS = {"common_emitter": "500 MHz", "spike_and_hold": "400 MHz"}
+CARRIERS = {"common_emitter": "500 MHz", "spike_and_hold": "1 GHz"}
 TRANSISTOR = (
     'part = "bjt_pair"\nemitter_capacitance = "1 pF"\ncollector_capacitance = "0.6 pF"\nreverse_transit_time = "200 ns"'
 )
@@ -96,9 +96,70 @@ def test_driver(tmp_path, engine, name):
         ("pin_lumped", {"junction": PIN, "driver": GATE}),
         ("pin_distributed", {"junction": THICK, "driver": GATE, "carrier": "500 MHz"}),
         ("junction_diode", {"junction": STEP, "driver": GATE, "carrier": "500 MHz"}),
-        ("bjt_pair", {"junction": TRANSISTOR, "driver": GATE, "path": "series_bjt", "feed": RESISTORS}),
+        ("bjt_pair", {"junction": TRANSISTOR, "driver": GATE, "path": "series_bjt", "feed": RESISTORS + '\nbypass = "470 pF"'}),
     ],
 )
 def test_junction(tmp_path, engine, junction, values):
     assert junction in values["junction"]
     compare(design_of(tmp_path, **{"path": "series_single", **values}), engine)
+
+
+@pytest.mark.parametrize("temperature", ["-40", "125"])
+@pytest.mark.parametrize("junction", ["pin_lumped", "pin_distributed"])
+def test_bias_check_over_temperature(tmp_path, engine, junction, temperature):
+    design = design_of(tmp_path, path="series_single", junction=f'part = "{junction}"', temperature=temperature)
+    (result,) = simulate(design, design.drivers[0], float(temperature), engine, ["envelope"]).results
+    assert not result.faults
+    assert result.check < 0.05
+
+
+def test_ten_and_forty_cells(tmp_path, engine):
+    found = {}
+    for cells in (10, 40):
+        design = design_of(tmp_path, path="series_single", junction=f'{THICK}\ncells = {cells}', driver=GATE)
+        (result,) = simulate(design, design.drivers[0], 25.0, engine, ["envelope"]).results
+        assert not result.faults
+        found[cells] = result.figures["off_time"].value
+    assert found[10] == pytest.approx(found[40], rel=0.01)
+
+
+def test_thin_region_switches_like_the_lumped_part(tmp_path, engine):
+    found = []
+    for part in ("pin_lumped", "pin_distributed"):
+        # diffusion adds W^2/(12 D), half a nanosecond here, to the transit time
+        thin = f'part = "{part}"\nwidth = "4 um"\nlifetime = "300 ns"\ntransit_time = "4 ns"'
+        design = design_of(tmp_path, path="series_single", junction=thin, driver=GATE)
+        (result,) = simulate(design, design.drivers[0], 25.0, engine, ["envelope"]).results
+        found.append(result.figures["off_time"].value)
+    assert found[1] == pytest.approx(found[0], rel=0.01)
+
+
+PUBLISHED = """\
+* invented diode in a package
+.model chip D(is=1e-14 n=1.05 rs=0.8 tt=150n cjo=0.3p vj=0.6 m=0.4 bv=70)
+.SUBCKT WT7 1 2 PARAMS: L=0.6n
+L1 2 3 {L}
+D1 3 1 chip
+C1 1 2 0.06p
+.ENDS WT7
+"""
+
+
+def test_subcircuit_by_path_as_junction(tmp_path, engine):
+    (tmp_path / "wt7.lib").write_text(PUBLISHED)
+    foreign = 'part = "subcircuit"\nfile = "wt7.lib"\nname = "WT7"\nterminals = ["k", "a"]'
+    design = design_of(tmp_path, path="series_single", junction=foreign, driver=GATE, carrier="500 MHz")
+    compare(design, engine)
+
+
+def test_published_cards_in_a_driver(tmp_path, engine):
+    (tmp_path / "pair.lib").write_text(
+        ".model N1 NPN(is=1e-14 bf=80 tf=1n cje=12p cjc=6p)\n.model P1 PNP(is=1e-14 bf=60 tf=1.5n cje=12p cjc=8p)\n"
+    )
+    driver = 'part = "complementary_follower"\nmodel = "pair.lib"'
+    design = design_of(tmp_path, driver=driver)
+    run = simulate(design, design.drivers[0], 25.0, engine, ["envelope"])
+    assert not run.results[0].faults
+    text = run.decks[0].text.lower()
+    assert ".model upper npn(is=1e-14 bf=80" in text
+    assert ".model lower pnp(is=1e-14 bf=60" in text

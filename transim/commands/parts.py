@@ -81,7 +81,7 @@ def _describe(part: Part) -> Iterator[str]:
     for slot in part.slots:
         yield from wrap(f"slot {slot.name} ({' '.join(slot.terminals)}): {slot.meaning}", "  ")
     if part.model is not None:
-        kinds = " or ".join(part.model.kinds)
+        kinds = " and one of kind ".join(" or ".join(place.kinds) for place in part.model.places)
         silenced = ", ".join(part.model.parameters)
         text = f"model: file with one published .model card of kind {kinds}"
         yield from wrap(f"{text}; it takes the place of {silenced}" if silenced else text, "  ")

@@ -14,6 +14,7 @@ from transim.design.ratings import read_driver_ratings, read_junction_ratings
 from transim.errors import DesignError, NetlistError, TopologyError
 from transim.parts.cards import read_model_cards
 from transim.parts.catalogue import Catalogue
+from transim.parts.foreign import read_foreign_junction
 from transim.parts.header import read_part
 from transim.parts.nearest import nearest_name
 from transim.parts.part import Part
@@ -22,6 +23,8 @@ __all__ = ["Components"]
 
 _NAME = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,39}")
 _TEXT = Line(200)
+#: Value of the key `part` for a subcircuit from a file without a header.
+_FOREIGN = "subcircuit"
 
 
 class Components:
@@ -108,12 +111,44 @@ class Components:
 
     def _junction(self, name: str, table: Mapping[str, object]) -> Junction | None:
         path = ("junction", name)
-        part = self._part("junction", (*path, "part"), table)
+        if table.get("part") == _FOREIGN:
+            part, keys = self._foreign(name, table), {"part", "file", "name", "terminals", "ratings"}
+        else:
+            part, keys = self._part("junction", (*path, "part"), table), {"part", "model", "ratings"}
         if part is None:
             return None
-        values = self._values(part, path, table, {"part", "model", "ratings"})
+        values = self._values(part, path, table, keys)
         ratings = read_junction_ratings(self._faults, path, table, part)
         return Junction(name=name, part=part, values=values, model=self._model(part, path, table), ratings=ratings)
+
+    def _foreign(self, name: str, table: Mapping[str, object]) -> Part | None:
+        """Return the junction that a subcircuit without a header makes."""
+        path = ("junction", name)
+        texts = {}
+        for key, wanted in (("file", "the file of the subcircuit"), ("name", "the name of the subcircuit")):
+            if key not in table:
+                self._faults.missing((*path, key), wanted)
+            else:
+                texts[key] = self._faults.value((*path, key), table[key], _TEXT)
+        raw = table.get("terminals", ["a", "k"])
+        if not isinstance(raw, list) or not all(isinstance(item, str) for item in raw):
+            self._faults.adopt(
+                (*path, "terminals"),
+                DesignError(
+                    "the terminals say what each node of the subcircuit is, in its order",
+                    expected='for example ["a", "k"] or ["c", "b", "e"]',
+                    found=shown(raw),
+                ),
+            )
+            return None
+        file, subcircuit = texts.get("file"), texts.get("name")
+        if file is None or subcircuit is None:
+            return None
+        try:
+            return read_foreign_junction(self._folder / file, subcircuit, raw, f"{_FOREIGN}_{name.lower()}")
+        except NetlistError as exc:
+            self._faults.adopt((*path, "file"), DesignError(f"the subcircuit cannot be used: {exc}"))
+            return None
 
     def _named_tables(self, kind: str, raw: object) -> dict[str, dict[str, object]]:
         """Return the tables `[kind.NAME]`, refusing names that cannot stand in a deck."""

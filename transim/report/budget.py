@@ -133,7 +133,7 @@ def _needed_sentence(account: ChargeAccount, budget: Budget, judgements: Sequenc
     )
     if abs(account.displaced) > _MUCH * abs(account.delivered):
         share = abs(account.displaced / account.delivered)
-        text += f"; capacitances take {100.0 * share:.0f} % of the charge: less bypass would do more"
+        text += f"; capacitances take {100.0 * share:.0f} % of the charge: a smaller bypass or DC block would help"
     return text
 
 

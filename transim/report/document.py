@@ -230,7 +230,7 @@ def part_document(part: Part) -> Document:
         "through": list(part.through),
         "passes_biased": part.passes,
         "slots": [asdict(slot) for slot in part.slots],
-        "model_kinds": [] if part.model is None else list(part.model.kinds),
+        "model_kinds": [] if part.model is None else [kind for place in part.model.places for kind in place.kinds],
         "notes": list(part.notes),
         "sources": list(part.sources),
     }

@@ -9,10 +9,8 @@ from typing import TYPE_CHECKING
 from transim import __version__
 from transim.errors import OutputError
 from transim.report.budget import budget_lines
-from transim.report.budget import budget_lines
 from transim.report.cycle import cycles_of
 from transim.report.panels import embed_panels, key_of, panels_of, thinned_note, time_scale
-from transim.report.pulses import pulse_lines
 from transim.report.pulses import pulse_lines
 from transim.report.ratings import rating_tables
 from transim.report.settled import settled_lines
@@ -89,7 +87,7 @@ def page_text(outcome: Outcome) -> str:
         budgets=budget_lines(outcome),
         pulses=pulse_lines(outcome),
         ratings=rating_tables(outcome),
-        edges_text=_edges(outcome),
+        shortest=shortest_lines(outcome),
         settled=settled_lines(outcome),
         key=key_of(cycles),
         groups=[
@@ -119,12 +117,6 @@ def _template() -> Template:
 
 def _piece(name: str) -> str:
     return (files("transim.report") / name).read_text(encoding="utf-8")
-
-
-def _edges(outcome: Outcome) -> list[str]:
-    """Return where time and charge go, first and last pulse, and shortest pulse and gap, as far as there are any."""
-    blocks = [lines for block in (budget_lines, pulse_lines, shortest_lines) if (lines := block(outcome))]
-    return [line for lines in blocks for line in (*lines, "")][:-1]
 
 
 def _methods(outcome: Outcome) -> list[str]:
