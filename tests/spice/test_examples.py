@@ -69,7 +69,7 @@ def test_document_has_every_driver_and_carrier_and_what_is_described(example):
         assert isinstance(result["check_db"], NUMBER)
         assert result["check_db"] <= 0.05
         for entry in result["metrics"].values():
-            assert set(entry) == {"value", "unit", "note"}
+            assert set(entry) == {"value", "unit", "note", "uncertainty"}
             assert isinstance(entry["value"], NUMBER) != isinstance(entry["note"], str)
         for judged in result["limits"]:
             assert {"metric", "value", "margin", "verdict"} <= set(judged)

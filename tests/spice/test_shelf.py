@@ -107,7 +107,7 @@ def test_junction(tmp_path, engine, junction, values):
 @pytest.mark.parametrize("temperature", ["-40", "125"])
 @pytest.mark.parametrize("junction", ["pin_lumped", "pin_distributed"])
 def test_bias_check_over_temperature(tmp_path, engine, junction, temperature):
-    design = design_of(tmp_path, path="series_single", junction=f'part = "{junction}"', temperature=temperature)
+    design = design_of(tmp_path, path="series_single", junction=f'part = "{junction}"', driver=GATE, temperature=temperature)
     (result,) = simulate(design, design.drivers[0], float(temperature), engine, ["envelope"]).results
     assert not result.faults
     assert result.check < 0.05
