@@ -35,10 +35,10 @@ def value(result: Result, metric: str) -> float:
 
 def end_loss(design: Design, run: CaseRun, frequency: float) -> float:
     """Return the loss at the end of the on interval by the envelope analysis [dB], settled or not."""
-    passes = bool(design.switch.path.passes)
+    passes = design.switch.path.throws[0].passes_high
     timeline = timeline_of(design)
     end = timeline.falling - timeline.edge / 2.0 if passes else timeline.rising - timeline.edge / 2.0
-    return -20.0 * math.log10(abs(complex(run.envelopes["envelope", frequency].at(end))))
+    return -20.0 * math.log10(abs(complex(run.throws[0].envelopes["envelope", frequency].at(end))))
 
 
 def first_level(departures: list[float], bound: float) -> str:

@@ -29,7 +29,7 @@ NAMES = """
     junction_charge junction_reverse junction_current_peak supply_current_peak
     junction_dissipation driver_dissipation highest_rate insertion_loss isolation return_loss_on return_loss_off
     holdoff_peak_margin holdoff_bias_margin charge_margin rf_modulation level_loss level_isolation on_compression
-    bias_shift_on bias_shift_off hot_switching_peak hot_switching_energy shortest_pulse shortest_gap
+    bias_shift_on bias_shift_off hot_switching_peak hot_switching_energy throw_overlap throw_gap shortest_pulse shortest_gap
 """
 
 values = st.floats(-1e3, 1e3)

@@ -39,7 +39,7 @@ def rise(time, level):
 def test_share_of_the_group_delay(inductance, width, method):
     network, time, conductance = switch([f"l1 p1 m {inductance}"], width)
     carrier = 1e6
-    found = solve_envelope(network, PORTS, [carrier], (0, 1))
+    found = solve_envelope(network, PORTS, [carrier], [(0, 1)])
     reactance = 2j * np.pi * carrier * inductance
     level = np.abs(100.0 / (100.0 + reactance + 1.0 / conductance))
     start, end = rise(time, level)
@@ -55,7 +55,7 @@ def test_share_of_the_group_delay(inductance, width, method):
 def test_each_carrier_has_its_own_method():
     resonant = 1.0 / (2.0 * np.pi * np.sqrt(1e-6 * 100e-12))
     trap, *_ = switch(["l1 p1 x 1u", "c1 x m 100p"], 5e-8)
-    found = solve_envelope(trap, PORTS, [resonant, 100 * resonant], (0, 1))
+    found = solve_envelope(trap, PORTS, [resonant, 100 * resonant], [(0, 1)])
     assert found.methods[0] == "ringing"
     assert found.s.shape == found.frozen.shape == (2, trap.time.size, 2, 2)
 
@@ -63,22 +63,22 @@ def test_each_carrier_has_its_own_method():
 def test_a_method_can_be_asked_for():
     network, *_ = switch(["l1 p1 m 5n"], 1e-6)
     for wanted in ("frozen", "ringing"):
-        found = solve_envelope(network, PORTS, [1e6], (0, 1), wanted)
+        found = solve_envelope(network, PORTS, [1e6], [(0, 1)], wanted)
         assert found.methods == (wanted,)
         assert found.reasons[0].startswith("as requested; group delay is")
 
 
 def test_frozen_is_kept_beside_ringing():
     network, *_ = switch(["l1 p1 m 5u"], 1e-7)
-    frozen = solve_envelope(network, PORTS, [1e6], (0, 1), "frozen")
-    ringing = solve_envelope(network, PORTS, [1e6], (0, 1), "ringing")
+    frozen = solve_envelope(network, PORTS, [1e6], [(0, 1)], "frozen")
+    ringing = solve_envelope(network, PORTS, [1e6], [(0, 1)], "ringing")
     assert np.array_equal(ringing.frozen, frozen.s)
     assert np.abs(ringing.s - frozen.s).max() > 1e-3
 
 
 def test_what_never_switches_is_frozen():
     network, *_ = switch(["l1 p1 m 5u", "r1 m p2 1m"], 1e-7)
-    found = solve_envelope(network, PORTS, [1e6], (0, 1))
+    found = solve_envelope(network, PORTS, [1e6], [(0, 1)])
     assert found.methods == ("frozen",)
     assert "0 %" in found.reasons[0]
 

@@ -11,7 +11,7 @@ from transim.parts.catalogue import Catalogue, load_catalogue, shipped_folder
 from transim.parts.foreign import read_foreign_junction
 from transim.parts.header import read_part
 from transim.parts.nearest import nearest_name
-from transim.parts.part import ROLES
+from transim.parts.part import ROLES, Throw
 
 JUNCTION = """\
 * transim part
@@ -115,13 +115,13 @@ def test_junction_is_read_completely(tmp_path):
     ]
     assert part.body.startswith(".subckt reed")
     assert "transim part" not in part.body
-    assert (part.passes, part.model, part.reserved, part.slots) == (None, None, (), ())
+    assert (part.throws, part.model, part.reserved, part.slots) == ((), None, (), ())
 
 
 def test_path_is_read_completely(tmp_path):
     part = read_part(write(tmp_path, PATH))
-    assert (part.ports, part.through, part.bias) == (("p1", "p2", "p3"), ("p1", "p3"), ("bias",))
-    assert part.passes is False
+    assert (part.ports, part.bias, part.inverted) == (("p1", "p2", "p3"), ("bias",), ())
+    assert part.throws == (Throw("p3", ("p1", "p3"), False, "bias"),)
     assert [slot.name for slot in part.slots] == ["series", "shunt"]
     assert {slot.terminals for slot in part.slots} == {("a", "k")}
 
@@ -137,7 +137,7 @@ def test_driver_is_read_completely(tmp_path):
 
 def test_two_ports_are_the_through_pair_without_saying_so(tmp_path):
     text = PATH.replace("p1 p2 p3", "p1 p3").replace("* through: p1 p3\n", "").replace("X1 m p2", "X1 m p3")
-    assert read_part(write(tmp_path, text)).through == ("p1", "p3")
+    assert read_part(write(tmp_path, text)).throws[0].through == ("p1", "p3")
 
 
 def test_range_admits_its_closed_ends_only(tmp_path):

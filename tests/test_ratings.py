@@ -21,7 +21,7 @@ from transim.report.layout import WIDTH
 from transim.report.ratings import rating_tables
 from transim.report.verdicts import verdict_lines
 from transim.study.run import Outcome
-from transim.study.simulate import CaseRun, Result
+from transim.study.simulate import CaseRun, Result, ThrowRun
 
 DESIGN = """\
 title = "Reed, arm 2"
@@ -192,7 +192,7 @@ def outcome_of(design, reverse=60.0):
             for carrier in design.carrier.frequency
         )
         video = Plot("t", "Transient Analysis", "real", ("time",), ("time",), np.zeros((0, 1)))
-        cases.append(CaseRun(driver, 25.0, results, (), video, {}, 0.1))
+        cases.append(CaseRun(driver, 25.0, results, (), video, (ThrowRun("", {}),), 0.1))
     return Outcome(design, "ngspice 39", tuple(cases))
 
 

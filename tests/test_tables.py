@@ -22,7 +22,7 @@ from transim.report.layout import WIDTH, Column, align, wrap
 from transim.report.tables import limit_text, metric_tables
 from transim.report.verdicts import definition_lines, head_lines, verdict_lines
 from transim.study.run import Outcome
-from transim.study.simulate import CaseRun, Result
+from transim.study.simulate import CaseRun, Result, ThrowRun
 
 DESIGN = """\
 title = "Reed, arm 2"
@@ -67,7 +67,7 @@ def build(tmp_path, drivers, *, limits=True, temperatures=(25.0,), changes=None,
                 result_of(design, driver, temperature, carrier, changes or {}, (faults or {}).get(driver, ()))
                 for carrier in design.carrier.frequency
             ]
-            cases.append(CaseRun(driver, temperature, tuple(results), (), NO_VIDEO, {}, 0.1))
+            cases.append(CaseRun(driver, temperature, tuple(results), (), NO_VIDEO, (ThrowRun("", {}),), 0.1))
     return Outcome(design, "ngspice 39", tuple(cases))
 
 

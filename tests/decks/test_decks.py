@@ -29,7 +29,7 @@ def written(file):
     temperature = design.environment.temperature[0]
     decks = [
         *case_decks(design, driver, temperature),
-        *carrier_decks(design, driver, temperature, design.carrier.frequency[0], design.carrier.level[0]),
+        *carrier_decks(design, driver, temperature, design.carrier.frequency[0], design.carrier.level[0])[0],
     ]
     return {deck.name: deck.text for deck in decks}
 

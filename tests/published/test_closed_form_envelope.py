@@ -196,7 +196,7 @@ def test_series_by_the_command_line(results, capsys):
 
 def level(case, timeline_lead):
     """Return time from the rising edge of the command and |S21|."""
-    (waveform,) = case.envelopes.values()
+    (waveform,) = case.throws[0].envelopes.values()
     return waveform.time - timeline_lead, np.abs(waveform.value)
 
 

@@ -25,7 +25,7 @@ from skrf.circuit import Circuit
 from transim.design.toml import read_design
 from transim.parts.catalogue import load_catalogue
 from transim.study.case import Case
-from transim.study.settled import run_static_sweep
+from transim.study.settled import run_static_sweeps
 
 Z0 = 50.0
 TEMPERATURE = 25.0
@@ -79,7 +79,7 @@ def sweep_of(engine, tmp_path, path, settings, junction, current=CURRENT):
     file = tmp_path / "some.toml"
     file.write_text(DESIGN.format(path=path, current=current, **lines))
     design = read_design(file)
-    return run_static_sweep(Case(design, design.drivers[0], TEMPERATURE, engine))
+    return run_static_sweeps(Case(design, design.drivers[0], TEMPERATURE, engine))[0]
 
 
 def full_settings(path):

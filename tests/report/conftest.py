@@ -15,7 +15,7 @@ from transim.engine.rawfile import Plot
 from transim.measure import Record, Waveform, extract, judge
 from transim.report.page import page_text
 from transim.study.run import Outcome
-from transim.study.simulate import CaseRun, Result
+from transim.study.simulate import CaseRun, Result, ThrowRun
 
 DESIGN = """\
 title = TITLE
@@ -115,4 +115,4 @@ def _case(design, driver, tau, points):
     figures = extract(record)
     result = Result(driver.name, 100e6, 25.0, "envelope", figures, judge(figures, design.limits), "frozen: invented")
     deck = Deck("video", f"* deck of {driver.name}\n.end\n", writes_raw=False)
-    return CaseRun(driver.name, 25.0, (result,), (deck,), plot, {("envelope", 100e6): wave}, 0.1)
+    return CaseRun(driver.name, 25.0, (result,), (deck,), plot, (ThrowRun("", {("envelope", 100e6): wave}),), 0.1)

@@ -55,7 +55,7 @@ def bench(tmp_path_factory):
     (folder / "guess.toml").write_text(DESIGN.format(lifetime="800 ns", width="40 um"))
     design = read_design(folder / "true.toml")
     case = simulate(design, design.drivers[0], 25.0, find_engine(), ("carrier",))
-    return folder, case.envelopes["carrier", 100e6], case.video
+    return folder, case.throws[0].envelopes["carrier", 100e6], case.video
 
 
 def record(bench, name, detector, snr, *, stop=None, seed=3):

@@ -18,7 +18,7 @@ import skrf
 from transim.cli import main
 from transim.design.toml import read_design
 from transim.study.case import Case
-from transim.study.settled import run_bias_sweeps, run_static_sweep
+from transim.study.settled import run_bias_sweeps, run_static_sweeps
 
 VT = scipy.constants.k * 298.15 / scipy.constants.e
 
@@ -68,7 +68,7 @@ def test_transistor_of_common_practice(engine, tmp_path):
     # common practice: a small transistor, 5 V control: about 20 dB at 100 MHz, 50 dB or more at 10 MHz, almost
     # nothing at 1 GHz, and under 5 dB of loss throughout
     design = read_design(written(tmp_path, TRANSISTOR))
-    sweep = run_static_sweep(Case(design, design.drivers[0], 25.0, engine))
+    sweep = run_static_sweeps(Case(design, design.drivers[0], 25.0, engine))[0]
     frequency = sweep.frequency
     assert (frequency[0], frequency[20], frequency[-1]) == tuple(pytest.approx(f) for f in (1e7, 1e8, 1e9))
     assert sweep.isolation[0] >= 50.0
@@ -81,7 +81,7 @@ def test_sweep_holds_what_the_static_deck_finds_at_a_carrier(engine, tmp_path):
     # the same states by an ngspice deck of its own; 10 MHz to 1 GHz has 100 MHz among its 41 points
     design = read_design(written(tmp_path, TRANSISTOR))
     case = Case(design, design.drivers[1], 25.0, engine)
-    sweep, (_, states) = run_static_sweep(case), case.static()
+    sweep, (_, states) = run_static_sweeps(case)[0], case.static()
     assert np.abs(sweep.on[20] - states[1, 1]).max() < 1e-6
     assert np.abs(sweep.off[20] - states[0, 1]).max() < 1e-6
     assert sweep.return_loss("on")[20, 1] == pytest.approx(-20.0 * math.log10(abs(states[1, 1, 1, 1])), abs=1e-4)
@@ -90,7 +90,7 @@ def test_sweep_holds_what_the_static_deck_finds_at_a_carrier(engine, tmp_path):
 def test_both_ends_of_a_range_that_is_no_whole_number_of_steps(engine, tmp_path):
     rest = '[static]\nfrom = "20 MHz"\nto = "150 MHz"\npoints = 5\n'
     design = read_design(written(tmp_path, TRANSISTOR, rest))
-    sweep = run_static_sweep(Case(design, design.drivers[0], 25.0, engine))
+    sweep = run_static_sweeps(Case(design, design.drivers[0], 25.0, engine))[0]
     assert (sweep.frequency[0], sweep.frequency[-1]) == (pytest.approx(2e7), pytest.approx(1.5e8))
     assert np.diff(np.log(sweep.frequency)) == pytest.approx(np.log(7.5) / 4.0, rel=1e-6)
 

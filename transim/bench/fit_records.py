@@ -80,8 +80,9 @@ def compare_records(
             changed = changed_design(own, {f"junction.{junction}.{name}": value for name, value in values.items()})
             temperature = own.environment.temperature[0]
             case = simulate(changed, one.driver, temperature, engine, ("envelope",), checks="start")
-            timing = timeline_of(changed).timing(bool(own.switch.path.passes))
-            envelope = case.envelopes["envelope", carrier].magnitude()
+            timing = timeline_of(changed).timing(one.measured.passes_high)
+            place = _throw_place(own, one.measured)
+            envelope = case.throws[place].envelopes["envelope", carrier].magnitude()
             results.append(_difference(one.measured, envelope, timing))
         return results
 
@@ -100,14 +101,7 @@ def _prepare(design: Design, one: Comparison) -> tuple[Design, float]:
             "the carrier of this record is not known and the design has several; measure it with --carrier",
             file=measured.file,
         )
-    passes = bool(design.switch.path.passes)
-    if passes != measured.passes_high:
-        words = ("high", "low") if passes else ("low", "high")
-        raise RecordError(
-            f"the path {design.switch.path.name} passes RF while the command is {words[0]}, in the record it passes "
-            f"while the command is {words[1]}",
-            file=measured.file,
-        )
+    _throw_place(design, measured)
     control = design.control
     timing = measured.timing
     first, second = sorted((timing.on_edge, timing.off_edge))
@@ -119,6 +113,20 @@ def _prepare(design: Design, one: Comparison) -> tuple[Design, float]:
         update={"control": control, "carrier": design.carrier.model_copy(update={"frequency": (carrier,)})}
     )
     return own, carrier
+
+
+def _throw_place(design: Design, measured: Measured) -> int:
+    """Return the place of the first throw that passes RF in the same state of the command as the record."""
+    path = design.switch.path
+    found = [place for place, throw in enumerate(path.throws) if throw.passes_high == measured.passes_high]
+    if not found:
+        words = ("low", "high") if measured.passes_high else ("high", "low")
+        raise RecordError(
+            f"the path {path.name} passes RF while the command is {words[0]}, in the record it passes "
+            f"while the command is {words[1]}",
+            file=measured.file,
+        )
+    return found[0]
 
 
 def _difference(measured: Measured, envelope: Waveform, timing: Timing) -> tuple[Array, Array]:

@@ -14,10 +14,13 @@ from PySpice.Spice.Netlist import Circuit as SpiceCircuit
 from transim.design.model import Design, Driver, Junction
 from transim.errors import TopologyError
 from transim.parts.part import Part, Slot
+from transim.parts.scope import calls_of
 from transim.quantities import deck_number
 
-__all__ = ["JunctionPlace", "JunctionProbe", "Netlist", "RfPort", "assemble"]
+__all__ = ["Feed", "JunctionPlace", "JunctionProbe", "Netlist", "RfPort", "ThrowPlace", "assemble"]
 
+#: Node of the inverted command.
+_INVERSE = "ctl_inverse"
 _VECTOR = re.compile(r"(?P<kind>[vi])\((?P<inside>[^()]*)\)|@(?P<device>[^\[]+)\[(?P<parameter>[^\]]+)\]")
 
 
@@ -28,6 +31,53 @@ class RfPort:
     node: str
     source: str
     impedance: float
+
+
+@dataclass(frozen=True)
+class Feed:
+    """A bias entry of the path and what feeds it.
+
+    Attributes
+    ----------
+    entry : str
+        Node of the bias entry.
+    node : str
+        Node of the driver's output.
+    ammeter : str
+        Zero-volt source between the two; its current flows into the path.
+    inverted : bool
+        Whether its driver gets the inverted command.
+    """
+
+    entry: str
+    node: str
+    ammeter: str
+    inverted: bool
+
+
+@dataclass(frozen=True)
+class ThrowPlace:
+    """A way of the RF through the path, in the flattened circuit.
+
+    Attributes
+    ----------
+    name : str
+        Name in results; empty where the path has a single way.
+    through : tuple of int
+        Places of the two ports whose transmission is judged (from, to).
+    passes_high : bool
+        True if RF passes while the command is high.
+    forward : bool
+        True if RF passes while its driver pushes forward current.
+    feed : Feed
+        The bias entry whose driver opens it.
+    """
+
+    name: str
+    through: tuple[int, int]
+    passes_high: bool
+    forward: bool
+    feed: Feed
 
 
 @dataclass(frozen=True)
@@ -81,8 +131,10 @@ class Netlist:
         SPICE lines: subcircuits and instances, without control and RF sources.
     ports : tuple of RfPort
         In the order of the path.
-    through : tuple of int
-        Places of the two ports whose transmission is judged (from, to).
+    feeds : tuple of Feed
+        Bias entries, in the order of the path.
+    throws : tuple of ThrowPlace
+        Ways of the RF, in the order of the path.
     junctions : tuple of JunctionPlace
         Junctions of the path, in its order.
     probes : tuple of JunctionProbe
@@ -93,7 +145,8 @@ class Netlist:
 
     text: str
     ports: tuple[RfPort, ...]
-    through: tuple[int, int]
+    feeds: tuple[Feed, ...]
+    throws: tuple[ThrowPlace, ...]
     junctions: tuple[JunctionPlace, ...]
     probes: tuple[JunctionProbe, ...]
     supplies: tuple[str, ...]
@@ -108,7 +161,7 @@ class Netlist:
 
 
 def assemble(design: Design, driver: Driver | None) -> Netlist:
-    """Put path, junctions and one driver together.
+    """Put path, junctions and one driver together; each bias entry has a driver like it.
 
     Parameters
     ----------
@@ -124,21 +177,24 @@ def assemble(design: Design, driver: Driver | None) -> Netlist:
     Raises
     ------
     TopologyError
-        If a path has no bias entry, or more than the one that a driver feeds.
+        If there is no driver and the path has several bias entries, or the driver has several outputs.
     """
     path = design.switch.path
-    if len(path.bias) != 1:
-        raise TopologyError(
-            f"path {path.name} has {len(path.bias)} bias entries, and a driver feeds one", key="switch.path"
-        )
     circuit = SpiceCircuit("transim")
     circuit.raw_spice = _subcircuits(design, driver)
+    feeds = _feeds(path)
     if driver is None:
+        if len(feeds) != 1:
+            raise TopologyError(
+                f"path {path.name} has {len(feeds)} bias entries, and a holding current is stepped into one alone",
+                key="static.bias_sweep",
+            )
         circuit.I("holding", circuit.gnd, "drive", "0")
     else:
-        _feed(circuit, design, driver)
-    # an ammeter: its current is what the driver delivers
-    circuit.V("drive", "drive", path.bias[0], "0")
+        _drive(circuit, design, driver, feeds)
+    for place, feed in enumerate(feeds):
+        # an ammeter: its current is what the driver delivers
+        circuit.V(_numbered("drive", place), feed.node, path.bias[place], "0")
     circuit.X("path", path.name, *path.terminals, **_texts(design.switch.values))
     ports = []
     for port in path.ports:
@@ -147,22 +203,67 @@ def assemble(design: Design, driver: Driver | None) -> Netlist:
         ports.append(RfPort(port.lower(), f"vport_{port}".lower(), design.carrier.impedance))
     lines = str(circuit).splitlines()
     body = "\n".join(line for line in lines if line and not line.startswith(".title"))
-    through = (path.ports.index(path.through[0]), path.ports.index(path.through[1]))
+    throws = _throws(path, feeds)
     supplies = () if driver is None else tuple(f"vsupply_{supply.name}".lower() for supply in driver.part.supplies)
     places = _junctions(design)
     probes = tuple(probe for place in places for probe in _probes(design, place))
-    return Netlist(body + "\n", tuple(ports), through, places, probes, supplies)
+    return Netlist(body + "\n", tuple(ports), feeds, throws, places, probes, supplies)
 
 
-def _feed(circuit: SpiceCircuit, design: Design, driver: Driver) -> None:
-    """Add a driver with its supplies; its output is the node ``drive``."""
+def _numbered(name: str, place: int) -> str:
+    """Return a name for the driver of each bias entry: the first has none of the numbers."""
+    return name if place == 0 else f"{name}{place + 1}"
+
+
+def _feeds(path: Part) -> tuple[Feed, ...]:
+    return tuple(
+        Feed(entry.lower(), _numbered("drive", k), _numbered("vdrive", k), entry in path.inverted)
+        for k, entry in enumerate(path.bias)
+    )
+
+
+def _throws(path: Part, feeds: tuple[Feed, ...]) -> tuple[ThrowPlace, ...]:
+    several = len(path.throws) > 1
+    return tuple(
+        ThrowPlace(
+            name=throw.name if several else "",
+            through=(path.ports.index(throw.through[0]), path.ports.index(throw.through[1])),
+            passes_high=throw.passes_high,
+            forward=path.forward(throw),
+            feed=feeds[path.bias.index(throw.bias)],
+        )
+        for throw in path.throws
+    )
+
+
+def _drive(circuit: SpiceCircuit, design: Design, driver: Driver, feeds: tuple[Feed, ...]) -> None:
+    """Add the supplies, and a driver for each bias entry."""
+    shared = {supply.name for supply in driver.part.supplies} & set(design.switch.path.terminals)
+    if shared:
+        raise TopologyError(
+            f"{min(shared)} is a node of the path {design.switch.path.name} and a supply of the driver {driver.name}; "
+            "rename one of the two",
+            key=f"driver.{driver.name}.part",
+        )
     for supply in driver.part.supplies:
         circuit.V(f"supply_{supply.name}", supply.name, circuit.gnd, deck_number(driver.values[supply.name]))
     arguments = {p.name: driver.values[p.name] for p in driver.part.parameters}
     command = {"control_low": design.control.low, "control_high": design.control.high}
     arguments |= {name: command[name] for name in driver.part.reserved}
-    wires = ["drive" if name == "out" else name for name in driver.part.terminals]
-    circuit.X("driver", driver.part.name, *wires, **_texts(arguments))
+    if driver.part.outputs != ("out",):
+        raise TopologyError(
+            f"driver part {driver.part.name} has the outputs {' '.join(driver.part.outputs)}; one named out feeds a "
+            "bias entry",
+            key=f"driver.{driver.name}.part",
+        )
+    if any(feed.inverted for feed in feeds):
+        # the command's mirror image: low for high, with the same edges
+        circuit.V("mirror", "mirror", circuit.gnd, deck_number(design.control.low + design.control.high))
+        circuit.VCVS("inverse", _INVERSE, "mirror", "ctl", circuit.gnd, "-1")
+    for place, feed in enumerate(feeds):
+        own = {"out": feed.node, "ctl": _INVERSE if feed.inverted else "ctl"}
+        wires = [own.get(name, name) for name in driver.part.terminals]
+        circuit.X(_numbered("driver", place), driver.part.name, *wires, **_texts(arguments))
 
 
 def _texts(values: Mapping[str, float]) -> dict[str, str]:
@@ -226,17 +327,13 @@ def _junctions(design: Design) -> tuple[JunctionPlace, ...]:
     path = design.switch.path
     slots = {slot.name.lower(): slot for slot in path.slots}
     found = []
-    for line in path.body.splitlines():
-        words = line.split()
-        if not words or words[0][0].lower() != "x" or words[-1].lower() not in slots:
-            continue
-        slot = slots[words[-1].lower()]
-        instance = words[0].lower()
+    for call in calls_of(path.body, path.file, slots):
+        slot = slots[call.name]
         nodes = {
-            name.lower(): _path_node(path, node) for name, node in zip(slot.terminals, words[1:-1], strict=True)
+            name.lower(): _path_node(path, node) for name, node in zip(slot.terminals, call.nodes, strict=True)
         }
-        ammeters = {name.lower(): f"v.xpath.{instance}.v{name.lower()}" for name in slot.terminals[:-1]}
-        found.append(JunctionPlace(instance, design.switch.junctions[slot.name].name, nodes, ammeters))
+        ammeters = {name.lower(): f"v.xpath.{call.instance}.v{name.lower()}" for name in slot.terminals[:-1]}
+        found.append(JunctionPlace(call.instance, design.switch.junctions[slot.name].name, nodes, ammeters))
     return tuple(found)
 
 

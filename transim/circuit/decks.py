@@ -17,6 +17,7 @@ __all__ = [
     "carrier_deck",
     "control_block", "deck_head",
     "option_cards",
+    "point_deck",
     "quiet_ports",
     "static_deck",
     "video_deck",
@@ -168,14 +169,7 @@ def static_deck(
         "S of ports i, j from the plots: 2 v(p_i) - (1 if i = j), "
         f"all ports at {format_quantity(netlist.ports[0].impedance, 'ohm')}.",
     ]
-    nodes = " ".join(f"v({port.node})" for port in netlist.ports)
-    steps = []
-    for port in netlist.ports:
-        steps.append(f"  alter {port.source} acmag = 1")
-        for frequency in frequencies:
-            number = deck_number(frequency)
-            steps += [f"  ac lin 1 {number} {number}", f"  write static.raw {nodes}"]
-        steps.append(f"  alter {port.source} acmag = 0")
+    steps = _excitations(netlist, netlist.ports, frequencies, "static.raw")
     loop = f"foreach level {deck_number(control.low)} {deck_number(control.high)}"
     body = ["  alter vcontrol dc = $level", "  op", "  write static.raw all", *steps]
     script = "\n".join(control_block(["listing expand", loop, *body, "end"]))
@@ -220,7 +214,6 @@ def video_deck(
     -------
     Deck
     """
-    step = timeline.on_for / numerics.steps
     what = ["Video: control pulse on, RF sources off; transient. Leakage is the voltage at the RF ports."]
     text = (
         deck_head("video", origin, what, False)
@@ -228,10 +221,100 @@ def video_deck(
         + _command(control, timeline)
         + quiet_ports(netlist.ports)
         + option_cards(numerics, origin.temperature, "gear")
-        + f".save all {' '.join(dict.fromkeys((*netlist.saved, *saved)))}".rstrip()
-        + f"\n.tran {deck_number(step)} {deck_number(timeline.stop)} 0 {deck_number(step)}\n.end\n"
+        + _transient(netlist, timeline, numerics, saved)
+        + ".end\n"
     )
     return Deck("video", text, writes_raw=False, stop=timeline.stop)
+
+
+def _transient(netlist: Netlist, timeline: Timeline, numerics: Numerics, saved: Sequence[str]) -> str:
+    """Return the cards of the control pulse: what is saved, steps and stop."""
+    step = timeline.on_for / numerics.steps
+    return (
+        f".save all {' '.join(dict.fromkeys((*netlist.saved, *saved)))}".rstrip()
+        + f"\n.tran {deck_number(step)} {deck_number(timeline.stop)} 0 {deck_number(step)}\n"
+    )
+
+
+def point_deck(
+    netlist: Netlist,
+    control: Control,
+    timeline: Timeline,
+    frequencies: Sequence[float],
+    numerics: Numerics,
+    origin: Origin,
+    saved: Sequence[str],
+    entered: Sequence[int],
+) -> Deck:
+    """Write the deck of a study's point: what the static and the video deck find, in one process.
+
+    Its raw file holds the transient of the control pulse, then, for the command low and then high, one AC plot for
+    each port that RF enters and each frequency.
+
+    Parameters
+    ----------
+    netlist : Netlist
+        The circuit.
+    control : Control
+        Levels of the command.
+    timeline : Timeline
+        Times of the command.
+    frequencies : sequence of float
+        Carriers [Hz].
+    numerics : Numerics
+        Tolerance and step limit.
+    origin : Origin
+        For the head.
+    saved : sequence of str
+        Device vectors to save beside all node voltages and branch currents.
+    entered : sequence of int
+        Places of the ports that RF enters.
+
+    Returns
+    -------
+    Deck
+    """
+    what = [
+        "Point of a study: control pulse on, RF sources off; transient. Then both control states: AC with 1 V behind",
+        "the impedance of each port that RF enters. S of ports i, j: 2 v(p_i) - (1 if i = j), "
+        f"all ports at {format_quantity(netlist.ports[0].impedance, 'ohm')}.",
+    ]
+    # the transient goes first, so that it starts from what it would start from in a deck of its own
+    script = [
+        "set filetype=binary",
+        "listing expand",
+        "run point.raw",
+        "set appendwrite",
+        f"foreach level {deck_number(control.low)} {deck_number(control.high)}",
+        "  alter vcontrol dc = $level",
+        *_excitations(netlist, [netlist.ports[place] for place in entered], frequencies, "point.raw"),
+        "end",
+        "quit 0",
+    ]
+    text = (
+        deck_head("point", origin, what, True)
+        + netlist.text
+        + _command(control, timeline)
+        + quiet_ports(netlist.ports)
+        + option_cards(numerics, origin.temperature, "gear")
+        + _transient(netlist, timeline, numerics, saved)
+        + "\n".join([".control", *script, ".endc", ".end"])
+        + "\n"
+    )
+    return Deck("point", text, writes_raw=True, stop=timeline.stop)
+
+
+def _excitations(netlist: Netlist, entered: Sequence[RfPort], frequencies: Sequence[float], raw: str) -> list[str]:
+    """Return the commands of the AC analyses of one state: each port with 1 V behind its impedance in turn."""
+    nodes = " ".join(f"v({port.node})" for port in netlist.ports)
+    steps = []
+    for port in entered:
+        steps.append(f"  alter {port.source} acmag = 1")
+        for frequency in frequencies:
+            number = deck_number(frequency)
+            steps += [f"  ac lin 1 {number} {number}", f"  write {raw} {nodes}"]
+        steps.append(f"  alter {port.source} acmag = 0")
+    return steps
 
 
 @dataclass(frozen=True)
@@ -246,9 +329,11 @@ class Tone:
 
 def _carrier_vectors(netlist: Netlist) -> list[str]:
     """Return what a carrier-resolved run saves: ports, bias, driver, and what tells of each junction."""
-    nodes = {port.node: None for port in netlist.ports} | {"ctl": None, "bias": None}
+    nodes = {port.node: None for port in netlist.ports} | {"ctl": None}
+    nodes |= {feed.entry: None for feed in netlist.feeds}
     nodes |= {node: None for place in netlist.junctions for node in place.nodes.values()}
-    currents = ["vdrive", *(name for place in netlist.junctions for name in place.ammeters.values())]
+    currents = [feed.ammeter for feed in netlist.feeds]
+    currents += [name for place in netlist.junctions for name in place.ammeters.values()]
     voltages = [f"v({node})" for node in nodes if node != "0"]
     return [*voltages, *(f"i({name})" for name in currents), *netlist.saved]
 

@@ -13,7 +13,10 @@ from dataclasses import dataclass
 from transim.circuit.expression import Expression, ExpressionError, parse_expression, spice_number
 from transim.errors import LinearisationError, NetlistError
 
-__all__ = ["Behavioural", "Circuit", "Coupling", "Device", "Element", "Line", "Model", "read_listing"]
+__all__ = [
+    "Behavioural", "Circuit", "Coupling", "Device", "Element", "Line", "Model", "Opaque", "opaque_device",
+    "read_listing",
+]
 
 _LISTED = re.compile(r"^\s*(\d+) : (.*)$")
 _OPTION = re.compile(r"\s(?:reciproctc|reciprocm|tc1|tc2|m|temp|dtemp)\s*=", re.IGNORECASE)
@@ -33,6 +36,11 @@ _REFUSED = {
     "a": "code model",
     "n": "compiled model",
 }
+
+#: Terminals of elements whose line does not tell by a model's name where they end.
+_TERMINALS = {"r": 2, "c": 2, "l": 2, "b": 2, "e": 2, "g": 2, "f": 2, "h": 2, "v": 2, "i": 2, "w": 2, "t": 4, "k": 0}
+#: Elements whose current depends on the voltages at their own terminals only.
+_ALONE = "rcmjzsdq"
 
 
 @dataclass(frozen=True)
@@ -106,6 +114,29 @@ class Behavioural:
 
 
 @dataclass(frozen=True)
+class Opaque:
+    """An element that has no small-signal form here; it still stands in decks.
+
+    Attributes
+    ----------
+    name : str
+        Flattened name.
+    nodes : tuple of str
+        Its terminals, in the order of its line.
+    reason : LinearisationError
+        Why it has no form.
+    rest : str or None
+        What follows the nodes in its line, where that depends on no other element: then its line with other nodes
+        is the same element elsewhere. None otherwise.
+    """
+
+    name: str
+    nodes: tuple[str, ...]
+    reason: LinearisationError
+    rest: str | None
+
+
+@dataclass(frozen=True)
 class Circuit:
     """All elements of a flattened netlist.
 
@@ -113,9 +144,8 @@ class Circuit:
     ----------
     elements, couplings, devices, behaviourals, delays : tuple
         In the order of the listing; `delays` are the lines.
-    refused : tuple of LinearisationError
-        Elements that have no small-signal form here, each with its reason; not raised yet, so that decks
-        of such circuits still run.
+    opaque : tuple of Opaque
+        Elements that have no small-signal form here; nothing is raised, so that decks of such circuits still run.
     lines : tuple of str
         The listing without line numbers.
     """
@@ -124,16 +154,21 @@ class Circuit:
     couplings: tuple[Coupling, ...]
     devices: tuple[Device, ...]
     behaviourals: tuple[Behavioural, ...]
-    refused: tuple[LinearisationError, ...]
+    opaque: tuple[Opaque, ...]
     lines: tuple[str, ...]
     delays: tuple[Line, ...] = ()
+
+    @property
+    def refused(self) -> tuple[LinearisationError, ...]:
+        """Why each of the elements without a small-signal form has none."""
+        return tuple(element.reason for element in self.opaque)
 
     @property
     def nodes(self) -> tuple[str, ...]:
         """Every node except ground, in order of appearance."""
         seen: dict[str, None] = {}
-        parts: tuple[Element | Device | Behavioural | Line, ...]
-        parts = (*self.elements, *self.devices, *self.behaviourals, *self.delays)
+        parts: tuple[Element | Device | Behavioural | Line | Opaque, ...]
+        parts = (*self.elements, *self.devices, *self.behaviourals, *self.delays, *self.opaque)
         for part in parts:
             for node in part.nodes:
                 seen.setdefault(node)
@@ -172,17 +207,18 @@ def read_listing(log: str) -> Circuit:
     devices: list[Device] = []
     behaviourals: list[Behavioural] = []
     delays: list[Line] = []
-    refused: list[LinearisationError] = []
+    opaque: list[Opaque] = []
     for line in lines:
         if not line[:1].isalpha():
             continue
         try:
             part = _read_element(line, models)
         except LinearisationError as error:
-            refused.append(error)
+            opaque.append(_opaque(line, models, error))
             continue
         except (ValueError, IndexError, KeyError) as error:
-            refused.append(LinearisationError(line.split()[0], f"cannot read its line {line!r} ({error})"))
+            reason = LinearisationError(line.split()[0].upper(), f"cannot read its line {line!r} ({error})")
+            opaque.append(_opaque(line, models, reason))
             continue
         for kind, home in (
             (Element, elements),
@@ -198,10 +234,38 @@ def read_listing(log: str) -> Circuit:
         tuple(couplings),
         tuple(devices),
         tuple(behaviourals),
-        tuple(refused),
+        tuple(opaque),
         lines,
         tuple(delays),
     )
+
+
+def opaque_device(device: Device, line: str, reason: LinearisationError) -> Opaque:
+    """Return a diode or transistor as an element without a form.
+
+    Parameters
+    ----------
+    device : Device
+        As it was read.
+    line : str
+        Its line of the listing.
+    reason : LinearisationError
+        Why its law has no form.
+    """
+    return Opaque(device.name, device.nodes, reason, " ".join(line.split()[1 + len(device.nodes) :]))
+
+
+def _opaque(line: str, models: Mapping[str, Model], reason: LinearisationError) -> Opaque:
+    """Find the terminals of an element that has no form."""
+    words = line.split()
+    letter = words[0][0].lower()
+    if letter in _TERMINALS:
+        count = _TERMINALS[letter]
+    else:
+        named = (k for k in range(3, len(words)) if words[k].lower() in models)
+        count = next(named, len(words)) - 1
+    nodes = tuple(_node(word) for word in words[1 : 1 + count])
+    return Opaque(words[0].lower(), nodes, reason, " ".join(words[1 + count :]) if letter in _ALONE else None)
 
 
 def _read_model(line: str) -> Model | None:

@@ -4,12 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from transim.circuit.assemble import Netlist
+from transim.circuit.assemble import Netlist, ThrowPlace
 from transim.circuit.decks import Deck, Origin, control_block, deck_head, option_cards, quiet_ports
 from transim.design.model import Control, Numerics, Static
 from transim.quantities import deck_number, format_quantity
 
-__all__ = ["bias_deck", "bias_vectors", "sweep_deck"]
+__all__ = ["bias_deck", "bias_vectors", "shared_throws", "sweep_deck"]
 
 
 def sweep_deck(netlist: Netlist, control: Control, static: Static, numerics: Numerics, origin: Origin) -> Deck:
@@ -73,6 +73,22 @@ def bias_vectors(netlist: Netlist) -> tuple[str, ...]:
     return tuple(dict.fromkeys(("v(drive)", *charges)))
 
 
+def shared_throws(netlist: Netlist) -> tuple[ThrowPlace, ...]:
+    """Return the throws that a bias deck shows.
+
+    Parameters
+    ----------
+    netlist : Netlist
+        The circuit.
+
+    Returns
+    -------
+    tuple of ThrowPlace
+        Those that the RF enters at the same port as the first one.
+    """
+    return tuple(throw for throw in netlist.throws if throw.through[0] == netlist.throws[0].through[0])
+
+
 def bias_deck(netlist: Netlist, static: Static, carriers: Sequence[float], numerics: Numerics, origin: Origin) -> Deck:
     """Write the deck that steps the holding current.
 
@@ -97,15 +113,18 @@ def bias_deck(netlist: Netlist, static: Static, carriers: Sequence[float], numer
     Deck
     """
     name = f"bias_{format_quantity(origin.temperature, 'degC', 12).replace(' ', '')}"
-    first, second = (netlist.ports[place] for place in netlist.through)
+    throws = shared_throws(netlist)
+    first = netlist.ports[throws[0].through[0]]
+    far = [netlist.ports[throw.through[1]].node for throw in throws]
     what = [
         "Bias: a current source in place of the driver, stepped; operating point, then AC at every carrier",
-        f"with 1 V behind the impedance of {first.node}. S from {first.node} to {second.node}: 2 v({second.node}).",
+        f"with 1 V behind the impedance of {first.node}. S from {first.node}: "
+        f"{', '.join(f'2 v({node}) to {node}' for node in far)}.",
     ]
     steps = []
     for carrier in carriers:
         number = deck_number(carrier)
-        steps += [f"  ac lin 1 {number} {number}", f"  write {name}.raw v({second.node})"]
+        steps += [f"  ac lin 1 {number} {number}", f"  write {name}.raw {' '.join(f'v({node})' for node in far)}"]
     loop = [
         f"alter {first.source} acmag = 1",
         f"foreach holding {' '.join(map(deck_number, static.bias_sweep))}",

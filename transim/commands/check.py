@@ -12,11 +12,13 @@ from transim.commands.console import Console
 from transim.design.model import Design, Driver, Junction
 from transim.design.toml import read_design
 from transim.measure.metrics import METRICS
+from transim.parts.catalogue import shipped_folder
 from transim.parts.part import Part
 from transim.quantities import format_quantity
 from transim.report.document import FORMAT, limit_document
 from transim.report.layout import Column, align, wrap
 from transim.report.tables import limit_text
+from transim.report.throws import throw_sentences
 from transim.report.verdicts import definition_lines
 from transim.study.decks import carrier_timeline
 
@@ -91,14 +93,10 @@ def _command(design: Design) -> Iterator[str]:
 def _path(design: Design) -> Iterator[str]:
     switch = design.switch
     path = switch.path
-    state = "forward biased" if path.passes else "not forward biased"
     yield from wrap(f"path {path.name}: {path.summary}")
-    yield from wrap(
-        f"RF ports {', '.join(path.ports)}; judged from {' to '.join(path.through)}; RF passes while the"
-        f" junctions are {state}; a driver feeds its bias entry",
-        "  ",
-    )
+    yield from wrap(f"RF ports {', '.join(path.ports)}; {'; '.join(throw_sentences(path))}", "  ")
     yield from _settings(path, switch.values)
+    yield from _notes(path)
 
 
 def _junctions(design: Design) -> Iterator[str]:
@@ -125,10 +123,18 @@ def _part(component: Junction | Driver) -> Iterator[str]:
         silenced = component.part.model.parameters
         yield from wrap(f"model card of its own: {component.model}", "  ", "    ")
     yield from _settings(component.part, component.values, silenced)
+    yield from _notes(component.part)
     ratings = component.ratings
     texts = [f"{key} {format_quantity(value, ratings.unit(key))}" for key, value in ratings.stated.items()]
     if texts:
         yield from wrap(f"ratings: at most {', '.join(texts)}", "  ", "    ")
+
+
+def _notes(part: Part) -> Iterator[str]:
+    """Say what a file of the user's own has been taken for; shipped parts have their notes in `transim parts`."""
+    if not part.file.is_relative_to(shipped_folder()):
+        for note in part.notes:
+            yield from wrap(f"note: {note}", "  ", "    ")
 
 
 def _settings(part: Part, values: Mapping[str, float], silenced: tuple[str, ...] = ()) -> list[str]:

@@ -13,6 +13,7 @@ from transim.parts.part import ROLES, Parameter, Part
 from transim.quantities import format_quantity
 from transim.report.document import FORMAT, part_document
 from transim.report.layout import Column, align, wrap
+from transim.report.throws import throw_sentences
 
 __all__ = ["show_parts"]
 
@@ -76,8 +77,9 @@ def _describe(part: Part) -> Iterator[str]:
     yield f"  file: {part.file}"
     yield f"  terminals: {' '.join(part.terminals)}"
     if part.role == "path":
-        yield f"  RF ports: {' '.join(part.ports)}; judged from {' to '.join(part.through)}"
-        yield f"  RF passes while the junctions are {'forward biased' if part.passes else 'not forward biased'}"
+        yield f"  RF ports: {' '.join(part.ports)}"
+        for sentence in throw_sentences(part):
+            yield from wrap(sentence, "  ")
     for slot in part.slots:
         yield from wrap(f"slot {slot.name} ({' '.join(slot.terminals)}): {slot.meaning}", "  ")
     if part.model is not None:

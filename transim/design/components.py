@@ -10,6 +10,7 @@ from transim.design.faults import Faults
 from transim.design.fields import Line, Quantity, shown
 from transim.design.locate import KeyPath
 from transim.design.model import Driver, Junction, Switch
+from transim.design.own import names_plain_file, read_driver_circuit, read_path_circuit
 from transim.design.ratings import read_driver_ratings, read_junction_ratings
 from transim.errors import DesignError, NetlistError, TopologyError
 from transim.parts.cards import read_model_cards
@@ -64,6 +65,9 @@ class Components:
         table = None if raw_switch is None else self._faults.table(("switch",), raw_switch)
         if table is None:
             return None
+        if names_plain_file(self._folder, table, "path"):
+            self._refuse_unused(tables, set())
+            return read_path_circuit(self._faults, self._folder, table)
         path = self._part("path", ("switch", "path"), table)
         if path is None:
             used = {value for value in table.values() if isinstance(value, str)}
@@ -101,6 +105,10 @@ class Components:
         drivers = []
         for name, table in tables.items():
             path = ("driver", name)
+            if names_plain_file(self._folder, table, "part"):
+                own = read_driver_circuit(self._faults, self._folder, name, table)
+                drivers += [] if own is None else [own]
+                continue
             part = self._part("driver", (*path, "part"), table)
             if part is not None:
                 values = self._values(part, path, table, {"part", "model", "ratings"})

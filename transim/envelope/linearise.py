@@ -3,18 +3,20 @@
 from __future__ import annotations
 
 from collections.abc import Collection, Mapping
+from types import MappingProxyType
 
 import numpy as np
 
-from transim.circuit.elements import Behavioural, Circuit, Coupling, Device, Element, Line
+from transim.circuit.elements import Behavioural, Circuit, Coupling, Device, Element, Line, Opaque, opaque_device
+from transim.envelope.admittance import Admittance
 from transim.envelope.bias import Bias
 from transim.envelope.diode import DiodeLaw
-from transim.envelope.junction import Array
+from transim.envelope.junction import GMIN, Array
 from transim.envelope.network import Delay, InnerJunction, Network
 from transim.envelope.transistor import TransistorLaw
 from transim.errors import LinearisationError, RawFileError
 
-__all__ = ["linearise", "saved_vectors"]
+__all__ = ["linearise", "opaque_elements", "saved_vectors", "supply_nodes"]
 
 #: What ngspice has to save of each device, beside all node voltages and branch currents.
 _DEVICE_VECTORS = {"d": ("vd",), "q": ("vbe", "vbc", "ic")}
@@ -101,7 +103,33 @@ class _Stamps:
         )
 
 
-def linearise(circuit: Circuit, bias: Bias, temperature: float, ports: Collection[str]) -> Network:
+def opaque_elements(circuit: Circuit, temperature: float) -> tuple[Opaque, ...]:
+    """Return what has no small-signal form here: elements of other kinds, and devices with parameters that have none.
+
+    Parameters
+    ----------
+    circuit : Circuit
+        Flattened elements.
+    temperature : float
+        Circuit temperature [degC].
+    """
+    found = list(circuit.opaque)
+    lines = {line.split()[0].lower(): line for line in circuit.lines if line[:1].isalpha()}
+    for device in circuit.devices:
+        try:
+            (DiodeLaw if device.name[0] == "d" else TransistorLaw)(device, temperature)
+        except LinearisationError as reason:
+            found.append(opaque_device(device, lines[device.name], reason))
+    return tuple(found)
+
+
+def linearise(
+    circuit: Circuit,
+    bias: Bias,
+    temperature: float,
+    ports: Collection[str],
+    admittances: Mapping[str, Admittance | None] = MappingProxyType({}),
+) -> Network:
     """Linearise a flattened circuit along its bias.
 
     Parameters
@@ -114,6 +142,8 @@ def linearise(circuit: Circuit, bias: Bias, temperature: float, ports: Collectio
         Circuit temperature [degC].
     ports : collection of str
         Names of the sources behind the RF ports.
+    admittances : mapping of str to Admittance or None
+        What stands for each element without a small-signal form; None: nothing but a tiny leakage.
 
     Returns
     -------
@@ -122,10 +152,12 @@ def linearise(circuit: Circuit, bias: Bias, temperature: float, ports: Collectio
     Raises
     ------
     LinearisationError
-        Naming the first element that has no small-signal form here.
+        Naming the first element that has no small-signal form and that nothing stands for.
     """
-    if circuit.refused:
-        raise circuit.refused[0]
+    opaque = {element.name: element for element in opaque_elements(circuit, temperature)}
+    for name, element in opaque.items():
+        if name not in admittances:
+            raise element.reason
     supplies = _supplies(circuit, ports)
     stamps = _Stamps(bias.points, frozenset(supplies.values()))
     for node in circuit.nodes:
@@ -138,13 +170,30 @@ def linearise(circuit: Circuit, bias: Bias, temperature: float, ports: Collectio
         _stamp_line(stamps, line)
     for coupling in circuit.couplings:
         _stamp_coupling(stamps, coupling, inductance)
+    for name, element in opaque.items():
+        _stamp_opaque(stamps, element, admittances[name])
     for device in circuit.devices:
+        if device.name in opaque:
+            continue
         (_stamp_diode if device.name[0] == "d" else _stamp_transistor)(stamps, device, bias, temperature)
     for source in circuit.behaviourals:
         _stamp_behavioural(stamps, source, bias, temperature)
     for element in circuit.elements:
         _stamp_current_control(stamps, element)
     return stamps.network(bias.time)
+
+
+def supply_nodes(circuit: Circuit, ports: Collection[str]) -> frozenset[str]:
+    """Return the nodes that a supply holds: they have no RF voltage.
+
+    Parameters
+    ----------
+    circuit : Circuit
+        Flattened elements.
+    ports : collection of str
+        Names of the sources behind the RF ports.
+    """
+    return frozenset(_supplies(circuit, ports).values())
 
 
 def _supplies(circuit: Circuit, ports: Collection[str]) -> dict[str, str]:
@@ -177,6 +226,19 @@ def _stamp_element(stamps: _Stamps, element: Element, inductance: dict[str, floa
         if letter == "e":
             for node, sign in ((element.nodes[2], -1.0), (element.nodes[3], 1.0)):
                 stamps.add(row, stamps.node(node), sign * element.value)
+
+
+def _stamp_opaque(stamps: _Stamps, element: Opaque, admittance: Admittance | None) -> None:
+    """Add an admittance between terminals; the leakage keeps a node that nothing else holds from being singular."""
+    for node in dict.fromkeys(element.nodes):
+        stamps.add(stamps.node(node), stamps.node(node), GMIN)
+    if admittance is None:
+        return
+    places = [stamps.node(node) for node in admittance.nodes]
+    for i, row in enumerate(places):
+        for k, column in enumerate(places):
+            stamps.add(row, column, admittance.conductance[:, i, k])
+            stamps.add(row, column, admittance.capacitance[:, i, k], "c")
 
 
 def _stamp_current_control(stamps: _Stamps, element: Element) -> None:

@@ -31,9 +31,14 @@ class Transition:
     fastest: float
 
     @property
+    def share(self) -> float:
+        """The delay as a share of the change."""
+        return self.group_delay / self.fastest
+
+    @property
     def slow_network(self) -> bool:
         """Whether the network itself takes part in the transition."""
-        return self.group_delay > _SLOW * self.fastest
+        return self.share > _SLOW
 
 
 @dataclass(frozen=True)
@@ -63,7 +68,7 @@ def solve_envelope(
     network: Network,
     ports: Sequence[RfPort],
     frequency: Sequence[float],
-    pair: tuple[int, int],
+    pairs: Sequence[tuple[int, int]],
     wanted: str = "auto",
 ) -> Envelope:
     """Solve a network for all carriers, each by the method that it needs.
@@ -76,8 +81,8 @@ def solve_envelope(
         p ports.
     frequency : sequence of float
         f carriers [Hz].
-    pair : tuple of int
-        Place of the port that RF enters and of the one that it leaves.
+    pairs : sequence of tuple of int
+        Places of the port that RF enters and of the one that it leaves; the slowest pair decides.
     wanted : {"auto", "frozen", "ringing"}
         Method, or the choice by group delay.
 
@@ -93,9 +98,11 @@ def solve_envelope(
     frozen = solve_frozen(network, ports, frequency)
     methods, reasons = [], []
     for k, carrier in enumerate(frequency):
-        transition = _transition(network, ports, carrier, pair, frozen.s[k])
+        transition = max(
+            (_transition(network, ports, carrier, pair, frozen.s[k]) for pair in pairs), key=lambda one: one.share
+        )
         methods.append(wanted if wanted != "auto" else ("ringing" if transition.slow_network else "frozen"))
-        share = transition.group_delay / transition.fastest
+        share = transition.share
         reason = (
             f"group delay is {100.0 * share:.2g} % of the fastest RF transition"
             if np.isfinite(transition.fastest)

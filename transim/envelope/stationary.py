@@ -18,7 +18,12 @@ Complex = npt.NDArray[np.complex128]
 _FLOOR = 1e-3
 
 
-def read_scattering(plots: Sequence[Plot], ports: Sequence[RfPort], frequencies: Sequence[float]) -> Complex:
+def read_scattering(
+    plots: Sequence[Plot],
+    ports: Sequence[RfPort],
+    frequencies: Sequence[float],
+    entered: Sequence[int] | None = None,
+) -> Complex:
     """Turn AC plots into S-parameters.
 
     Parameters
@@ -29,21 +34,26 @@ def read_scattering(plots: Sequence[Plot], ports: Sequence[RfPort], frequencies:
         p ports.
     frequencies : sequence of float
         f frequencies [Hz].
+    entered : sequence of int or None
+        Places of the excited ports; None: all.
 
     Returns
     -------
     ndarray, shape (f, p, p)
+        Columns of ports that are not excited are not a number.
 
     Raises
     ------
     RawFileError
         If the number of plots or a frequency is not what the deck asked for.
     """
-    if len(plots) != len(ports) * len(frequencies):
-        raise RawFileError(f"expected {len(ports) * len(frequencies)} AC plots, found {len(plots)}")
-    s = np.empty((len(frequencies), len(ports), len(ports)), dtype=complex)
+    excited = range(len(ports)) if entered is None else entered
+    if len(plots) != len(excited) * len(frequencies):
+        raise RawFileError(f"expected {len(excited) * len(frequencies)} AC plots, found {len(plots)}")
+    s = np.full((len(frequencies), len(ports), len(ports)), complex(np.nan, np.nan))
     for place, plot in enumerate(plots):
-        column, k = divmod(place, len(frequencies))
+        number, k = divmod(place, len(frequencies))
+        column = excited[number]
         found = float(plot["frequency"][0].real)
         if not np.isclose(found, frequencies[k], rtol=1e-6):
             raise RawFileError(f"expected an AC plot at {frequencies[k]:g} Hz, found one at {found:g} Hz")
@@ -59,7 +69,8 @@ def largest_difference(first: Complex, second: Complex) -> float:
     Parameters
     ----------
     first, second : ndarray of complex, shape (p, p)
-        The matrices; both get a floor of -60 dB.
+        The matrices; both get a floor of -60 dB. Columns of ports that `first` was not excited at are left out.
     """
-    levels = [20.0 * np.log10(np.abs(matrix) + _FLOOR) for matrix in (first, second)]
+    columns = np.flatnonzero(~np.isnan(first).all(axis=0))
+    levels = [20.0 * np.log10(np.abs(matrix[:, columns]) + _FLOOR) for matrix in (first, second)]
     return float(np.abs(levels[0] - levels[1]).max())

@@ -67,15 +67,13 @@ def on_compression(record: Record) -> float:
 @metric("bias_shift_on", unit="V", title="Mean bias moved by the RF, RF on", analysis="carrier")
 def bias_shift_on(record: Record) -> float:
     """Return the change of the mean voltage at the bias entry by the RF, at the end of the on interval [V]."""
-    large = _large(record)
-    return large.bias_shift_high if record.biased_passes else large.bias_shift_low
+    return _large(record).bias_shift_on
 
 
 @metric("bias_shift_off", unit="V", title="Mean bias moved by the RF, RF off", analysis="carrier")
 def bias_shift_off(record: Record) -> float:
     """Return the change of the mean voltage at the bias entry by the RF, at the end of the off interval [V]."""
-    large = _large(record)
-    return large.bias_shift_low if record.biased_passes else large.bias_shift_high
+    return _large(record).bias_shift_off
 
 
 @metric(

@@ -31,7 +31,7 @@ class Metric:
         Takes a `Record`, returns the value, raises MeasurementError where there is none.
     analysis : str or None
         The one analysis, ``envelope`` or ``carrier``, that can know it; ``request``: a study that has to be asked
-        for; None: any.
+        for; ``throws``: any, of a path with several; None: any.
     """
 
     name: str
@@ -40,15 +40,17 @@ class Metric:
     function: Measurement
     analysis: str | None = None
 
-    def serves(self, analysis: str) -> bool:
+    def serves(self, analysis: str, *, throws: bool = False) -> bool:
         """Tell whether an analysis can know this metric.
 
         Parameters
         ----------
         analysis : str
             ``envelope`` or ``carrier``.
+        throws : bool
+            Whether the path has several throws.
         """
-        return self.analysis in (None, analysis)
+        return self.analysis in (None, analysis) or (throws and self.analysis == "throws")
 
 
 @dataclass(frozen=True)
@@ -92,7 +94,7 @@ def metric(name: str, *, unit: str, title: str, analysis: str | None = None) -> 
     title : str
         What stands in a table.
     analysis : str or None
-        The one analysis that can know it; None: any.
+        As `Metric` has it.
 
     Returns
     -------

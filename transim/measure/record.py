@@ -18,7 +18,7 @@ __all__ = ["Record"]
 
 _WAVEFORMS = (
     "video", "junction_charge", "junction_reverse", "junction_current", "junction_power", "supply_current",
-    "junction_conduction", "junction_fed", "other_charge",
+    "junction_conduction", "junction_fed", "other_charge", "other_throws",
 )  # fmt: skip
 
 
@@ -49,7 +49,7 @@ class Record:
     video : mapping of str to Waveform
         Voltage at each RF port with the RF off [V].
     drive_current : Waveform or None
-        Current out of the driver, positive when it sources [A].
+        Current out of the driver that opens this way of the RF, positive when it sources [A].
     driver_voltage : Waveform or None
         Voltage at the output of the driver [V].
     supply_power : Waveform or None
@@ -72,7 +72,9 @@ class Record:
         Charge on each capacitance that the driver's current reaches before a junction, and what has left through
         resistances past the junctions; positive when it came out of the driver [C].
     driver_output_power : Waveform or None
-        Power out of the driver [W].
+        Power out of the driver, of all of them where the path has several bias entries [W].
+    other_throws : mapping of str to Waveform
+        |S| of every other way of the RF through the path, as a share of its own settled on state [1].
     supply_current : mapping of str to Waveform
         Current out of each supply [A].
     ratings : tuple of Rating
@@ -112,6 +114,7 @@ class Record:
     junction_fed: Mapping[str, float] = field(default_factory=dict)
     other_charge: Mapping[str, Waveform] = field(default_factory=dict)
     driver_output_power: Waveform | None = None
+    other_throws: Mapping[str, Waveform] = field(default_factory=dict)
     supply_current: Mapping[str, Waveform] = field(default_factory=dict)
     ratings: tuple[Rating, ...] = ()
     stress: RfStress | None = None

@@ -70,14 +70,14 @@ class LargeSignal:
     ----------
     level : float
         Available power of the source [dBm].
-    bias_shift_low, bias_shift_high : float
-        Change of the mean voltage at the bias entry by the RF, at the end of the command's low and of its high
-        interval [V].
+    bias_shift_on, bias_shift_off : float
+        Change of the mean voltage at the bias entry by the RF, at the end of the interval in which the RF passes and
+        of the other [V].
     junction_power : mapping of str to Waveform
         Power into each junction, mean over one carrier period [W].
     """
 
     level: float
-    bias_shift_low: float
-    bias_shift_high: float
+    bias_shift_on: float
+    bias_shift_off: float
     junction_power: Mapping[str, Waveform]

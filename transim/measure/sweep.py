@@ -69,6 +69,11 @@ class StaticSweep:
         """Attenuation of the through pair, off, shape (n,) [dB]."""
         return attenuation(self.off[:, self.through[1], self.through[0]])
 
+    @property
+    def pair(self) -> tuple[str, ...]:
+        """The two ports of the through pair, in the order of the ports."""
+        return tuple(self.ports[place] for place in sorted(self.through))
+
     def return_loss(self, state: State) -> Array:
         """Return the return loss of every port.
 
@@ -92,13 +97,14 @@ class StaticSweep:
         -------
         mapping of str to ndarray, shape (n, k)
             ``insertion_loss`` and ``isolation`` of the through pair (k = 1), ``return_loss_on`` and
-            ``return_loss_off`` of every port (k = p) [dB].
+            ``return_loss_off`` of its two ports (k = 2, as `pair` names them) [dB].
         """
+        places = sorted(self.through)
         return {
             "insertion_loss": self.insertion_loss[:, np.newaxis],
             "isolation": self.isolation[:, np.newaxis],
-            "return_loss_on": self.return_loss("on"),
-            "return_loss_off": self.return_loss("off"),
+            "return_loss_on": self.return_loss("on")[:, places],
+            "return_loss_off": self.return_loss("off")[:, places],
         }
 
 
@@ -120,6 +126,8 @@ class BiasSweep:
         -20 log10 |S| of the through pair [dB].
     charge : mapping of str to ndarray, shape (n,)
         Stored in each junction [C], by its name in the path.
+    throw : str
+        Its name; empty where the path has a single way.
     """
 
     temperature: float
@@ -128,3 +136,4 @@ class BiasSweep:
     voltage: Array
     attenuation: Array
     charge: Mapping[str, Array]
+    throw: str = ""

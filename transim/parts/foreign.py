@@ -67,8 +67,8 @@ def read_foreign_junction(path: Path, name: str, terminals: Sequence[str], part_
         supplies=(),
         ports=(),
         bias=(),
-        through=(),
-        passes=None,
+        throws=(),
+        inverted=(),
         slots=(),
         probes=tuple(
             Probe("reverse", "V", ((1.0, f"v({plus})"), (-1.0, f"v({minus})"))) for plus, minus in _REVERSE[order]

@@ -28,7 +28,7 @@ from transim.errors import NetlistError, QuantityError
 from transim.parts.agreement import check_agreement
 from transim.parts.cards import read_netlist_text
 from transim.parts.nearest import nearest_name
-from transim.parts.part import ROLES, ModelSlot, Parameter, Part, Probe, Slot
+from transim.parts.part import ROLES, ModelSlot, Parameter, Part, Probe, Slot, Throw
 from transim.parts.subcircuit import read_subcircuit
 from transim.quantities import UNITS, parse_quantity
 
@@ -40,10 +40,10 @@ FIRST_LINE = "* transim part"
 _ALWAYS = ("name", "role", "terminals", "summary", "source", "note", "parameter", "model", "probe")
 _OF_ROLE = {
     "junction": (),
-    "path": ("ports", "bias", "through", "passes", "slot"),
+    "path": ("ports", "bias", "through", "passes", "throw", "inverted", "slot"),
     "driver": ("supply",),
 }
-_REPEATED = ("source", "note", "parameter", "model", "probe", "slot", "supply")
+_REPEATED = ("source", "note", "parameter", "model", "probe", "slot", "supply", "throw")
 _FACT = re.compile(r"\*\s*([a-z]+)\s*:\s*(.*)")
 _NAME = re.compile(r"[a-z][a-z0-9_]*")
 _VECTOR = r"v\(\s*[\w.#]+(?:\s*,\s*[\w.#]+)?\s*\)|i\(\s*[\w.#]+\s*\)|@[\w.#]+\[\w+\]"
@@ -245,6 +245,46 @@ def _read_model(header: _Header) -> ModelSlot | None:
     return found
 
 
+def _read_throws(header: _Header, ports: tuple[str, ...], bias: tuple[str, ...]) -> tuple[Throw, ...]:
+    """Return the ways of the RF: each from its own line, or the only one from `through` and `passes`."""
+    facts = header.all("throw")
+    if not facts:
+        if len(bias) != 1:
+            raise header.fail(
+                f'a path with {len(bias)} bias entries states its ways by "* throw: name | from to | high or low | bias"',
+                header.one("bias").line,
+            )
+        through = _read_through(header, ports)
+        return (Throw(through[1], through, _read_passes(header), bias[0]),)
+    for key in ("through", "passes"):
+        fact = header.optional(key)
+        if fact is not None:
+            raise header.fail(f'"{key}" and "throw" exclude each other', fact.line)
+    throws: list[Throw] = []
+    for fact in facts:
+        name, pair, state, entry = header.fields(fact, 4, "name | from to | high or low | bias entry")
+        header.name(name, fact)
+        if name in {throw.name for throw in throws}:
+            raise header.fail(f'the throw "{name}" stands twice', fact.line)
+        through = _port_pair(header, _Fact(fact.line, "throw", pair), ports)
+        if state not in ("high", "low"):
+            raise header.fail(f'RF passes while the command is high or low, found "{state}"', fact.line)
+        if entry not in bias:
+            raise header.fail(f'the bias entry of a throw is one of {" ".join(bias)}, found "{entry}"', fact.line)
+        throws.append(Throw(name, through, state == "high", entry))
+    return tuple(throws)
+
+
+def _read_inverted(header: _Header, bias: tuple[str, ...]) -> tuple[str, ...]:
+    fact = header.optional("inverted")
+    if fact is None:
+        return ()
+    names = header.names(fact)
+    if set(names) - set(bias):
+        raise header.fail(f'"inverted" names bias entries out of {" ".join(bias)}, found "{fact.value}"', fact.line)
+    return names
+
+
 def _read_passes(header: _Header) -> bool:
     fact = header.one("passes")
     if fact.value not in ("biased", "unbiased"):
@@ -252,15 +292,18 @@ def _read_passes(header: _Header) -> bool:
     return fact.value == "biased"
 
 
-def _read_through(header: _Header, ports: tuple[str, ...]) -> tuple[str, ...]:
+def _read_through(header: _Header, ports: tuple[str, ...]) -> tuple[str, str]:
     fact = header.optional("through")
     if fact is None and len(ports) == 2:
-        return ports
-    fact = fact or header.one("through")
+        return ports[0], ports[1]
+    return _port_pair(header, fact or header.one("through"), ports)
+
+
+def _port_pair(header: _Header, fact: _Fact, ports: tuple[str, ...]) -> tuple[str, str]:
     through = header.names(fact)
     if len(through) != 2 or set(through) - set(ports):
-        raise header.fail(f'"through" names two of the ports {" ".join(ports)}', fact.line)
-    return through
+        raise header.fail(f'"{fact.key}" names two of the ports {" ".join(ports)}', fact.line)
+    return through[0], through[1]
 
 
 def read_role(file: Path) -> str | None:
@@ -317,6 +360,7 @@ def read_part(path: Path) -> Part:
     taken = {*_KEYS_OF_DESIGN[role], *(slot.name for slot in slots)}
     supplies = _read_parameters(header, "supply", taken)
     ports = header.names(header.one("ports")) if role == "path" else ()
+    bias = header.names(header.one("bias")) if role == "path" else ()
     part = Part(
         name=name,
         role=role,
@@ -328,9 +372,9 @@ def read_part(path: Path) -> Part:
         parameters=_read_parameters(header, "parameter", taken),
         supplies=supplies,
         ports=ports,
-        bias=header.names(header.one("bias")) if role == "path" else (),
-        through=_read_through(header, ports) if role == "path" else (),
-        passes=_read_passes(header) if role == "path" else None,
+        bias=bias,
+        throws=_read_throws(header, ports, bias) if role == "path" else (),
+        inverted=_read_inverted(header, bias),
         slots=slots,
         probes=tuple(_read_probe(header, fact) for fact in header.all("probe")),
         model=_read_model(header),

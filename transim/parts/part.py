@@ -10,7 +10,7 @@ from types import MappingProxyType
 
 from transim.quantities import format_range
 
-__all__ = ["ROLES", "ModelSlot", "Parameter", "Part", "Probe", "Slot"]
+__all__ = ["ROLES", "ModelSlot", "Parameter", "Part", "Probe", "Slot", "Throw"]
 
 #: Roles of a part, and the folder in which the parts of a role stand.
 ROLES: Mapping[str, str] = MappingProxyType({"junction": "junctions", "path": "paths", "driver": "drivers"})
@@ -86,6 +86,28 @@ class Slot:
 
 
 @dataclass(frozen=True)
+class Throw:
+    """One way of the RF through a path, which the command opens and closes.
+
+    Parameters
+    ----------
+    name : str
+        Name in results; of a path with a single way the port that the RF leaves.
+    through : tuple of str
+        Port that the RF enters, port that it leaves.
+    passes_high : bool
+        True if RF passes while the command is high.
+    bias : str
+        The bias entry whose driver opens it.
+    """
+
+    name: str
+    through: tuple[str, str]
+    passes_high: bool
+    bias: str
+
+
+@dataclass(frozen=True)
 class Probe:
     """A quantity inside a part, as a weighted sum of vectors that ngspice saves.
 
@@ -150,10 +172,12 @@ class Part:
         Publications of the equations; remarks for the user.
     parameters, supplies : tuple of Parameter
         Values that may be set; supplies are DC sources at the terminal of the same name.
-    ports, bias, through : tuple of str
-        Of a path: RF ports, bias entries, and the pair of ports whose transmission is judged.
-    passes : bool or None
-        Of a path: True if RF passes while the bias is forward.
+    ports, bias : tuple of str
+        Of a path: RF ports, and bias entries, each fed by a driver of its own.
+    throws : tuple of Throw
+        Of a path: its ways for the RF, each judged.
+    inverted : tuple of str
+        Of a path: bias entries whose driver gets the inverted command.
     slots : tuple of Slot
         Of a path: the places for junctions.
     probes : tuple of Probe
@@ -177,13 +201,23 @@ class Part:
     supplies: tuple[Parameter, ...]
     ports: tuple[str, ...]
     bias: tuple[str, ...]
-    through: tuple[str, ...]
-    passes: bool | None
+    throws: tuple[Throw, ...]
+    inverted: tuple[str, ...]
     slots: tuple[Slot, ...]
     probes: tuple[Probe, ...]
     model: ModelSlot | None
     reserved: tuple[str, ...]
     body: str
+
+    def forward(self, throw: Throw) -> bool:
+        """Tell whether a throw passes RF while the driver of its bias entry pushes forward current.
+
+        Parameters
+        ----------
+        throw : Throw
+            One of the path's.
+        """
+        return throw.passes_high != (throw.bias in self.inverted)
 
     @property
     def settings(self) -> dict[str, Parameter]:

@@ -57,10 +57,10 @@ class Beside:
 
     @property
     def name(self) -> str:
-        """Driver, carrier and analysis, fit for a file."""
+        """Driver, throw, carrier and analysis, fit for a file."""
         result = self.result
         at = f"_{format_quantity(result.temperature, 'degC', 12).replace(' ', '')}" if self.temperature_named else ""
-        return f"{result.driver}_{carrier_name(result.carrier)}_{result.analysis}{at}"
+        return f"{result.label.replace(' ', '_')}_{carrier_name(result.carrier)}_{result.analysis}{at}"
 
 
 def read_beside(entry: str, design: Design) -> tuple[Measured, str | None]:
@@ -98,7 +98,7 @@ def read_beside(entry: str, design: Design) -> tuple[Measured, str | None]:
 
 
 def hold_beside(outcome: Outcome, measured: Measured, driver: str | None) -> tuple[Beside, ...]:
-    """Compare every result at the record's carrier with it.
+    """Compare every result at the record's carrier with it; of several throws, those that pass when the record does.
 
     Parameters
     ----------
@@ -114,14 +114,18 @@ def hold_beside(outcome: Outcome, measured: Measured, driver: str | None) -> tup
     tuple of Beside
         One a result.
     """
-    timing = timeline_of(outcome.design).timing(bool(outcome.design.switch.path.passes))
+    throws = outcome.design.switch.path.throws
+    passes = {throw.name if len(throws) > 1 else "": throw.passes_high for throw in throws}
     several = len(outcome.design.environment.temperature) > 1
     found = []
     for case in outcome.cases:
         for result in case.results:
             if driver not in (None, result.driver) or not same_carrier(measured, result.carrier):
                 continue
-            envelope = case.envelopes.get((result.analysis, result.carrier))
+            if len(throws) > 1 and passes[result.throw] != measured.passes_high:
+                continue
+            timing = timeline_of(outcome.design).timing(passes[result.throw])
+            envelope = case.throw(result.throw).envelopes.get((result.analysis, result.carrier))
             loss = result.figures["insertion_loss"].value
             lines: tuple[Overlay, ...] = ()
             if envelope is not None and loss is not None:
@@ -149,7 +153,7 @@ def beside_lines(measured: Measured, besides: tuple[Beside, ...]) -> list[str]:
     for one in besides:
         result = one.result
         place = f"{format_quantity(result.carrier, 'Hz', 12)} and {format_quantity(result.temperature, 'degC', 12)}"
-        lines += [f"{result.driver} at {place}, {result.analysis} analysis, beside {measured.file.name}", ""]
+        lines += [f"{result.label} at {place}, {result.analysis} analysis, beside {measured.file.name}", ""]
         if not one.differences:
             lines += ["  no metric that both have", ""]
             continue
@@ -193,6 +197,7 @@ def beside_document(measured: Measured, besides: tuple[Beside, ...]) -> Mapping[
         "results": [
             {
                 "driver": one.result.driver,
+                "throw": one.result.throw or None,
                 "carrier": one.result.carrier,
                 "temperature": one.result.temperature,
                 "analysis": one.result.analysis,
@@ -246,7 +251,7 @@ def overlay_figure(one: Beside) -> Figure:
         A column an edge; above linear, below in dB.
     """
     carrier = format_quantity(one.result.carrier, "Hz", 12)
-    what = f"driver {one.result.driver} at {carrier}, {one.result.analysis} analysis, beside the record"
+    what = f"driver {one.result.label} at {carrier}, {one.result.analysis} analysis, beside the record"
     figure, panels = new_figure(one.title, what, 2, len(one.overlays), sharex="col")
     for column, part in enumerate(one.overlays):
         scale, unit = axis_scale("s", part.time)

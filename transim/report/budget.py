@@ -36,7 +36,7 @@ def budget_lines(outcome: Outcome) -> list[str]:
     """
     groups: dict[tuple[str, float], list[Result]] = {}
     for result in outcome.results:
-        groups.setdefault((result.driver, result.temperature), []).append(result)
+        groups.setdefault((result.label, result.temperature), []).append(result)
     several = len(outcome.design.environment.temperature) > 1
     lines: list[str] = []
     for (driver, temperature), results in groups.items():

@@ -60,7 +60,8 @@ def placed_decks(design: Design, driver: Driver, temperature: float) -> dict[str
     decks = list(case_decks(design, driver, temperature))
     for frequency in design.carrier.frequency:
         for level in design.carrier.level:
-            decks += carrier_decks(design, driver, temperature, frequency, level)
+            for several in carrier_decks(design, driver, temperature, frequency, level).values():
+                decks += several
     return {deck_file(deck): deck for deck in decks}
 
 
@@ -86,9 +87,10 @@ def write_cases(folder: Path, outcome: Outcome) -> None:
         driver = drivers[case.driver]
         write_decks(place, {deck_file(deck): deck for deck in case.decks})
         write_waveforms(place, case, assemble(design, driver))
-        if case.static is not None:
-            title = f"{design.title}; driver {case.driver} at {format_quantity(case.temperature, 'degC', 12)}"
-            write_static_sweep(place, case.static, title)
+        for throw in case.throws:
+            if throw.static is not None:
+                title = f"{design.title}; driver {case.driver} at {format_quantity(case.temperature, 'degC', 12)}"
+                write_static_sweep(place, throw.static, title, throw.name)
     write_bias_sweeps(folder, outcome.bias_sweeps)
     if outcome.bias_sweeps:
         write_decks(folder, {deck_file(deck): deck for deck in bias_sweep_decks(design)})
@@ -130,6 +132,7 @@ waveforms.csv     the run of the control pulse without RF
 envelope_*.csv    complex S21 of the judged ports against time, by the carrier in the name
 static.csv        loss, isolation and return losses of the settled states against frequency, where [static] asks for it
 static_*.sNp      S-parameters of the settled states on and off as Touchstone 2.0 files of N ports
+*_THROW.*         where the path has several throws: of the one of that name
 waveforms.npz     all waveforms as arrays; the array "units" holds name and unit of each
 
 All times count from the start of the run. The judged pulse of the command passes 50 %
@@ -137,8 +140,8 @@ at {rising} (rising) and {falling} (falling).
 
 time                  instants of the arrays below
 control               logic command
-driver_voltage        bias entry of the path, where the driver feeds it
-driver_current        out of the driver, positive into the bias entry
+driver_voltage        bias entry of the path, where the driver feeds it; of a second entry with its name
+driver_current        out of the driver, positive into the bias entry; likewise
 port_NAME             RF port: without RF this is the video leakage
 supply_current_NAME   out of a supply
 charge_NAME           stored in a junction, positive when forward biased

@@ -3,21 +3,22 @@
 from __future__ import annotations
 
 import itertools
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
 
-from transim.circuit.assemble import assemble
+from transim.circuit.assemble import ThrowPlace, assemble
 from transim.circuit.timeline import timeline_of
+from transim.design.model import Design
 from transim.measure.definitions import Definitions, Timing
 from transim.measure.spectrum import fourier_integral
 from transim.measure.sweep import StaticSweep
 from transim.quantities import format_quantity
-from transim.report.waveforms import video_waveforms
+from transim.report.waveforms import drive_name, video_waveforms
 from transim.study.run import Outcome
-from transim.study.simulate import CaseRun, Result
+from transim.study.simulate import CaseRun, Result, ThrowRun
 
 __all__ = ["Cycle", "Trace", "cycles_of", "edge_span", "lead_in", "thinned"]
 
@@ -90,7 +91,7 @@ class Trace:
 
 @dataclass(frozen=True, eq=False)
 class Cycle:
-    """What one driver at one temperature did in the judged cycle.
+    """What one driver and throw did at one temperature in the judged cycle.
 
     Attributes
     ----------
@@ -98,6 +99,8 @@ class Cycle:
         Of the design.
     driver : str
         Name in the design.
+    throw : str
+        Name of the throw; empty where the path has a single way.
     temperature : float
         [degC].
     several : bool
@@ -109,7 +112,7 @@ class Cycle:
     definitions : Definitions
         What the figures are counted from.
     control, drive_voltage, drive_current : Trace
-        Command [V]; voltage [V] and current [A] where the driver feeds the path.
+        Command [V]; voltage [V] and current [A] where the driver of the throw feeds the path.
     charges, currents, reverses : tuple of Trace
         Of the junctions [C], [A], [V].
     ports : tuple of Trace
@@ -124,6 +127,7 @@ class Cycle:
 
     title: str
     driver: str
+    throw: str
     temperature: float
     several: bool
     timing: Timing
@@ -141,11 +145,16 @@ class Cycle:
     static: StaticSweep | None = None
 
     @property
+    def label(self) -> str:
+        """Driver, and throw where there are several."""
+        return f"{self.driver} {self.throw}".rstrip()
+
+    @property
     def name(self) -> str:
-        """Driver, and temperature where there are several."""
+        """Driver, throw and temperature, as far as there are several."""
         if not self.several:
-            return self.driver
-        return f"{self.driver}, {format_quantity(self.temperature, 'degC', 12)}"
+            return self.label
+        return f"{self.label}, {format_quantity(self.temperature, 'degC', 12)}"
 
     def edge(self, edge: str) -> float:
         """Return the 50 % point of an edge of the command.
@@ -264,7 +273,7 @@ class Cycle:
 
 
 def cycles_of(outcome: Outcome) -> tuple[Cycle, ...]:
-    """Return the judged cycle of every case.
+    """Return the judged cycle of every case and throw.
 
     Parameters
     ----------
@@ -276,16 +285,24 @@ def cycles_of(outcome: Outcome) -> tuple[Cycle, ...]:
     tuple of Cycle
         In the order of the cases.
     """
-    return tuple(_cycle(outcome, case) for case in outcome.cases)
+    return tuple(cycle for case in outcome.cases for cycle in _cycles(outcome, case))
 
 
-def _cycle(outcome: Outcome, case: CaseRun) -> Cycle:
+def _cycles(outcome: Outcome, case: CaseRun) -> Iterator[Cycle]:
     design = outcome.design
     driver = next(driver for driver in design.drivers if driver.name == case.driver)
+    netlist = assemble(design, driver)
+    waves = video_waveforms(case.video, netlist)
+    for throw, run in zip(netlist.throws, case.throws, strict=True):
+        yield _cycle(design, case, throw, run, waves)
+
+
+def _cycle(
+    design: Design, case: CaseRun, throw: ThrowPlace, run: ThrowRun, waves: Mapping[str, tuple[Array, str]]
+) -> Cycle:
     timeline = timeline_of(design)
-    timing = timeline.timing(bool(design.switch.path.passes))
+    timing = timeline.timing(throw.passes_high)
     zero = timeline.rising
-    waves = video_waveforms(case.video, assemble(design, driver))
     time = waves["time"][0] - zero
 
     def trace(key: str, name: str) -> Trace:
@@ -296,11 +313,12 @@ def _cycle(outcome: Outcome, case: CaseRun) -> Cycle:
         return tuple(trace(key, key.removeprefix(prefix)) for key in waves if key.startswith(prefix))
 
     envelopes = {
-        key: Trace(_envelope_label(*key), "1", wave.time - zero, wave.value) for key, wave in case.envelopes.items()
+        key: Trace(_envelope_label(*key), "1", wave.time - zero, wave.value) for key, wave in run.envelopes.items()
     }
     return Cycle(
         title=design.title,
         driver=case.driver,
+        throw=run.name,
         temperature=case.temperature,
         several=len(design.environment.temperature) > 1,
         timing=Timing(
@@ -314,15 +332,15 @@ def _cycle(outcome: Outcome, case: CaseRun) -> Cycle:
         impedance=design.carrier.impedance,
         definitions=design.definitions,
         control=trace("control", "command"),
-        drive_voltage=trace("driver_voltage", "driver output"),
-        drive_current=trace("driver_current", "driver output"),
+        drive_voltage=trace(drive_name("voltage", throw), "driver output"),
+        drive_current=trace(drive_name("current", throw), "driver output"),
         charges=group("charge_"),
         currents=group("current_"),
         reverses=group("reverse_"),
         ports=group("port_"),
         envelopes=envelopes,
-        results=case.results,
-        static=case.static,
+        results=tuple(result for result in case.results if result.throw == run.name),
+        static=run.static,
     )
 
 

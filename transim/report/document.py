@@ -93,7 +93,7 @@ def run_document(outcome: Outcome, seconds: float) -> Document:
     Returns
     -------
     dict
-        ``results`` holds one entry for each driver, temperature, carrier and analysis.
+        ``results`` holds one entry for each driver, temperature, carrier, level, throw and analysis.
     """
     from transim.report.cautions import cautions
     from transim.report.settled import settled_documents
@@ -109,7 +109,9 @@ def run_document(outcome: Outcome, seconds: float) -> Document:
         "certified": outcome.certified,
         "verdict": outcome.verdict,
         "cautions": list(cautions(outcome)),
-        "results": [_result(result, case.shortest) for case in outcome.cases for result in case.results],
+        "results": [
+            _result(result, case.throw(result.throw).shortest) for case in outcome.cases for result in case.results
+        ],
         **settled_documents(outcome),
     }
 
@@ -152,6 +154,7 @@ def _result(result: Result, shortest: Shortest | None) -> Document:
     ]
     return {
         "driver": result.driver,
+        "throw": result.throw or None,
         "carrier": result.carrier,
         "temperature": result.temperature,
         "analysis": result.analysis,
@@ -227,8 +230,9 @@ def part_document(part: Part) -> Document:
         "supplies": [_parameter(supply) for supply in part.supplies],
         "parameters": [_parameter(parameter) for parameter in part.parameters],
         "ports": list(part.ports),
-        "through": list(part.through),
-        "passes_biased": part.passes,
+        "bias": list(part.bias),
+        "throws": [asdict(throw) for throw in part.throws],
+        "inverted": list(part.inverted),
         "slots": [asdict(slot) for slot in part.slots],
         "model_kinds": [] if part.model is None else [kind for place in part.model.places for kind in place.kinds],
         "notes": list(part.notes),

@@ -51,11 +51,12 @@ def run_figures(outcome: Outcome) -> Iterator[tuple[str, Figure]]:
         yield f"bias_{at}", bias_figure(outcome.design.title, sweep)
     for cycle in cycles:
         place = case_name(outcome.design, cycle.driver, cycle.temperature)
-        yield f"{place}/cycle", cycle_figure(cycle)
+        own = f"_{cycle.throw}" if cycle.throw else ""
+        yield f"{place}/cycle{own}", cycle_figure(cycle)
         for carrier in dict.fromkeys(frequency for _, frequency in cycle.envelopes):
-            yield f"{place}/{envelope_name('envelope', carrier)}", envelope_figure(cycle, carrier)
-        yield f"{place}/leakage", leakage_figure(cycle)
-        yield f"{place}/spectrum", spectrum_figure(cycle)
+            yield f"{place}/{envelope_name('envelope', carrier, cycle.throw)}", envelope_figure(cycle, carrier)
+        yield f"{place}/leakage{own}", leakage_figure(cycle)
+        yield f"{place}/spectrum{own}", spectrum_figure(cycle)
 
 
 def write_figures(folder: Path, outcome: Outcome) -> None:

@@ -97,7 +97,7 @@ def _static_panels(cycles: Sequence[Cycle]) -> Iterator[Panel]:
     for metric in sweeps[0].figures():
         for port in range(sweeps[0].figures()[metric].shape[1]):
             several = sweeps[0].figures()[metric].shape[1] > 1
-            name = METRICS[metric].title + (f", port {sweeps[0].ports[port]}" if several else "")
+            name = METRICS[metric].title + (f", port {sweeps[0].pair[port]}" if several else "")
             traces = tuple(
                 (k, Trace(name, "dB", sweep.frequency, sweep.figures()[metric][:, port]))
                 for k, sweep in enumerate(sweeps)

@@ -39,12 +39,12 @@ def pulse_lines(outcome: Outcome) -> list[str]:
     lines: list[str] = []
     told: set[tuple[str, float, str]] = set()
     for result in outcome.results:
-        key = (result.driver, result.temperature, result.analysis)
+        key = (result.label, result.temperature, result.analysis)
         # one carrier tells enough; the document has them all
         if result.first_pulse is None or key in told:
             continue
         told.add(key)
-        place = f"{result.driver} at {format_quantity(result.carrier, 'Hz', 12)}"
+        place = f"{result.label} at {format_quantity(result.carrier, 'Hz', 12)}"
         place += f" and {format_quantity(result.temperature, 'degC', 12)}, {result.analysis} analysis"
         rows = _rows(result.figures, result.first_pulse)
         if not rows:

@@ -16,7 +16,6 @@ from transim.report.layout import Column, align, wrap
 from transim.report.touchstone import touchstone_text
 from transim.report.waveforms import csv_text
 from transim.study.run import Outcome
-from transim.study.simulate import CaseRun
 
 __all__ = ["settled_documents", "settled_lines", "write_bias_sweeps", "write_static_sweep"]
 
@@ -41,8 +40,11 @@ def settled_lines(outcome: Outcome) -> list[str]:
     """
     lines: list[str] = []
     for case in outcome.cases:
-        if case.static is not None:
-            lines += [*([""] if lines else []), *_static(outcome, case, case.static)]
+        for throw in case.throws:
+            if throw.static is not None:
+                place = f"{case.driver} {throw.name}".rstrip()
+                place += f" at {format_quantity(case.temperature, 'degC', 12)}"
+                lines += [*([""] if lines else []), *_static(outcome, place, throw.static)]
     for sweep in outcome.bias_sweeps:
         lines += [*([""] if lines else []), *_bias(sweep)]
     return lines
@@ -63,15 +65,21 @@ def settled_documents(outcome: Outcome) -> dict[str, list[dict[str, Any]]]:
         key only where the design asks for it. Hz, dB, A, V, C.
     """
     static = [
-        {"driver": case.driver, "temperature": case.temperature, **_static_document(outcome, case.static)}
+        {
+            "driver": case.driver,
+            "throw": throw.name or None,
+            "temperature": case.temperature,
+            **_static_document(outcome, throw.static),
+        }
         for case in outcome.cases
-        if case.static is not None
+        for throw in case.throws
+        if throw.static is not None
     ]
     bias = [_bias_document(sweep) for sweep in outcome.bias_sweeps]
     return {name: entries for name, entries in (("static", static), ("bias_sweep", bias)) if entries}
 
 
-def write_static_sweep(folder: Path, sweep: StaticSweep, title: str) -> None:
+def write_static_sweep(folder: Path, sweep: StaticSweep, title: str, throw: str = "") -> None:
     """Write the sweep of a case.
 
     Parameters
@@ -82,17 +90,21 @@ def write_static_sweep(folder: Path, sweep: StaticSweep, title: str) -> None:
         Both settled states.
     title : str
         What was swept, for the head of the Touchstone files.
+    throw : str
+        Its name, which the files get; empty where the path has a single way.
     """
+    own = f"_{throw}" if throw else ""
     columns = {"frequency [Hz]": sweep.frequency}
     for metric, values in sweep.figures().items():
-        names = [metric] if values.shape[1] == 1 else [f"{metric}_{port}" for port in sweep.ports]
+        names = [metric] if values.shape[1] == 1 else [f"{metric}_{port}" for port in sweep.pair]
         columns |= {f"{name} [dB]": values[:, k] for k, name in enumerate(names)}
-    (folder / "static.csv").write_text(csv_text(columns), encoding="utf-8")
+    (folder / f"static{own}.csv").write_text(csv_text(columns), encoding="utf-8")
     impedance = [sweep.impedance] * len(sweep.ports)
     for state, s in (("on", sweep.on), ("off", sweep.off)):
-        heads = (title, f"settled {state} state; ports in order: {', '.join(sweep.ports)}")
+        way = f" of throw {throw}" if throw else ""
+        heads = (title, f"settled {state} state{way}; ports in order: {', '.join(sweep.ports)}")
         text = touchstone_text(sweep.frequency, s, impedance, heads)
-        (folder / f"static_{state}.s{len(sweep.ports)}p").write_text(text, encoding="utf-8", newline="\n")
+        (folder / f"static_{state}{own}.s{len(sweep.ports)}p").write_text(text, encoding="utf-8", newline="\n")
 
 
 def write_bias_sweeps(folder: Path, sweeps: Sequence[BiasSweep]) -> None:
@@ -101,16 +113,17 @@ def write_bias_sweeps(folder: Path, sweeps: Sequence[BiasSweep]) -> None:
     Parameters
     ----------
     folder : Path
-        Where ``bias_TEMPERATURE.csv`` go.
+        Where ``bias_TEMPERATURE.csv`` go; of several throws with their names.
     sweeps : sequence of BiasSweep
-        One for each temperature.
+        One for each temperature and throw.
     """
     for sweep in sweeps:
         columns = {"current [A]": sweep.current, "voltage [V]": sweep.voltage}
         for k, carrier in enumerate(sweep.carriers):
             columns[f"attenuation_{_compact(carrier, 'Hz')} [dB]"] = sweep.attenuation[:, k]
         columns |= {f"charge_{junction} [C]": values for junction, values in sweep.charge.items()}
-        file = folder / f"bias_{_compact(sweep.temperature, 'degC')}.csv"
+        own = f"_{sweep.throw}" if sweep.throw else ""
+        file = folder / f"bias_{_compact(sweep.temperature, 'degC')}{own}.csv"
         file.write_text(csv_text(columns), encoding="utf-8")
 
 
@@ -118,11 +131,10 @@ def _compact(value: float, unit: str) -> str:
     return format_quantity(value, unit, 12).replace(" ", "")
 
 
-def _static(outcome: Outcome, case: CaseRun, sweep: StaticSweep) -> Iterator[str]:
+def _static(outcome: Outcome, place: str, sweep: StaticSweep) -> Iterator[str]:
     ends = [format_quantity(float(sweep.frequency[k]), "Hz", 12) for k in (0, -1)]
-    place = format_quantity(case.temperature, "degC", 12)
     yield from wrap(
-        f"Settled states of {case.driver} at {place}, {ends[0]} to {ends[1]}, {sweep.frequency.size} frequencies"
+        f"Settled states of {place}, {ends[0]} to {ends[1]}, {sweep.frequency.size} frequencies"
         " (return loss of the worst port)"
     )
     rows = np.unique(np.linspace(0, sweep.frequency.size - 1, _ROWS).round().astype(int))
@@ -152,8 +164,9 @@ def _bands(bands: Sequence[Band] | None) -> str:
 
 
 def _bias(sweep: BiasSweep) -> Iterator[str]:
-    place = format_quantity(sweep.temperature, "degC", 12)
-    yield from wrap(f"Attenuation against the holding current at {place}, a current source in place of the driver")
+    way = f" of throw {sweep.throw}" if sweep.throw else ""
+    place = f"at {format_quantity(sweep.temperature, 'degC', 12)}"
+    yield from wrap(f"Attenuation{way} against the holding current {place}, a current source in place of the driver")
     columns = [
         Column("current", _cells(sweep.current, "A"), right=True),
         Column("bias entry", _cells(sweep.voltage, "V"), right=True),
@@ -191,6 +204,7 @@ def _band_document(band: Band) -> Mapping[str, float | str | None]:
 def _bias_document(sweep: BiasSweep) -> dict[str, Any]:
     return {
         "temperature": sweep.temperature,
+        "throw": sweep.throw or None,
         "current": sweep.current.tolist(),
         "voltage": sweep.voltage.tolist(),
         "attenuation": [

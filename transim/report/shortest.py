@@ -28,12 +28,14 @@ def shortest_lines(outcome: Outcome) -> list[str]:
     """
     several = len(outcome.design.environment.temperature) > 1
     lines: list[str] = []
-    for case in outcome.cases:
-        if case.shortest is None:
+    found = [(case, throw, throw.shortest) for case in outcome.cases for throw in case.throws]
+    for case, throw, shortest in found:
+        if shortest is None:
             continue
-        place = f"{case.driver}, {format_quantity(case.temperature, 'degC', 12)}" if several else case.driver
-        for name, found in (("pulse", case.shortest.pulse), ("gap", case.shortest.gap)):
-            lines += wrap(f"{place}: {_sentence(name, found)}", "  ")
+        place = f"{case.driver} {throw.name}".rstrip()
+        place += f", {format_quantity(case.temperature, 'degC', 12)}" if several else ""
+        for name, usable in (("pulse", shortest.pulse), ("gap", shortest.gap)):
+            lines += wrap(f"{place}: {_sentence(name, usable)}", "  ")
     if not lines:
         return []
     return [

@@ -60,10 +60,10 @@ def static_figure(cycles: Sequence[Cycle], limits: Sequence[Limit]) -> Figure:
         for place, cycle in enumerate(cycles):
             if swept and cycle.static is not None:
                 values = cycle.static.figures()[metric].min(axis=1)
-                lines.append(draw_series(axes, place, frequencies, values, cycle.driver))
+                lines.append(draw_series(axes, place, frequencies, values, cycle.label))
             else:
                 values = np.array([_value(cycle, metric, float(carrier)) for carrier in carriers])
-                lines.append(draw_series(axes, place, carriers, values, cycle.driver, markevery=1))
+                lines.append(draw_series(axes, place, carriers, values, cycle.label, markevery=1))
         _frame_frequencies(axes, frequencies)
         axes.margins(y=0.08 if swept else 0.25)
         axes.set_title(METRICS[metric].title)

@@ -195,6 +195,7 @@ def _names(cases: Sequence[CaseLabel]) -> list[str]:
     """Name each case by what tells it from the others."""
     parts = (
         lambda case: case.driver,
+        lambda case: case.throw,
         lambda case: "" if math.isnan(case.carrier) else format_quantity(case.carrier, "Hz", 6),
         lambda case: "" if math.isnan(case.temperature) else format_quantity(case.temperature, "degC", 6),
         lambda case: "" if math.isnan(case.level) else format_quantity(case.level, "dBm", 6),

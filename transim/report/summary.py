@@ -85,7 +85,7 @@ def limit_tables(outcome: Outcome) -> list[Row]:
                               "word": verdict_word(result, judgement)})  # fmt: skip
             title = METRICS[limit.metric].title
             rows.append({"metric": limit.metric, "title": title, "limit": limit_text(limit), "cells": cells})
-        tables.append({"place": place, "drivers": [result.driver for result in group], "rows": rows})
+        tables.append({"place": place, "drivers": [result.label for result in group], "rows": rows})
     return tables if outcome.design.limits else []
 
 
@@ -105,17 +105,18 @@ def figure_tables(outcome: Outcome) -> list[Row]:
     """
     tables = []
     for place, group in _groups(outcome).items():
-        everyone = [result.driver for result in group]
+        everyone = [result.label for result in group]
         rows = []
         absent: dict[str, list[str]] = {}
         for name, metric in METRICS.items():
-            if not metric.serves(group[0].analysis) or any(name not in result.figures for result in group):
+            known = metric.serves(group[0].analysis, throws=bool(group[0].throw))
+            if not known or any(name not in result.figures for result in group):
                 continue
             why: dict[str, list[str]] = {}
             for result in group:
                 figure = result.figures[name]
                 if figure.value is None:
-                    why.setdefault(figure.note or "no reason is known", []).append(result.driver)
+                    why.setdefault(figure.note or "no reason is known", []).append(result.label)
             if len(why) == 1 and everyone in why.values():
                 absent.setdefault(next(iter(why)), []).append(name)
                 continue
@@ -211,7 +212,7 @@ def caution_rows(outcome: Outcome) -> list[tuple[str, str]]:
     """
     found: dict[str, list[str]] = {}
     for result in outcome.results:
-        place = f"{result.driver}, {_place(result)}"
+        place = f"{result.label}, {_place(result)}"
         undefined = [
             f"limit on {judgement.metric} not judged: {result.figures[judgement.metric].note}"
             for judgement in result.judgements

@@ -154,6 +154,7 @@ def sweep_document(outcome: SweepOutcome, folder: str) -> dict[str, Any]:
             "cases": [
                 {
                     "driver": case.driver,
+                    "throw": case.throw or None,
                     "temperature": case.temperature,
                     "carrier": case.carrier,
                     "level": case.level,

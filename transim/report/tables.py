@@ -85,7 +85,10 @@ def _group(group: Sequence[Result], limits: Sequence[Limit]) -> Iterator[str]:
     limited = tuple(dict.fromkeys(limit.metric for limit in limits))
     analysis = group[0].analysis
     # a metric of the other analysis alone would only fill a row with its absence
-    others = tuple(name for name, entry in METRICS.items() if name not in limited and entry.serves(analysis))
+    several = bool(group[0].throw)
+    others = tuple(
+        name for name, entry in METRICS.items() if name not in limited and entry.serves(analysis, throws=several)
+    )
     if limited:
         bounds = Column("limit", tuple(limit_text(limit) for limit in limits))
         yield from side_by_side(
@@ -112,11 +115,11 @@ def _judged(result: Result) -> Column:
     words = [verdict_word(result, judgement) for judgement in result.judgements]
     width = max(map(len, values), default=0)
     cells = tuple(f"{value:>{width}} {word}" for value, word in zip(values, words, strict=True))
-    return Column(result.driver.rjust(width), cells)
+    return Column(result.label.rjust(width), cells)
 
 
 def _plain(result: Result, names: Iterable[str]) -> Column:
-    return Column(result.driver, tuple(_value(result, name) for name in names), right=True)
+    return Column(result.label, tuple(_value(result, name) for name in names), right=True)
 
 
 def _value(result: Result, name: str) -> str:
@@ -170,13 +173,14 @@ def _reasons(group: Sequence[Result]) -> list[str]:
     metrics: dict[tuple[str, str], list[str]] = {}
     for result in group:
         for name, figure in result.figures.items():
-            wanted = METRICS[name].serves(result.analysis) or any(j.metric == name for j in result.judgements)
+            wanted = METRICS[name].serves(result.analysis, throws=bool(result.throw))
+            wanted = wanted or any(j.metric == name for j in result.judgements)
             if figure.value is None and wanted:
-                metrics.setdefault((figure.note or "no reason is known", result.driver), []).append(name)
+                metrics.setdefault((figure.note or "no reason is known", result.label), []).append(name)
     drivers: dict[tuple[str, str], list[str]] = {}
     for (note, driver), names in metrics.items():
         drivers.setdefault((note, ", ".join(names)), []).append(driver)
-    everyone = [result.driver for result in group]
+    everyone = [result.label for result in group]
     return [
         f"{names}: {note}" if who == everyone else f"{names} ({', '.join(who)}): {note}"
         for (note, names), who in drivers.items()

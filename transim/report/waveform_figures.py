@@ -280,7 +280,7 @@ def overlay_figure(cycles: Sequence[Cycle], analysis: str, carrier: float) -> Fi
         (f"leakage at {first.ports[port].name}", "V", [cycle.ports[port] for cycle in cycles]),
     ]
     places = f"{format_quantity(carrier, 'Hz', 12)} and {format_quantity(first.temperature, 'degC', 12)}"
-    what = "drivers overlaid" if len(cycles) > 1 else f"driver {first.driver}"
+    what = "drivers overlaid" if len(cycles) > 1 else f"driver {first.label}"
     figure, panels = new_figure(
         first.title, f"{what} at {places}: the same edge of each", 4, 2, height=1.85, sharex="col", sharey="row"
     )
@@ -296,7 +296,7 @@ def overlay_figure(cycles: Sequence[Cycle], analysis: str, carrier: float) -> Fi
             for place, (cycle, trace) in enumerate(zip(cycles, traces, strict=True)):
                 zero = cycle.edge(edge)
                 cut = trace.between(zero + low, zero + span)
-                draw_series(axes, place, (cut.time - zero) * times, cut.value.real * scale, cycle.driver)
+                draw_series(axes, place, (cut.time - zero) * times, cut.value.real * scale, cycle.label)
     for axes, (name, unit, traces) in zip(panels[:, 0], rows, strict=True):
         name_axis(axes, "y", name, _row_scale(unit, traces)[1])
     _frame_levels(panels, first, [cycle.envelopes[analysis, carrier] for cycle in cycles], analysis, carrier)

@@ -9,7 +9,7 @@ from pathlib import Path
 import numpy as np
 import numpy.typing as npt
 
-from transim.circuit.assemble import Netlist
+from transim.circuit.assemble import Feed, Netlist, ThrowPlace
 from transim.engine.rawfile import Plot
 from transim.quantities import format_quantity
 from transim.study.simulate import CaseRun
@@ -35,7 +35,7 @@ def carrier_name(frequency: float) -> str:
     return format_quantity(frequency, "Hz", 12).replace(" ", "")
 
 
-def envelope_name(analysis: str, frequency: float) -> str:
+def envelope_name(analysis: str, frequency: float, throw: str = "") -> str:
     """Return the name of an envelope's array and file.
 
     Parameters
@@ -44,13 +44,39 @@ def envelope_name(analysis: str, frequency: float) -> str:
         ``envelope`` or ``carrier``.
     frequency : float
         Carrier [Hz].
+    throw : str
+        Name of the throw; empty where the path has a single way.
 
     Returns
     -------
     str
         For example ``envelope_30MHz``, or ``envelope_30MHz_resolved`` from the carrier analysis.
     """
-    return f"envelope_{carrier_name(frequency)}{'_resolved' if analysis == 'carrier' else ''}"
+    own = f"_{throw}" if throw else ""
+    return f"envelope_{carrier_name(frequency)}{'_resolved' if analysis == 'carrier' else ''}{own}"
+
+
+def drive_name(quantity: str, throw: ThrowPlace) -> str:
+    """Return the name of a waveform where the driver of a throw feeds the path.
+
+    Parameters
+    ----------
+    quantity : {"voltage", "current"}
+        Which.
+    throw : ThrowPlace
+        The way of the RF.
+
+    Returns
+    -------
+    str
+        As `video_waveforms` has it.
+    """
+    return f"driver_{quantity}{_entry(throw.feed)}"
+
+
+def _entry(feed: Feed) -> str:
+    """Return what tells a second bias entry from the first."""
+    return "" if feed.node == "drive" else f"_{feed.entry}"
 
 
 def video_waveforms(video: Plot, netlist: Netlist) -> dict[str, tuple[Array, str]]:
@@ -67,15 +93,16 @@ def video_waveforms(video: Plot, netlist: Netlist) -> dict[str, tuple[Array, str
     -------
     dict
         Samples and unit by name, all on the same instants: ``time``, ``control``, ``driver_voltage``,
-        ``driver_current`` (positive into the bias entry), ``port_NAME``, ``supply_current_NAME`` (positive
-        out of the supply), and ``charge_NAME``, ``current_NAME``, ``reverse_NAME`` of each junction.
+        ``driver_current`` (positive into the bias entry; of a second one with its name), ``port_NAME``,
+        ``supply_current_NAME`` (positive out of the supply), and ``charge_NAME``, ``current_NAME``, ``reverse_NAME`` of each junction.
     """
     found = {
         "time": (np.real(video["time"]), "s"),
         "control": (np.real(video["v(ctl)"]), "V"),
-        "driver_voltage": (np.real(video["v(drive)"]), "V"),
-        "driver_current": (np.real(video["i(vdrive)"]), "A"),
     }
+    for feed in netlist.feeds:
+        found[f"driver_voltage{_entry(feed)}"] = (np.real(video[f"v({feed.node})"]), "V")
+        found[f"driver_current{_entry(feed)}"] = (np.real(video[f"i({feed.ammeter})"]), "A")
     for port in netlist.ports:
         found[f"port_{port.node}"] = (np.real(video[f"v({port.node})"]), "V")
     for supply in netlist.supplies:
@@ -99,7 +126,7 @@ def write_waveforms(folder: Path, case: CaseRun, netlist: Netlist) -> None:
     Parameters
     ----------
     folder : Path
-        Where ``waveforms.npz``, ``waveforms.csv`` and ``envelope_CARRIER.csv`` go.
+        Where ``waveforms.npz``, ``waveforms.csv`` and ``envelope_CARRIER.csv`` go; of several throws with their names.
     case : CaseRun
         What was run.
     netlist : Netlist
@@ -111,8 +138,12 @@ def write_waveforms(folder: Path, case: CaseRun, netlist: Netlist) -> None:
     (folder / "waveforms.csv").write_text(
         csv_text({f"{name} [{unit}]": samples for name, (samples, unit) in video.items()}), encoding="utf-8"
     )
-    for (analysis, frequency), envelope in case.envelopes.items():
-        name = envelope_name(analysis, frequency)
+    named = [
+        (envelope_name(analysis, frequency, throw.name), envelope)
+        for throw in case.throws
+        for (analysis, frequency), envelope in throw.envelopes.items()
+    ]
+    for name, envelope in named:
         arrays |= {f"{name}_time": envelope.time, name: envelope.value}
         units |= {f"{name}_time": "s", name: "1"}
         magnitude = np.maximum(np.abs(envelope.value), np.finfo(float).tiny)

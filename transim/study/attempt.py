@@ -10,7 +10,7 @@ from transim.design.model import Numerics
 from transim.engine.ngspice import Engine, EngineRun, discard_kept
 from transim.errors import ConvergenceError
 
-__all__ = ["Finished", "run_deck"]
+__all__ = ["Finished", "run_deck", "run_once"]
 
 
 @dataclass(frozen=True)
@@ -54,13 +54,13 @@ def run_deck(engine: Engine, deck: Deck, numerics: Numerics) -> Finished:
         If it fails; a `ConvergenceError` is that of the first try, and says that a second one failed as well.
     """
     try:
-        return Finished(deck, _run(engine, deck, numerics))
+        return Finished(deck, run_once(engine, deck, numerics))
     except ConvergenceError as error:
         first = error
     second = robust_deck(deck, numerics)
     settings = robust_settings(numerics)
     try:
-        run = _run(engine, second, numerics)
+        run = run_once(engine, second, numerics)
     except ConvergenceError as error:
         discard_kept(error)
         first.message += f"; a second try with {settings} found no solution either"
@@ -73,7 +73,27 @@ def run_deck(engine: Engine, deck: Deck, numerics: Numerics) -> Finished:
     )
 
 
-def _run(engine: Engine, deck: Deck, numerics: Numerics) -> EngineRun:
+def run_once(engine: Engine, deck: Deck, numerics: Numerics) -> EngineRun:
+    """Run a deck as it is.
+
+    Parameters
+    ----------
+    engine : Engine
+        ngspice.
+    deck : Deck
+        What to run.
+    numerics : Numerics
+        The time limit.
+
+    Returns
+    -------
+    EngineRun
+
+    Raises
+    ------
+    EngineError
+        If it fails.
+    """
     return engine.run(
         deck.text, name=deck.name, timeout=numerics.timeout, stop_time=deck.stop, writes_raw=deck.writes_raw
     )

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from transim.circuit.assemble import JunctionPlace
+from transim.circuit.assemble import JunctionPlace, ThrowPlace
 from transim.circuit.timeline import Timeline
 from transim.engine.rawfile import Plot
 from transim.envelope.carrier import extract_envelope
@@ -24,7 +24,7 @@ __all__ = ["CarrierRun", "run_carrier"]
 
 @dataclass(frozen=True)
 class CarrierRun:
-    """Carrier-resolved runs at one carrier and level.
+    """Carrier-resolved runs of one throw at one carrier and level.
 
     Attributes
     ----------
@@ -38,7 +38,9 @@ class CarrierRun:
     large: LargeSignal
 
 
-def run_carrier(case: Case, frequency: float, level: float, quiet: Plot | None = None) -> tuple[CarrierRun, Plot]:
+def run_carrier(
+    case: Case, frequency: float, level: float, quiet: Plot | None = None
+) -> tuple[tuple[CarrierRun, ...], Plot]:
     """Run the carrier analysis at one carrier and level.
 
     Parameters
@@ -52,29 +54,39 @@ def run_carrier(case: Case, frequency: float, level: float, quiet: Plot | None =
 
     Returns
     -------
-    tuple of CarrierRun and Plot
-        And the run without RF, which other levels share.
+    runs : tuple of CarrierRun
+        One for each throw.
+    quiet : Plot
+        The run without RF, which other levels share.
     """
     design, netlist = case.design, case.netlist
     timeline = carrier_timeline(design, frequency)
-    decks = carrier_decks(design, case.driver, case.temperature, frequency, level)
-    with ThreadPoolExecutor(max_workers=min(3, os.cpu_count() or 1)) as pool:
-        plots = [done.plots[0] for done in pool.map(case.run, decks if quiet is None else decks[:2])]
-    first, second = plots[:2]
-    quiet = plots[2] if quiet is None else quiet
+    by_entry = carrier_decks(design, case.driver, case.temperature, frequency, level)
+    decks = [deck for several in by_entry.values() for deck in several[:2]]
+    if quiet is None:
+        decks.append(next(iter(by_entry.values()))[2])
+    with ThreadPoolExecutor(max_workers=min(len(decks), os.cpu_count() or 1)) as pool:
+        plots = [done.plots[0] for done in pool.map(case.run, decks)]
+    quiet = plots[-1] if quiet is None else quiet
+    entered = {entry: plots[2 * k : 2 * k + 2] for k, entry in enumerate(by_entry)}
     amplitude = amplitude_of(level, design.carrier.impedance)
-    node = f"v({netlist.ports[netlist.through[1]].node})"
-    runs = [(np.real(plot["time"]), np.real(plot[node])) for plot in (first, second, quiet)]
-    time, envelope = extract_envelope((runs[0], runs[1], runs[2]), frequency, design.numerics.carrier_points)
     on_video_axis = case.timeline.lead - timeline.lead
-    waveform = Waveform(time + on_video_axis, 2.0 * envelope / amplitude, "1")
-    large = _large_signal(case, timeline, (first, second, quiet), frequency, level)
-    return CarrierRun(waveform, large), quiet
+    found = []
+    for throw in netlist.throws:
+        node = f"v({netlist.ports[throw.through[1]].node})"
+        first, second = entered[throw.through[0]]
+        runs = [(np.real(plot["time"]), np.real(plot[node])) for plot in (first, second, quiet)]
+        time, envelope = extract_envelope((runs[0], runs[1], runs[2]), frequency, design.numerics.carrier_points)
+        waveform = Waveform(time + on_video_axis, 2.0 * envelope / amplitude, "1")
+        large = _large_signal(case, throw, timeline, (first, second, quiet), (frequency, level))
+        found.append(CarrierRun(waveform, large))
+    return tuple(found), quiet
 
 
 def _large_signal(
-    case: Case, timeline: Timeline, plots: tuple[Plot, Plot, Plot], frequency: float, level: float
+    case: Case, throw: ThrowPlace, timeline: Timeline, plots: tuple[Plot, Plot, Plot], tone: tuple[float, float]
 ) -> LargeSignal:
+    frequency, level = tone
     # three periods before each edge: an even mean without the carrier; of the low state at the end of its interval,
     # as before the first edge the RF's own start-up is still dying away
     span = 3.0 / frequency
@@ -83,16 +95,17 @@ def _large_signal(
     end_of_high = timeline.falling - timeline.edge / 2.0
     shifts = []
     for stop in (end_of_low, end_of_high):
-        means = [_mean(plot, "v(bias)", stop - span, stop) for plot in plots]
+        means = [_mean(plot, f"v({throw.feed.entry})", stop - span, stop) for plot in plots]
         shifts.append(0.5 * (means[0] + means[1]) - means[2])
+    low, high = shifts
     powers = {
         place.instance: _period_mean(plots[0], _junction_power(plots[0], place), 1.0 / frequency)
         for place in case.netlist.junctions
     }
     return LargeSignal(
         level=level,
-        bias_shift_low=shifts[0],
-        bias_shift_high=shifts[1],
+        bias_shift_on=high if throw.passes_high else low,
+        bias_shift_off=low if throw.passes_high else high,
         junction_power={name: Waveform(time + offset, power, "W") for name, (time, power) in powers.items()},
     )
 

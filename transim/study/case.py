@@ -9,7 +9,7 @@ from pathlib import Path
 import numpy as np
 
 from transim.circuit.assemble import Netlist, assemble
-from transim.circuit.decks import Deck, Origin, static_deck, video_deck
+from transim.circuit.decks import Deck, Origin, point_deck, static_deck, video_deck
 from transim.circuit.elements import Circuit, read_listing
 from transim.circuit.timeline import Timeline, timeline_of
 from transim.design.model import Design, Driver
@@ -20,7 +20,7 @@ from transim.envelope.check import bias_check_deck
 from transim.envelope.junction import Array
 from transim.envelope.stationary import Complex, read_scattering
 from transim.measure.usable import Shortest
-from transim.study.attempt import run_deck
+from transim.study.attempt import run_deck, run_once
 
 __all__ = ["Case"]
 
@@ -47,8 +47,8 @@ class Case:
         self.lean = False
         #: The flattened circuit, once the static deck has run.
         self.circuit: Circuit | None = None
-        #: Shortest usable pulse and gap, where they are asked for.
-        self.shortest: Shortest | None = None
+        #: Shortest usable pulse and gap by throw, where they are asked for.
+        self.shortest: Mapping[str, Shortest] = {}
 
     def run(self, deck: Deck, longest: float = math.inf) -> EngineRun:
         """Run a deck and keep it; `longest` shortens the design's time limit [s]."""
@@ -84,8 +84,34 @@ class Case:
         """Return the run of the control pulse without RF."""
         design = self.design
         deck = video_deck(self.netlist, design.control, self.timeline, design.numerics, self.origin, saved)
-        plot = self.run(deck).plots[0]
-        self.vectors = {name: np.real(plot.data[:, k]) for k, name in enumerate(plot.names)}
+        return self._kept(self.run(deck).plots[0])
+
+    def point(self, saved: Sequence[str]) -> tuple[Circuit, Complex, Plot]:
+        """Return what `static` and `video` return, from one deck; S only of ports that RF enters.
+
+        Raises
+        ------
+        EngineError
+            If the deck fails: there is no second try.
+        """
+        design, ports, frequencies = self.design, self.netlist.ports, self.design.carrier.frequency
+        entered = sorted({throw.through[0] for throw in self.netlist.throws})
+        deck = point_deck(
+            self.netlist, design.control, self.timeline, frequencies, design.numerics, self.origin, saved, entered
+        )
+        done = run_once(self.engine, deck, design.numerics)
+        self.decks.append(deck)
+        self.seconds += done.seconds
+        video, *plots = done.plots
+        half = len(plots) // 2
+        states = [read_scattering(some, ports, frequencies, entered) for some in (plots[:half], plots[half:])]
+        self.circuit = read_listing(done.log)
+        return self.circuit, np.stack(states), self._kept(video)
+
+    def _kept(self, plot: Plot) -> Plot:
+        """Keep the vectors of the video run; each lies in one piece."""
+        columns = np.ascontiguousarray(np.real(plot.data).T)
+        self.vectors = {name: _from_start(name, columns[k]) for k, name in enumerate(plot.names)}
         return plot
 
     def check(self, name: str, circuit: Circuit, vectors: Mapping[str, Array], point: int) -> Complex:
@@ -95,3 +121,10 @@ class Case:
         frequencies = self.design.carrier.frequency
         deck = bias_check_deck(name, circuit, bias, self.netlist.ports, frequencies, self.origin)
         return read_scattering(self.run(deck).plots, self.netlist.ports, frequencies)
+
+
+def _from_start(name: str, values: Array) -> Array:
+    """Return a vector whose first sample counts: ngspice has no charge of a device yet at the start of a transient."""
+    if "@" not in name or not name.rstrip(")").endswith(("[charge]", "[qbe]", "[qbc]")) or values.size < 2:
+        return values
+    return np.concatenate((values[1:2], values[1:]))

@@ -11,7 +11,7 @@ from collections.abc import Mapping
 
 import numpy as np
 
-from transim.circuit.assemble import JunctionPlace
+from transim.circuit.assemble import Feed, JunctionPlace
 from transim.circuit.elements import Circuit
 from transim.envelope.bias import Bias
 from transim.envelope.junction import Array
@@ -22,17 +22,14 @@ from transim.study.terminals import anode_of, junction_at
 
 __all__ = ["fed_junctions", "other_charges", "reached_nodes"]
 
-_AMMETER = "vdrive"
-
-
-def reached_nodes(circuit: Circuit, start: str) -> frozenset[str]:
-    """Return the nodes that direct current reaches from a node without a junction.
+def reached_nodes(circuit: Circuit, feed: Feed) -> frozenset[str]:
+    """Return the nodes that direct current reaches from a bias entry without a junction.
 
     Parameters
     ----------
     circuit : Circuit
         Flattened.
-    start : str
+    feed : Feed
         The bias entry.
 
     Returns
@@ -41,12 +38,12 @@ def reached_nodes(circuit: Circuit, start: str) -> frozenset[str]:
         Connected through resistors, inductors, voltage sources and lines; ground and the driver left out.
     """
     links: dict[str, set[str]] = {}
-    pairs = [part.nodes[:2] for part in circuit.elements if part.name[0] in "rlv" and part.name != _AMMETER]
+    pairs = [part.nodes[:2] for part in circuit.elements if part.name[0] in "rlv" and part.name != feed.ammeter]
     pairs += [ends for line in circuit.delays for ends in (line.nodes[::2], line.nodes[1::2])]
     for first, second in pairs:
         links.setdefault(first, set()).add(second)
         links.setdefault(second, set()).add(first)
-    found, waiting = {start}, [start]
+    found, waiting = {feed.entry}, [feed.entry]
     while waiting:
         new = links.get(waiting.pop(), set()) - found - {"0"}
         found |= new
@@ -82,15 +79,19 @@ def _side(case: Case, place: JunctionPlace, inside: set[str]) -> float:
     return 1.0 if anode_of(junction_at(case.design, place)) in inside else -1.0
 
 
-def other_charges(case: Case, circuit: Circuit, vectors: Mapping[str, Array]) -> dict[str, Waveform]:
+def other_charges(
+    circuit: Circuit, feed: Feed, reached: frozenset[str], vectors: Mapping[str, Array]
+) -> dict[str, Waveform]:
     """Return the charge that the driver's current leaves anywhere but in the junctions' conduction.
 
     Parameters
     ----------
-    case : Case
-        The circuit.
     circuit : Circuit
-        The same, flattened.
+        Flattened.
+    feed : Feed
+        The bias entry.
+    reached : frozenset of str
+        Its nodes.
     vectors : mapping
         The video run, by name as ngspice prints it.
 
@@ -101,10 +102,9 @@ def other_charges(case: Case, circuit: Circuit, vectors: Mapping[str, Array]) ->
     """
     time = vectors["time"]
     bias = Bias(vectors, time)
-    reached = reached_nodes(circuit, case.design.switch.path.bias[0].lower())
     found: dict[str, Waveform] = {}
     for part in circuit.elements:
-        if part.name == _AMMETER or part.name[0] not in "crlv":
+        if part.name == feed.ammeter or part.name[0] not in "crlv":
             continue
         first, second = part.nodes[:2]
         if (first in reached) == (second in reached):

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
 
@@ -103,7 +102,7 @@ def carrier_timeline(design: Design, frequency: float) -> Timeline:
 
 def carrier_decks(
     design: Design, driver: Driver, temperature: float, frequency: float, level: float
-) -> Sequence[Deck]:
+) -> dict[int, tuple[Deck, Deck, Deck]]:
     """Write the decks of the carrier analysis: two in quadrature, one without RF.
 
     Parameters
@@ -117,8 +116,8 @@ def carrier_decks(
 
     Returns
     -------
-    sequence of Deck
-        At 0 deg, at 90 deg, and quiet.
+    dict of int to tuple of Deck
+        At 0 deg, at 90 deg, and quiet, by the place of the port that the RF enters; throws share it, as a rule.
 
     Raises
     ------
@@ -128,13 +127,24 @@ def carrier_decks(
     netlist, origin = assemble(design, driver), _origin(design, driver, temperature)
     timeline = carrier_timeline(design, frequency)
     amplitude = amplitude_of(level, design.carrier.impedance)
-    port = netlist.through[0]
+    entries = dict.fromkeys(throw.through[0] for throw in netlist.throws)
     group = f"carrier_{format_quantity(frequency, 'Hz', 12).replace(' ', '')}"
     if len(design.carrier.level) > 1:
         group += f"_{level:g}dBm"
-    tones = [Tone(frequency, size, phase, port) for size, phase in ((amplitude, 0.0), (amplitude, 90.0), (0.0, 0.0))]
-    decks = [carrier_deck(netlist, design.control, timeline, design.numerics, origin, tone) for tone in tones]
-    return [replace(deck, group=group) for deck in decks]
+    found = {}
+    for entry in entries:
+        own = group if len(entries) == 1 else f"{group}_{netlist.ports[entry].node}"
+        first, second, quiet = (
+            replace(
+                carrier_deck(
+                    netlist, design.control, timeline, design.numerics, origin, Tone(frequency, size, phase, entry)
+                ),
+                group=own,
+            )
+            for size, phase in ((amplitude, 0.0), (amplitude, 90.0), (0.0, 0.0))
+        )
+        found[entry] = (first, second, quiet)
+    return found
 
 
 def _origin(design: Design, driver: Driver, temperature: float) -> Origin:

@@ -12,6 +12,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from transim.circuit.assemble import ThrowPlace
 from transim.circuit.decks import Tone, carrier_deck
 from transim.envelope.carrier import extract_envelope
 from transim.errors import EngineError
@@ -41,14 +42,17 @@ class HoldOffProbe:
     ----------
     case : Case
         The circuit.
+    throw : ThrowPlace
+        The way of the RF.
     frequency : float
         Carrier [Hz].
     record : Record
         With S21 of the settled states at small signal.
     """
 
-    def __init__(self, case: Case, frequency: float, record: Record) -> None:
+    def __init__(self, case: Case, throw: ThrowPlace, frequency: float, record: Record) -> None:
         self._case = case
+        self._throw = throw
         self._frequency = frequency
         self._static = {"on": abs(record.static_on or 0.0), "off": abs(record.static_off or 0.0)}
 
@@ -85,15 +89,16 @@ class HoldOffProbe:
         case, frequency = self._case, self._frequency
         design, netlist = case.design, case.netlist
         control = design.control
-        high = bool(design.switch.path.passes) == (state == "on")
+        high = self._throw.passes_high == (state == "on")
         interval = control.on_for if high else control.period - control.on_for
         stop = min(interval, _PERIODS / frequency) + 2.0 * _LAST / frequency
         # the command stands still: its first edge lies beyond the end, both of its levels are that of the state
         timeline = replace(carrier_timeline(design, frequency), lead=2.0 * stop, stop=stop, command=())
         held = control.model_copy(update={"low": control.high} if high else {})
         amplitude = amplitude_of(level, design.carrier.impedance)
-        first, second = netlist.through
-        group = f"holdoff_{format_quantity(frequency, 'Hz', 12)}_{level:g}dBm_{state}".replace(" ", "")
+        first, second = self._throw.through
+        name = f"_{self._throw.name}" if self._throw.name else ""
+        group = f"holdoff_{format_quantity(frequency, 'Hz', 12)}_{level:g}dBm_{state}{name}".replace(" ", "")
         node = f"v({netlist.ports[second].node})"
         tones = [Tone(frequency, amplitude, phase, first) for phase in (0.0, 90.0)]
         decks = [carrier_deck(netlist, held, timeline, design.numerics, case.origin, tone) for tone in tones]

@@ -75,7 +75,7 @@ class Setup:
 
 @dataclass(frozen=True)
 class CaseFigures:
-    """What one driver gave at one temperature, carrier and level.
+    """What one driver and throw gave at one temperature, carrier and level.
 
     Attributes
     ----------
@@ -83,6 +83,8 @@ class CaseFigures:
         Its name.
     temperature, carrier, level : float
         [degC], [Hz], [dBm].
+    throw : str
+        Name of the throw; empty where the path has a single way.
     figures : mapping of str to float or None
         Every metric in its unit; None where it is undefined.
     notes : mapping of str to str
@@ -97,6 +99,7 @@ class CaseFigures:
     temperature: float
     carrier: float
     level: float
+    throw: str
     figures: Mapping[str, float | None]
     notes: Mapping[str, str]
     judgements: tuple[Judgement, ...]
@@ -256,6 +259,7 @@ def _case(result: Result) -> CaseFigures:
         temperature=result.temperature,
         carrier=result.carrier,
         level=result.level,
+        throw=result.throw,
         figures=figures,
         notes=notes,
         judgements=(*result.judgements, *result.ratings),

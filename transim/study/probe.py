@@ -11,6 +11,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from transim.circuit.assemble import ThrowPlace
 from transim.circuit.decks import Tone, carrier_deck
 from transim.engine.ngspice import discard_kept
 from transim.engine.rawfile import Plot
@@ -44,6 +45,8 @@ class TurnOnProbe:
     ----------
     case : Case
         The circuit.
+    throw : ThrowPlace
+        The way of the RF.
     frequency : float
         Carrier [Hz].
     level_90 : float
@@ -52,8 +55,9 @@ class TurnOnProbe:
         By the envelope analysis [s].
     """
 
-    def __init__(self, case: Case, frequency: float, level_90: float, on_time: float) -> None:
+    def __init__(self, case: Case, throw: ThrowPlace, frequency: float, level_90: float, on_time: float) -> None:
         self._case = case
+        self._throw = throw
         self._frequency = frequency
         self._level = level_90
         self._on_time = on_time
@@ -101,11 +105,12 @@ class TurnOnProbe:
         case, frequency = self._case, self._frequency
         design, netlist = case.design, case.netlist
         whole = carrier_timeline(design, frequency)
-        on_edge = whole.timing(bool(design.switch.path.passes)).on_edge
+        on_edge = whole.timing(self._throw.passes_high).on_edge
         timeline = replace(whole, stop=on_edge + _LONGEST * self._on_time + 4.0 / frequency)
         amplitude = amplitude_of(level, design.carrier.impedance)
-        first, second = netlist.through
-        group = f"probe_{format_quantity(frequency, 'Hz', 12)}_{level:g}dBm".replace(" ", "")
+        first, second = self._throw.through
+        name = f"_{self._throw.name}" if self._throw.name else ""
+        group = f"probe_{format_quantity(frequency, 'Hz', 12)}_{level:g}dBm{name}".replace(" ", "")
         plots = []
         for size, phase in ((amplitude, 0.0), (amplitude, 90.0), (0.0, 0.0)):
             if size == 0.0 and self._quiet is not None:

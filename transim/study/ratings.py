@@ -6,7 +6,6 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from transim.design.model import Driver
 from transim.measure.dissipation import kept_power
 from transim.measure.rating import Rating
 from transim.measure.record import Record
@@ -31,9 +30,11 @@ def ratings_of(case: Case, record: Record) -> tuple[Rating, ...]:
     -------
     tuple of Rating
         A rating of a junction stands once for each of its places in the path. Means of the forward current
-        leave out what flows in reverse, as rated mean currents do.
+        leave out what flows in reverse, as rated mean currents do. Where the path has several bias entries, the
+        rating of the output current stands for the driver that gives most, and those of dissipation and supply
+        current, whose rails are shared, for all of them together.
     """
-    return (*_of_junctions(case, record), *_of_driver(case.driver, record))
+    return (*_of_junctions(case, record), *_of_driver(case, record))
 
 
 def _of_junctions(case: Case, record: Record) -> Iterator[Rating]:
@@ -53,11 +54,15 @@ def _of_junctions(case: Case, record: Record) -> Iterator[Rating]:
                 yield Rating(f"junction.{junction.name}.{key} {where}", stated[key], kind, wave)  # type: ignore[arg-type]
 
 
-def _of_driver(driver: Driver, record: Record) -> Iterator[Rating]:
+def _of_driver(case: Case, record: Record) -> Iterator[Rating]:
+    driver = case.driver
     stated = driver.ratings.stated
     prefix = f"driver.{driver.name}."
-    if "output_current" in stated and record.drive_current is not None:
-        yield Rating(f"{prefix}output_current", stated["output_current"], "peak", record.drive_current.magnitude())
+    if "output_current" in stated:
+        currents = [case.vectors[f"i({feed.ammeter})"] for feed in case.netlist.feeds]
+        waves = [Waveform(case.vectors["time"], np.abs(current), "A") for current in currents]
+        largest = max(waves, key=lambda wave: wave.extremes()[1])
+        yield Rating(f"{prefix}output_current", stated["output_current"], "peak", largest)
     if "dissipation" in stated and record.supply_power is not None:
         yield Rating(f"{prefix}dissipation", stated["dissipation"], "mean", kept_power(record))
     if "supply_current" in stated and record.supply_current:

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
 
+from transim.circuit.assemble import ThrowPlace
 from transim.design.model import Design
 from transim.envelope.junction import Array
 from transim.envelope.stationary import Complex
@@ -33,22 +34,25 @@ _UNITS = {"charge": "C", "reverse": "V", "current": "A"}
 
 def record_of(
     case: Case,
+    throw: ThrowPlace,
     frequency: float,
-    envelope: Waveform,
+    envelopes: Sequence[Waveform],
     states: Complex,
     vectors: Mapping[str, Array],
     rf: RfStress | LargeSignal | None = None,
 ) -> Record:
-    """Collect the waveforms of one carrier.
+    """Collect the waveforms of one throw at one carrier.
 
     Parameters
     ----------
     case : Case
         The circuit.
+    throw : ThrowPlace
+        The way of the RF.
     frequency : float
         Carrier [Hz].
-    envelope : Waveform
-        Complex S of the through pair.
+    envelopes : sequence of Waveform
+        Complex S of the through pair of every throw.
     states : ndarray, shape (2, p, p)
         S in the settled states, command low first.
     vectors : mapping
@@ -61,9 +65,8 @@ def record_of(
     Record
     """
     design, netlist = case.design, case.netlist
-    passes = bool(design.switch.path.passes)
-    first, second = netlist.through
-    on, off = (states[1], states[0]) if passes else (states[0], states[1])
+    first, second = throw.through
+    on, off = (states[1], states[0]) if throw.passes_high else (states[0], states[1])
     time = vectors["time"]
     probes: dict[str, dict[str, Waveform]] = {"charge": {}, "reverse": {}, "current": {}}
     signs = {place.instance: polarity(junction_at(design, place)) for place in netlist.junctions}
@@ -83,22 +86,24 @@ def record_of(
     fed: dict[str, float] = {}
     other: dict[str, Waveform] = {}
     if case.circuit is not None:
-        fed = fed_junctions(case, reached_nodes(case.circuit, design.switch.path.bias[0].lower()))
-        other = other_charges(case, case.circuit, vectors)
+        reached = reached_nodes(case.circuit, throw.feed)
+        fed = fed_junctions(case, reached)
+        other = other_charges(case.circuit, throw.feed, reached, vectors)
     record = Record(
-        timing=case.timeline.timing(passes),
+        timing=case.timeline.timing(throw.passes_high),
         definitions=_definitions(design),
         carrier=frequency,
         impedance=design.carrier.impedance,
-        biased_passes=passes,
-        envelope=envelope,
+        biased_passes=throw.forward,
+        envelope=envelopes[netlist.throws.index(throw)],
+        other_throws=_others(case, throw, envelopes, states),
         static_on=complex(on[second, first]),
         static_off=complex(off[second, first]),
         match_on=complex(on[first, first]),
         match_off=complex(off[first, first]),
         video={port.node: Waveform(time, vectors[f"v({port.node})"], "V") for port in netlist.ports},
-        drive_current=Waveform(time, vectors["i(vdrive)"], "A"),
-        driver_voltage=Waveform(time, vectors["v(drive)"], "V"),
+        drive_current=Waveform(time, vectors[f"i({throw.feed.ammeter})"], "A"),
+        driver_voltage=Waveform(time, vectors[f"v({throw.feed.node})"], "V"),
         supply_power=power,
         junction_charge=probes["charge"],
         junction_reverse=probes["reverse"],
@@ -107,13 +112,26 @@ def record_of(
         junction_conduction=probes["current"],
         junction_fed=fed,
         other_charge=other,
-        shortest=case.shortest,
-        driver_output_power=driver_output_power(vectors),
+        shortest=case.shortest.get(throw.name),
+        driver_output_power=driver_output_power(case, vectors),
         supply_current=supply_currents(case, vectors),
         stress=rf if isinstance(rf, RfStress) else None,
         large=rf if isinstance(rf, LargeSignal) else None,
     )
     return replace(record, ratings=ratings_of(case, record))
+
+
+def _others(
+    case: Case, throw: ThrowPlace, envelopes: Sequence[Waveform], states: Complex
+) -> dict[str, Waveform]:
+    """Return the level of the other throws as a share of their own on state."""
+    found = {}
+    for other, envelope in zip(case.netlist.throws, envelopes, strict=True):
+        first, second = other.through
+        on = abs(complex(states[1 if other.passes_high else 0][second, first]))
+        if other is not throw and on > 0.0:
+            found[other.name] = Waveform(envelope.time, np.abs(envelope.value) / on, "1")
+    return found
 
 
 def _vector(vectors: Mapping[str, Array], name: str) -> Array:

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 
-from transim.circuit.assemble import Netlist, assemble
+from transim.circuit.assemble import Netlist, ThrowPlace, assemble
 from transim.circuit.decks import Deck
-from transim.circuit.settled import sweep_deck
+from transim.circuit.settled import shared_throws, sweep_deck
 from transim.design.model import Design
 from transim.engine.ngspice import Engine
 from transim.engine.rawfile import Plot
@@ -15,10 +15,10 @@ from transim.measure.sweep import Array, BiasSweep, StaticSweep, attenuation
 from transim.study.case import Case
 from transim.study.decks import bias_sweep_decks
 
-__all__ = ["run_bias_sweeps", "run_static_sweep"]
+__all__ = ["run_bias_sweeps", "run_static_sweeps"]
 
 
-def run_static_sweep(case: Case) -> StaticSweep | None:
+def run_static_sweeps(case: Case) -> tuple[StaticSweep, ...]:
     """Sweep both settled states of a case over frequency.
 
     Parameters
@@ -28,8 +28,8 @@ def run_static_sweep(case: Case) -> StaticSweep | None:
 
     Returns
     -------
-    StaticSweep or None
-        None where the design has no table `[static]`.
+    tuple of StaticSweep
+        One for each throw; none where the design has no table `[static]`.
 
     Raises
     ------
@@ -38,21 +38,23 @@ def run_static_sweep(case: Case) -> StaticSweep | None:
     """
     design, netlist = case.design, case.netlist
     if design.static is None:
-        return None
+        return ()
     deck = sweep_deck(netlist, design.control, design.static, design.numerics, case.origin)
     plots = case.run(deck).plots
     count = len(netlist.ports)
     if len(plots) != 2 * count:
         raise RawFileError(f"expected {2 * count} AC plots of {deck.name}, found {len(plots)}")
     low, high = (_scattering(plots[state * count : (state + 1) * count], netlist) for state in range(2))
-    on, off = (high, low) if design.switch.path.passes else (low, high)
-    return StaticSweep(
-        frequency=np.real(plots[0]["frequency"]),
-        on=on,
-        off=off,
-        ports=tuple(port.node for port in netlist.ports),
-        through=netlist.through,
-        impedance=design.carrier.impedance,
+    return tuple(
+        StaticSweep(
+            frequency=np.real(plots[0]["frequency"]),
+            on=high if throw.passes_high else low,
+            off=low if throw.passes_high else high,
+            ports=tuple(port.node for port in netlist.ports),
+            through=throw.through,
+            impedance=design.carrier.impedance,
+        )
+        for throw in netlist.throws
     )
 
 
@@ -69,7 +71,8 @@ def run_bias_sweeps(design: Design, engine: Engine) -> tuple[tuple[BiasSweep, ..
     Returns
     -------
     sweeps : tuple of BiasSweep
-        One for each temperature; none where the design does not ask for them.
+        One for each temperature and each throw that the RF enters where it enters the first one; none where the
+        design does not ask for them.
     seconds : float
         Time spent in ngspice [s].
 
@@ -85,7 +88,9 @@ def run_bias_sweeps(design: Design, engine: Engine) -> tuple[tuple[BiasSweep, ..
     for deck, temperature in zip(decks, design.environment.temperature, strict=True):
         done = engine.run(deck.text, name=deck.name, timeout=design.numerics.timeout, writes_raw=True)
         seconds += done.seconds
-        sweeps.append(_bias_sweep(design, netlist, deck, done.plots, temperature))
+        sweeps += [
+            _bias_sweep(design, netlist, deck, done.plots, (throw, temperature)) for throw in shared_throws(netlist)
+        ]
     return tuple(sweeps), seconds
 
 
@@ -101,13 +106,14 @@ def _scattering(plots: tuple[Plot, ...], netlist: Netlist) -> np.ndarray[tuple[i
 
 
 def _bias_sweep(
-    design: Design, netlist: Netlist, deck: Deck, plots: tuple[Plot, ...], temperature: float
+    design: Design, netlist: Netlist, deck: Deck, plots: tuple[Plot, ...], what: tuple[ThrowPlace, float]
 ) -> BiasSweep:
+    throw, temperature = what
     currents, carriers = design.static.bias_sweep if design.static else (), design.carrier.frequency
     each = 1 + len(carriers)
     if len(plots) != each * len(currents):
         raise RawFileError(f"expected {each * len(currents)} plots of {deck.name}, found {len(plots)}")
-    points, first, second = plots[::each], *(netlist.ports[place] for place in netlist.through)
+    points, first, second = plots[::each], *(netlist.ports[place] for place in throw.through)
     # the wave at the far port against the one that the source sends
     scale = 2.0 * np.sqrt(first.impedance / second.impedance)
     waves = [scale * plot[f"v({second.node})"][0] for k, plot in enumerate(plots) if k % each]
@@ -118,7 +124,7 @@ def _bias_sweep(
         if probe.quantity == "charge"
     }
     voltage: Array = np.array([_vector(plot, "v(drive)") for plot in points])
-    return BiasSweep(temperature, carriers, np.array(currents), voltage, attenuation(s), charge)
+    return BiasSweep(temperature, carriers, np.array(currents), voltage, attenuation(s), charge, throw.name)
 
 
 def _vector(plot: Plot, name: str) -> float:

@@ -8,6 +8,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from transim.circuit.assemble import ThrowPlace
 from transim.circuit.elements import Circuit
 from transim.envelope.bias import Bias
 from transim.envelope.linearise import linearise, saved_vectors
@@ -51,13 +52,15 @@ def wants_shortest(case: Case) -> bool:
     return design.shortest or any(limit.metric in ("shortest_pulse", "shortest_gap") for limit in design.limits)
 
 
-def find_shortest(case: Case, circuit: Circuit, states: Complex) -> Shortest:
-    """Find shortest usable pulse and gap.
+def find_shortest(case: Case, throw: ThrowPlace, circuit: Circuit, states: Complex) -> Shortest:
+    """Find shortest usable pulse and gap of a throw.
 
     Parameters
     ----------
     case : Case
         One driver at one temperature; its decks are not added to.
+    throw : ThrowPlace
+        The way of the RF.
     circuit : Circuit
         The flattened circuit.
     states : ndarray, shape (2, f, p, p)
@@ -71,11 +74,10 @@ def find_shortest(case: Case, circuit: Circuit, states: Complex) -> Shortest:
     if case.design.control.record is not None:
         none = Usable(None, 0.0, "the command is recorded: there is no pulse or gap to shorten")
         return Shortest(none, none)
-    trials = _Trials(case, circuit, states)
+    trials = _Trials(case, throw, circuit, states)
     control = case.design.control
     high, low = control.on_for, min(control.period - control.on_for, _LONGEST * control.on_for)
-    passes = bool(case.design.switch.path.passes)
-    pulse, gap = (high, low) if passes else (low, high)
+    pulse, gap = (high, low) if throw.passes_high else (low, high)
     return Shortest(
         _bisect(trials.pulse, control.edge, pulse, "pulse"), _bisect(trials.gap, control.edge, gap, "gap")
     )
@@ -105,9 +107,9 @@ def _bisect(trial: _Trial, shortest: float, longest: float, name: str) -> Usable
 class _Trials:
     """Runs of one case with other pulses and gaps."""
 
-    def __init__(self, case: Case, circuit: Circuit, states: Complex) -> None:
-        self._case, self._circuit, self._states = case, circuit, states
-        self._passes = bool(case.design.switch.path.passes)
+    def __init__(self, case: Case, throw: ThrowPlace, circuit: Circuit, states: Complex) -> None:
+        self._case, self._throw, self._circuit, self._states = case, throw, circuit, states
+        self._passes = throw.passes_high
         self._reference: list[float] | None = None
 
     def pulse(self, length: float) -> str | None:
@@ -179,13 +181,14 @@ class _Trials:
         vectors = {name: np.real(video.data[:, k]) for k, name in enumerate(video.names)}
         ports = case.netlist.ports
         network = linearise(self._circuit, Bias(vectors, vectors["time"]), case.temperature, [p.source for p in ports])
-        solution = solve_envelope(network, ports, frequencies, case.netlist.through, design.numerics.solution)
-        first, second = case.netlist.through
+        pairs = [throw.through for throw in case.netlist.throws]
+        solution = solve_envelope(network, ports, frequencies, pairs, design.numerics.solution)
+        throw = next(one for one in case.netlist.throws if one.name == self._throw.name)
         lead, stop = case.timeline.lead, case.timeline.stop
         records = []
         for k, frequency in enumerate(frequencies):
-            envelope = Waveform(solution.time, solution.s[k, :, second, first], "1")
-            record = record_of(case, frequency, envelope, self._states[:, k], vectors)
+            envelopes = [Waveform(solution.time, solution.s[k, :, second, first], "1") for first, second in pairs]
+            record = record_of(case, throw, frequency, envelopes, self._states[:, k], vectors)
             timing = Timing(lead, lead + high, control.edge, 0.0, stop, control.period)
             records.append(replace(record, timing=timing))
         return records

@@ -9,6 +9,7 @@ from typing import Literal
 
 import numpy as np
 
+from transim.circuit.assemble import ThrowPlace
 from transim.circuit.decks import Deck
 from transim.circuit.elements import Circuit
 from transim.design.model import Design, Driver
@@ -36,12 +37,13 @@ from transim.study.case import Case
 from transim.study.holdoff import HoldOffProbe
 from transim.study.probe import TurnOnProbe
 from transim.study.records import record_of
-from transim.study.settled import run_static_sweep
+from transim.study.settled import run_static_sweeps
 from transim.study.shortest import find_shortest, wants_shortest
 from transim.study.soundness import numerical_notes, unbounded
 from transim.study.stress import StressSolution, small_signal_warnings
+from transim.study.together import run_together
 
-__all__ = ["CaseRun", "Result", "simulate"]
+__all__ = ["CaseRun", "Result", "ThrowRun", "simulate"]
 
 #: Largest difference between the envelope and ngspice's own AC analysis [dB].
 _TOLERATED = 0.05
@@ -55,7 +57,7 @@ _CHECKS = {
 
 @dataclass(frozen=True)
 class Result:
-    """Figures of one driver at one carrier and temperature, by one analysis.
+    """Figures of one driver and throw at one carrier and temperature, by one analysis.
 
     Attributes
     ----------
@@ -95,6 +97,8 @@ class Result:
         Where the charge goes, likewise.
     first_pulse : mapping of str to Figure or None
         Every metric of the first pulse of a train; None where there is one pulse.
+    throw : str
+        Its name; empty where the path has a single way.
     """
 
     driver: str
@@ -116,11 +120,43 @@ class Result:
     budget: Mapping[str, Budget] = field(default_factory=dict)
     charge: Mapping[str, ChargeAccount] = field(default_factory=dict)
     first_pulse: Mapping[str, Figure] | None = None
+    throw: str = ""
+
+    @property
+    def label(self) -> str:
+        """Driver, and throw where there are several."""
+        return f"{self.driver} {self.throw}".rstrip()
 
     @property
     def verdict(self) -> Verdict:
         """Verdict over all limits and ratings; undefined where the run has a fault."""
         return "undefined" if self.faults else verdict((*self.judgements, *self.ratings))
+
+
+@dataclass(frozen=True)
+class ThrowRun:
+    """What one throw gave beside its figures.
+
+    Attributes
+    ----------
+    name : str
+        Empty where the path has a single way.
+    envelopes : mapping
+        Complex S of its through pair against time by (analysis, carrier); where the design has several levels, at
+        the first.
+    level_envelopes : mapping
+        The same of every carrier-resolved run by (carrier, level).
+    static : StaticSweep or None
+        Both settled states against frequency, where the design asks for it.
+    shortest : Shortest or None
+        Shortest usable pulse and gap, where the design asks for them.
+    """
+
+    name: str
+    envelopes: Mapping[tuple[str, float], Waveform]
+    level_envelopes: Mapping[tuple[float, float], Waveform] = field(default_factory=dict)
+    static: StaticSweep | None = None
+    shortest: Shortest | None = None
 
 
 @dataclass(frozen=True)
@@ -134,21 +170,15 @@ class CaseRun:
     temperature : float
         [degC].
     results : tuple of Result
-        For each carrier and analysis.
+        For each carrier, level, throw and analysis.
     decks : tuple of Deck
         Every deck that was run.
     video : Plot
         The video run.
-    envelopes : mapping
-        Complex S21 against time by (analysis, carrier); where the design has several levels, at the first.
-    level_envelopes : mapping
-        Complex S21 of every carrier-resolved run by (carrier, level).
+    throws : tuple of ThrowRun
+        The ways of the RF.
     engine_seconds : float
         Time spent in ngspice [s].
-    static : StaticSweep or None
-        Both settled states against frequency, where the design asks for it.
-    shortest : Shortest or None
-        Shortest usable pulse and gap, where the design asks for them.
     """
 
     driver: str
@@ -156,11 +186,18 @@ class CaseRun:
     results: tuple[Result, ...]
     decks: tuple[Deck, ...]
     video: Plot
-    envelopes: Mapping[tuple[str, float], Waveform]
+    throws: tuple[ThrowRun, ...]
     engine_seconds: float
-    level_envelopes: Mapping[tuple[float, float], Waveform] = field(default_factory=dict)
-    static: StaticSweep | None = None
-    shortest: Shortest | None = None
+
+    def throw(self, name: str) -> ThrowRun:
+        """Return a throw by its name.
+
+        Parameters
+        ----------
+        name : str
+            As a result has it.
+        """
+        return next(throw for throw in self.throws if throw.name == name)
 
 
 def simulate(
@@ -203,24 +240,30 @@ def simulate(
     """
     case = Case(design, driver, temperature, engine)
     case.lean = checks == "start"
-    circuit, states = case.static()
-    saved = saved_vectors(circuit) if "envelope" in analyses else ()
-    video = case.video(saved)
+    if case.lean:
+        circuit, states, video = run_together(case)
+    else:
+        circuit, states = case.static()
+        video = case.video(saved_vectors(circuit) if "envelope" in analyses else ())
     vectors = case.vectors
     if wants_shortest(case):
-        case.shortest = find_shortest(case, circuit, states)
+        case.shortest = {
+            throw.name: find_shortest(case, throw, circuit, states) for throw in case.netlist.throws
+        }
     results: list[Result] = []
-    envelopes: dict[tuple[str, float], Waveform] = {}
+    found = [_Envelopes() for _ in case.netlist.throws]
     if "envelope" in analyses:
-        _envelope(case, circuit, states, vectors, results, envelopes, checks=checks)
-    by_level: dict[tuple[float, float], Waveform] = {}
+        _envelope(case, circuit, states, vectors, results, found, checks=checks)
     if "carrier" in analyses:
-        _carrier(case, states, vectors, results, by_level)
-        first = design.carrier.level[0]
-        envelopes |= {("carrier", f): wave for (f, level), wave in by_level.items() if level == first}
+        _carrier(case, states, vectors, results, found)
     carriers, levels = design.carrier.frequency, design.carrier.level
-    results.sort(key=lambda r: (carriers.index(r.carrier), levels.index(r.level), analyses.index(r.analysis)))
-    static = run_static_sweep(case)
+    throws = [throw.name for throw in case.netlist.throws]
+    results.sort(
+        key=lambda r: (
+            carriers.index(r.carrier), levels.index(r.level), throws.index(r.throw), analyses.index(r.analysis)
+        )
+    )  # fmt: skip
+    sweeps = run_static_sweeps(case)
     results = [replace(result, retries=tuple(case.retries)) for result in results]
     return CaseRun(
         driver=driver.name,
@@ -228,12 +271,31 @@ def simulate(
         results=tuple(results),
         decks=tuple(case.decks),
         video=video,
-        envelopes=envelopes,
+        throws=tuple(
+            ThrowRun(
+                name,
+                envelopes.at_first(levels[0]),
+                envelopes.resolved,
+                sweeps[k] if sweeps else None,
+                case.shortest.get(name),
+            )
+            for k, (name, envelopes) in enumerate(zip(throws, found, strict=True))
+        ),
         engine_seconds=case.seconds,
-        level_envelopes=by_level,
-        static=static,
-        shortest=case.shortest,
     )
+
+
+class _Envelopes:
+    """Envelopes of one throw, as they are found."""
+
+    def __init__(self) -> None:
+        self.small: dict[float, Waveform] = {}
+        self.resolved: dict[tuple[float, float], Waveform] = {}
+
+    def at_first(self, level: float) -> dict[tuple[str, float], Waveform]:
+        """Return all by analysis and carrier, the resolved ones at a level [dBm]."""
+        resolved = {("carrier", f): wave for (f, at), wave in self.resolved.items() if at == level}
+        return {("envelope", f): wave for f, wave in self.small.items()} | resolved
 
 
 def _envelope(
@@ -242,7 +304,7 @@ def _envelope(
     states: Complex,
     vectors: Mapping[str, Array],
     results: list[Result],
-    envelopes: dict[tuple[str, float], Waveform],
+    found: Sequence[_Envelopes],
     *,
     checks: str,
 ) -> None:
@@ -251,42 +313,45 @@ def _envelope(
     network = linearise(
         circuit, Bias(vectors, vectors["time"]), case.temperature, [p.source for p in netlist.ports]
     )
-    solution = solve_envelope(network, netlist.ports, frequencies, netlist.through, design.numerics.solution)
+    pairs = [throw.through for throw in netlist.throws]
+    solution = solve_envelope(network, netlist.ports, frequencies, pairs, design.numerics.solution)
     points = _check_points(case, solution)
     judged = points if checks == "all" else {}
     references = {name: case.check(name, circuit, vectors, point) for name, point in judged.items()}
     # before the first edge the bias is ngspice's own operating point
     points["check_start"], references["check_start"] = 0, states[0]
     for k, frequency in enumerate(frequencies):
-        pair = solution.s[k, :, netlist.through[1], netlist.through[0]]
-        waveform = Waveform(solution.time, pair, "1")
-        envelopes["envelope", frequency] = waveform
-        through = solution.frozen[k, :, netlist.through[1], netlist.through[0]]
-        stress = StressSolution(case, network, vectors, (through, points["check_end"]), frequency)
+        waveforms = [Waveform(solution.time, solution.s[k, :, second, first], "1") for first, second in pairs]
         differences = {
             name: largest_difference(references[name][k], solution.frozen[k, points[name]]) for name in references
         }
         method = f"{solution.methods[k]}: {solution.reasons[k]}"
-        probe: TurnOnProbe | None = None
-        for level in design.carrier.level:
-            at_level = stress.at(level)
-            record = record_of(case, frequency, waveform, states[:, k], vectors, at_level)
-            result = _result(case, record, "envelope", method, differences)
-            warnings = small_signal_warnings(at_level, frequency)
-            time = result.figures["on_time"].value if "on_time" in result.figures else None
-            # studies leave the probes out, as they do the checks
-            if checks == "all":
-                warnings = (*warnings, *HoldOffProbe(case, frequency, record).warnings(at_level))
-            if checks == "all" and time is not None and record.static_on is not None:
-                probe = probe or TurnOnProbe(case, frequency, voltage_share(record, 90) * full_on(record), time)
-                warnings = (*probe.warnings(at_level), *warnings)
-            results.append(replace(result, warnings=warnings))
+        for throw, waveform, envelopes in zip(netlist.throws, waveforms, found, strict=True):
+            envelopes.small[frequency] = waveform
+            first, second = throw.through
+            through = solution.frozen[k, :, second, first]
+            stress = StressSolution(case, throw, network, vectors, (through, points["check_end"]), frequency)
+            probe: TurnOnProbe | None = None
+            for level in design.carrier.level:
+                at_level = stress.at(level)
+                record = record_of(case, throw, frequency, waveforms, states[:, k], vectors, at_level)
+                result = _result(case, throw, record, "envelope", method, differences)
+                warnings = small_signal_warnings(at_level, frequency)
+                time = result.figures["on_time"].value if "on_time" in result.figures else None
+                # studies leave the probes out, as they do the checks
+                if checks == "all":
+                    warnings = (*warnings, *HoldOffProbe(case, throw, frequency, record).warnings(at_level))
+                if checks == "all" and time is not None and record.static_on is not None:
+                    level_90 = voltage_share(record, 90) * full_on(record)
+                    probe = probe or TurnOnProbe(case, throw, frequency, level_90, time)
+                    warnings = (*probe.warnings(at_level), *warnings)
+                results.append(replace(result, warnings=warnings))
 
 
 def _check_points(case: Case, solution: Envelope) -> dict[str, int]:
     """Return the points of the video run at which ngspice linearises too: half way on both edges, end of the pulse."""
     timeline, time = case.timeline, solution.time
-    first, second = case.netlist.through
+    first, second = case.netlist.throws[0].through
     level = np.abs(solution.frozen[0, :, second, first])
     halves = np.flatnonzero(np.diff(level > 0.5 * level.max()))
     points = {}
@@ -307,20 +372,29 @@ def _carrier(
     states: Complex,
     vectors: Mapping[str, Array],
     results: list[Result],
-    envelopes: dict[tuple[float, float], Waveform],
+    found: Sequence[_Envelopes],
 ) -> None:
     points = case.design.numerics.carrier_points
+    method = f"quadrature of two runs with {points} points a period, less one without RF"
     for k, frequency in enumerate(case.design.carrier.frequency):
         quiet = None
         for level in case.design.carrier.level:
-            run, quiet = run_carrier(case, frequency, level, quiet)
-            envelopes[frequency, level] = run.envelope
-            record = record_of(case, frequency, run.envelope, states[:, k], vectors, run.large)
-            method = f"quadrature of two runs with {points} points a period, less one without RF"
-            results.append(_result(case, record, "carrier", method, {}))
+            runs, quiet = run_carrier(case, frequency, level, quiet)
+            waveforms = [run.envelope for run in runs]
+            for throw, run, envelopes in zip(case.netlist.throws, runs, found, strict=True):
+                envelopes.resolved[frequency, level] = run.envelope
+                record = record_of(case, throw, frequency, waveforms, states[:, k], vectors, run.large)
+                results.append(_result(case, throw, record, "carrier", method, {}))
 
 
-def _result(case: Case, record: Record, analysis: str, method: str, differences: Mapping[str, float]) -> Result:
+def _result(
+    case: Case,
+    throw: ThrowPlace,
+    record: Record,
+    analysis: str,
+    method: str,
+    differences: Mapping[str, float],
+) -> Result:
     figures = extract(record)
     faults = tuple(
         f"{_CHECKS[name]}, the envelope differs by {format_quantity(difference, 'dB')} from ngspice's AC analysis at "
@@ -342,14 +416,15 @@ def _result(case: Case, record: Record, analysis: str, method: str, differences:
         checked=tuple(_CHECKS[name] for name in differences),
         level=(record.stress or record.large).level,  # type: ignore[union-attr]
         ratings=judge_ratings(record),
+        throw=throw.name,
     )
-    return result if case.lean else _with_accounts(case, record, result)
+    return result if case.lean else _with_accounts(case, throw, record, result)
 
 
-def _with_accounts(case: Case, record: Record, result: Result) -> Result:
+def _with_accounts(case: Case, throw: ThrowPlace, record: Record, result: Result) -> Result:
     """Add what only the report of a single run shows."""
     budgets, accounts = _edges(record)
-    first = case.timeline.first_timing(record.biased_passes)
+    first = case.timeline.first_timing(throw.passes_high)
     return replace(
         result,
         rates=rate_study(record),

@@ -7,6 +7,7 @@ from collections.abc import Mapping
 
 import numpy as np
 
+from transim.circuit.assemble import ThrowPlace
 from transim.envelope.internal import RfSolution, solve_internal
 from transim.envelope.junction import Array
 from transim.envelope.network import Network
@@ -51,6 +52,8 @@ class StressSolution:
     ----------
     case : Case
         The circuit.
+    throw : ThrowPlace
+        The way of the RF; its source stands at the port that the RF enters.
     network : Network
         Linearised along the video run.
     vectors : mapping
@@ -62,12 +65,19 @@ class StressSolution:
     """
 
     def __init__(
-        self, case: Case, network: Network, vectors: Mapping[str, Array], states: tuple[Complex, int], carrier: float
+        self,
+        case: Case,
+        throw: ThrowPlace,
+        network: Network,
+        vectors: Mapping[str, Array],
+        states: tuple[Complex, int],
+        carrier: float,
     ) -> None:
         through, end = states
         self._case = case
+        self._throw = throw
         self._vectors = vectors
-        port = case.netlist.ports[case.netlist.through[0]]
+        port = case.netlist.ports[throw.through[0]]
         self._settled = np.array([0, end], dtype=np.intp)
         self._solution: RfSolution = solve_internal(network.at(self._settled), port, carrier)
         instants = _transition_points(np.abs(through))
@@ -87,7 +97,7 @@ class StressSolution:
         """Return the stress at a level [dBm]."""
         case = self._case
         amplitude = amplitude_of(level, case.design.carrier.impedance)
-        passes = bool(case.design.switch.path.passes)
+        passes = self._throw.passes_high
         junctions = [
             junction
             for k, high in enumerate((False, True))

@@ -32,12 +32,15 @@ class CaseLabel:
         Its name.
     temperature, carrier, level : float
         [degC], [Hz], [dBm].
+    throw : str
+        Name of the throw; empty where the path has a single way.
     """
 
     driver: str
     temperature: float
     carrier: float
     level: float
+    throw: str = ""
 
 
 @dataclass(frozen=True)
@@ -107,6 +110,7 @@ class Table:
             "value": self.values.reshape(*shape, len(self.parameters)),
             "metric_unit": np.array([f"{name} {METRICS[name].unit}" for name in self.figures]),
             "case.driver": np.array([case.driver for case in self.cases], dtype=np.str_),
+            "case.throw": np.array([case.throw for case in self.cases], dtype=np.str_),
             "case.temperature": np.array([case.temperature for case in self.cases]),
             "case.carrier": np.array([case.carrier for case in self.cases]),
             "case.level": np.array([case.level for case in self.cases]),
@@ -134,7 +138,7 @@ class Table:
         writer = csv.writer(stream, lineterminator="\n")
         head = [f"{name} [{unit}]" for name, unit in zip(self.parameters, self.units, strict=True)]
         metrics = [f"{name} [{METRICS[name].unit}]" for name in self.figures]
-        labels = ["driver", "temperature [degC]", "carrier [Hz]", "level [dBm]"]
+        labels = ["driver", "throw", "temperature [degC]", "carrier [Hz]", "level [dBm]"]
         writer.writerow(
             ["place", *head, "failed", "all limits met", "smallest margin", *labels, "limits met", *metrics]
         )
@@ -150,7 +154,7 @@ class Table:
                 writer.writerow(start)
                 continue
             for c, case in enumerate(self.cases):
-                label = [case.driver, *map(_number, (case.temperature, case.carrier, case.level))]
+                label = [case.driver, case.throw, *map(_number, (case.temperature, case.carrier, case.level))]
                 figures = [_number(values[n, c]) for values in self.figures.values()]
                 writer.writerow([*start, *label, _word(self.case_good[n, c]), *figures])
         write_whole(path, stream.getvalue())
@@ -228,7 +232,7 @@ def _label(case: CaseFigures, parameters: Sequence[str]) -> CaseLabel:
         "level": "carrier.level",
     }
     found = {key: float("nan") if name in parameters else getattr(case, key) for key, name in varied.items()}
-    return CaseLabel(case.driver, **found)
+    return CaseLabel(case.driver, **found, throw=case.throw)
 
 
 def _number(value: float) -> str:

@@ -110,11 +110,13 @@ def junction_powers(case: Case, vectors: Mapping[str, Array]) -> dict[str, Wavef
     return found
 
 
-def driver_output_power(vectors: Mapping[str, Array]) -> Waveform:
-    """Return the power out of the driver.
+def driver_output_power(case: Case, vectors: Mapping[str, Array]) -> Waveform:
+    """Return the power out of the drivers of all bias entries.
 
     Parameters
     ----------
+    case : Case
+        The circuit.
     vectors : mapping
         The video run, by name as ngspice prints it.
 
@@ -123,7 +125,8 @@ def driver_output_power(vectors: Mapping[str, Array]) -> Waveform:
     Waveform
         [W].
     """
-    return Waveform(vectors["time"], vectors["v(drive)"] * vectors["i(vdrive)"], "W")
+    powers = [vectors[f"v({feed.node})"] * vectors[f"i({feed.ammeter})"] for feed in case.netlist.feeds]
+    return Waveform(vectors["time"], np.sum(powers, axis=0), "W")
 
 
 def supply_currents(case: Case, vectors: Mapping[str, Array]) -> dict[str, Waveform]:
