@@ -13,6 +13,7 @@ from hypothesis import strategies as st
 
 from transim.measure import METRICS, Definitions, Record, Timing, Waveform, extract
 from transim.measure.holdoff import smallest_reverse_bias
+from transim.measure.levels import full_on
 from transim.measure.rf import JunctionRf, LargeSignal, RfStress
 
 NS = 1e-9
@@ -117,6 +118,14 @@ def test_levels_stand_one_period_before_the_end_of_their_interval():
     assert value(record, "level_loss") == pytest.approx(-20.0 * math.log10(0.8))
     assert value(record, "level_isolation") == pytest.approx(60.0)
     assert value(record, "on_compression") == pytest.approx(20.0 * math.log10(0.9 / 0.8))
+
+
+def test_full_level_at_the_end_of_the_pulse_does_not_see_the_next_edge():
+    # the spike of the last 5 ns is of the next edge: 100 % stays 0.8, as level_loss has it
+    given = cycle(large=large())
+    record = replace(given, definitions=replace(given.definitions, reference="end_of_pulse"))
+    assert full_on(record) == pytest.approx(0.8)
+    assert full_on(replace(record, large=None)) != pytest.approx(0.8, rel=0.01)
 
 
 def test_peak_power_is_that_of_the_judged_cycle():

@@ -46,7 +46,7 @@ def test_envelope_and_carrier_analysis_agree(example, driver, period, frequency)
             assert mine.value == pytest.approx(other.value, rel=0.01 if frequency >= 100e6 else 0.03)
     # settled off before the first edge, on at the end of the pulse: two carrier periods clear of the edges
     timeline = timeline_of(design)
-    waves = [run.envelopes[name, frequency] for name in ("envelope", "carrier")]
+    waves = [run.throws[0].envelopes[name, frequency] for name in ("envelope", "carrier")]
     off = timeline.rising - timeline.edge - 2.0 / frequency
     isolation = -20.0 * math.log10(abs(waves[1].at(off)))
     assert isolation == pytest.approx(envelope.figures["isolation"].value, abs=0.3)

@@ -77,7 +77,7 @@ def compare(design, engine):
     for name in ("on_time", "off_time"):
         assert envelope.figures[name].value == pytest.approx(carrier.figures[name].value, rel=0.01)
     timeline = timeline_of(design)
-    waves = [run.envelopes[name, frequency] for name in ("envelope", "carrier")]
+    waves = [run.throws[0].envelopes[name, frequency] for name in ("envelope", "carrier")]
     for instant, tolerance in ((timeline.falling, 0.05), (timeline.rising, 0.3)):
         settled = instant - timeline.edge - 2.0 / frequency
         levels = [20.0 * math.log10(abs(wave.at(settled))) for wave in waves]

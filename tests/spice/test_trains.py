@@ -189,7 +189,7 @@ def test_shortest_pulse_and_gap_are_what_causality_says(tmp_path, engine):
     design = design_of(tmp_path, on="1.5 us", period="4 us", tail="[measure]\nshortest = true\n")
     outcome = run_design(design, engine)
     (case,) = outcome.cases
-    figures, found = case.results[0].figures, case.shortest
+    figures, found = case.results[0].figures, case.throws[0].shortest
     for usable, metric in ((found.pulse, "on_settling"), (found.gap, "off_time")):
         needed = figures[metric].value + EDGE / 2.0
         assert 0.0 < usable.tolerance <= 0.01 * usable.value
@@ -201,12 +201,12 @@ def test_shortest_pulse_and_gap_are_what_causality_says(tmp_path, engine):
 def test_shortest_is_looked_for_on_request_only(tmp_path, engine):
     design = design_of(tmp_path)
     (case,) = run_design(design, engine).cases
-    assert case.shortest is None
+    assert case.throws[0].shortest is None
     assert "on request" in case.results[0].figures["shortest_pulse"].note
     short = replace_pulse(design, 60e-9)
     (case,) = run_design(short.model_copy(update={"shortest": True}), engine).cases
-    assert case.shortest.pulse.value is None
-    assert case.shortest.pulse.note.startswith("not even a pulse of 60 ns is usable: at 150 MHz RF ")
+    assert case.throws[0].shortest.pulse.value is None
+    assert case.throws[0].shortest.pulse.note.startswith("not even a pulse of 60 ns is usable: at 150 MHz RF ")
 
 
 def replace_pulse(design, on_for):

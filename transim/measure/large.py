@@ -7,12 +7,11 @@ import math
 import numpy as np
 
 from transim.errors import MeasurementError
-from transim.measure.levels import off_envelope, on_envelope, static_on
+from transim.measure.levels import end_level, off_envelope, on_envelope, static_on
 from transim.measure.metrics import metric
 from transim.measure.pulse import off_delay, off_time, on_delay, on_time
 from transim.measure.record import Record
 from transim.measure.rf import LargeSignal
-from transim.measure.waveform import Waveform
 
 __all__ = [
     "bias_shift_off",
@@ -35,7 +34,7 @@ def _large(record: Record) -> LargeSignal:
 def level_loss(record: Record) -> float:
     """Return the loss at the end of the on interval at the real level [dB]."""
     _large(record)
-    return _decibels(abs(_before_end(record, on_envelope(record))))
+    return _decibels(abs(end_level(record, on_envelope(record))))
 
 
 @metric(
@@ -47,7 +46,7 @@ def level_loss(record: Record) -> float:
 def level_isolation(record: Record) -> float:
     """Return the isolation at the end of the off interval at the real level [dB]."""
     _large(record)
-    return _decibels(abs(_before_end(record, off_envelope(record))))
+    return _decibels(abs(end_level(record, off_envelope(record))))
 
 
 @metric(
@@ -109,12 +108,6 @@ def hot_switching_energy(record: Record) -> float:
         sum(float(np.real(power.between(*span).integral())) for span in spans)
         for power in large.junction_power.values()
     )
-
-
-def _before_end(record: Record, envelope: Waveform) -> complex:
-    """Return the envelope where its average, which reaches over one carrier period, does not yet see the next edge."""
-    latest = float(envelope.time[-1]) - 1.0 / record.carrier
-    return complex(envelope.at(max(latest, float(envelope.time[0]))))
 
 
 def _decibels(magnitude: float) -> float:

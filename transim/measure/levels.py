@@ -9,7 +9,7 @@ from transim.measure.record import Record
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
 
-__all__ = ["full_on", "level_text", "off_envelope", "on_envelope", "static_on", "voltage_share"]
+__all__ = ["end_level", "full_on", "level_text", "off_envelope", "on_envelope", "static_on", "voltage_share"]
 
 
 def on_envelope(record: Record) -> Waveform:
@@ -90,6 +90,27 @@ def static_on(record: Record) -> complex:
     return record.static_on
 
 
+def end_level(record: Record, envelope: Waveform) -> complex:
+    """Return the envelope at the end of an interval.
+
+    Parameters
+    ----------
+    record : Record
+        The cycle.
+    envelope : Waveform
+        Of one interval.
+
+    Returns
+    -------
+    complex
+        Its last sample; of a carrier-resolved run, whose average reaches over one carrier period, the one that does
+        not yet see the next edge.
+    """
+    reach = 0.0 if record.large is None else 1.0 / record.carrier
+    latest = float(envelope.time[-1]) - reach
+    return complex(envelope.at(max(latest, float(envelope.time[0]))))
+
+
 def full_on(record: Record) -> float:
     """Return the level that is 100 %, by `definitions.reference`.
 
@@ -111,7 +132,7 @@ def full_on(record: Record) -> float:
     """
     if record.definitions.reference == "static":
         return abs(static_on(record))
-    level = abs(_envelope(record).at(record.timing.on_window()[1]))
+    level = abs(end_level(record, on_envelope(record)))
     if level <= 0.0:
         raise MeasurementError("no RF passes at the end of the on interval", level=0.0)
     return level

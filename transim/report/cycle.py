@@ -240,7 +240,9 @@ class Cycle:
         """
         if self.definitions.reference == "end_of_pulse":
             envelope = self.envelopes[analysis, carrier]
-            return float(np.interp(self.window("on")[1], envelope.time, np.abs(envelope.value)))
+            # as the metrics: an average over one carrier period must not see the next edge
+            end = self.window("on")[1] - (1.0 / carrier if analysis == "carrier" else 0.0)
+            return float(np.interp(end, envelope.time, np.abs(envelope.value)))
         loss = self.value("insertion_loss", analysis, carrier)
         return None if loss is None else float(10.0 ** (-loss / 20.0))
 

@@ -23,6 +23,9 @@ DATABASE, MANIFEST = "points.sqlite", "study.json"
 _OWN = (DATABASE, f"{DATABASE}-wal", f"{DATABASE}-shm", MANIFEST)
 _SCHEMA = "CREATE TABLE IF NOT EXISTS point (place TEXT PRIMARY KEY, failed INTEGER NOT NULL, text TEXT NOT NULL)"
 
+#: Goes up where a stored row gets another form.
+_ROWS = 2
+
 
 def study_key(kind: str, setup: Setup, definition: Mapping[str, Any], engine: int) -> str:
     """Return what tells one study from another: whatever can change a figure is in it.
@@ -47,6 +50,7 @@ def study_key(kind: str, setup: Setup, definition: Mapping[str, Any], engine: in
     content = {
         "kind": kind,
         "version": __version__,
+        "rows": _ROWS,
         "engine": engine,
         "definition": definition,
         "parameters": setup.parameters,
