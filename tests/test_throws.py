@@ -8,8 +8,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from transim.circuit.assemble import assemble
-from transim.circuit.decks import Origin, carrier_deck, static_deck
-from transim.circuit.decks import Tone
+from transim.circuit.decks import Origin, Tone, carrier_deck, static_deck
 from transim.circuit.timeline import timeline_of
 from transim.design.toml import read_design
 from transim.errors import MeasurementError, NetlistError, TopologyError
