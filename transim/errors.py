@@ -220,6 +220,7 @@ class LinearisationError(NetlistError):
     def __init__(self, element: str, reason: str) -> None:
         super().__init__(f"{element}: {reason}")
         self.element = element
+        self.reason = reason
 
 
 class RecordError(NetlistError):

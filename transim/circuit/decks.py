@@ -15,7 +15,9 @@ __all__ = [
     "Origin",
     "Tone",
     "carrier_deck",
-    "control_block", "deck_head",
+    "control_block",
+    "deck_head",
+    "entered_ports",
     "option_cards",
     "point_deck",
     "quiet_ports",
@@ -244,7 +246,6 @@ def point_deck(
     numerics: Numerics,
     origin: Origin,
     saved: Sequence[str],
-    entered: Sequence[int],
 ) -> Deck:
     """Write the deck of a study's point: what the static and the video deck find, in one process.
 
@@ -267,8 +268,6 @@ def point_deck(
         For the head.
     saved : sequence of str
         Device vectors to save beside all node voltages and branch currents.
-    entered : sequence of int
-        Places of the ports that RF enters.
 
     Returns
     -------
@@ -287,7 +286,7 @@ def point_deck(
         "set appendwrite",
         f"foreach level {deck_number(control.low)} {deck_number(control.high)}",
         "  alter vcontrol dc = $level",
-        *_excitations(netlist, [netlist.ports[place] for place in entered], frequencies, "point.raw"),
+        *_excitations(netlist, [netlist.ports[place] for place in entered_ports(netlist)], frequencies, "point.raw"),
         "end",
         "quit 0",
     ]
@@ -302,6 +301,11 @@ def point_deck(
         + "\n"
     )
     return Deck("point", text, writes_raw=True, stop=timeline.stop)
+
+
+def entered_ports(netlist: Netlist) -> tuple[int, ...]:
+    """Return the places of the ports that RF enters, in their order."""
+    return tuple(sorted({throw.through[0] for throw in netlist.throws}))
 
 
 def _excitations(netlist: Netlist, entered: Sequence[RfPort], frequencies: Sequence[float], raw: str) -> list[str]:

@@ -37,6 +37,9 @@ _REFUSED = {
     "n": "compiled model",
 }
 
+#: What ngspice prints for a VDMOS, and what it reads.
+_VDMOS = re.compile(r"^(\.model\s+\S+\s+)vdmos([np])\s*\(", re.IGNORECASE)
+_VDMOS_KINDS = {"n": "vdmos(", "p": "vdmos(pchan "}
 #: Terminals of elements whose line does not tell by a model's name where they end.
 _TERMINALS = {"r": 2, "c": 2, "l": 2, "b": 2, "e": 2, "g": 2, "f": 2, "h": 2, "v": 2, "i": 2, "w": 2, "t": 4, "k": 0}
 #: Elements whose current depends on the voltages at their own terminals only.
@@ -157,6 +160,12 @@ class Circuit:
     opaque: tuple[Opaque, ...]
     lines: tuple[str, ...]
     delays: tuple[Line, ...] = ()
+
+    @property
+    def model_cards(self) -> tuple[str, ...]:
+        """Its ``.model`` lines in a form that ngspice reads again: of what it prints for a VDMOS it does not."""
+        cards = (line for line in self.lines if line.lower().startswith(".model"))
+        return tuple(_VDMOS.sub(lambda match: match[1] + _VDMOS_KINDS[match[2].lower()], card) for card in cards)
 
     @property
     def refused(self) -> tuple[LinearisationError, ...]:

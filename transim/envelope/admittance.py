@@ -97,12 +97,15 @@ def biased_instants(elements: Sequence[Opaque], bias: Bias) -> npt.NDArray[np.in
 
 
 def admittance_deck(
-    elements: Sequence[Opaque], quiet: frozenset[str], circuit: Circuit, bias: Bias, frequency: float, origin: Origin
-) -> Deck:
+    name: str, elements: Sequence[Opaque], quiet: frozenset[str], circuit: Circuit, bias: Bias, frequency: float,
+    origin: Origin,
+) -> Deck:  # fmt: skip
     """Write a deck in which each element stands alone, once for each instant and excited node.
 
     Parameters
     ----------
+    name : str
+        Stem of its file name.
     elements : sequence of Opaque
         Elements whose line stands for itself.
     quiet : frozenset of str
@@ -121,27 +124,27 @@ def admittance_deck(
     Deck
         Its raw file holds one AC plot.
     """
-    lines = [line for line in circuit.lines if line.lower().startswith(".model")]
+    lines = list(circuit.model_cards)
     for place, element in enumerate(elements):
         different = list(dict.fromkeys(node for node in element.nodes if node != "0"))
         for excited, node in enumerate(_open_nodes(element, quiet)):
             for point in range(bias.points):
                 stem = f"{place}_{excited}_{point}"
-                own = {name: f"n{stem}_{k}" for k, name in enumerate(different)}
-                for k, name in enumerate(different):
-                    volts = deck_number(float(bias.voltage(name)[point]))
-                    lines.append(f"V{stem}_{k} {own[name]} 0 DC {volts} AC {1 if name == node else 0}")
-                wires = " ".join(own.get(name, "0") for name in element.nodes)
+                own = {other: f"n{stem}_{k}" for k, other in enumerate(different)}
+                for k, other in enumerate(different):
+                    volts = deck_number(float(bias.voltage(other)[point]))
+                    lines.append(f"V{stem}_{k} {own[other]} 0 DC {volts} AC {1 if other == node else 0}")
+                wires = " ".join(own.get(other, "0") for other in element.nodes)
                 lines.append(f"{element.name[0]}{stem} {wires} {element.rest}")
     what = [
         "Admittance: elements that the envelope analysis has no form of, each alone at the voltages of instants of the",
         "video run; AC with 1 V at one of its nodes.",
     ]
     number = deck_number(frequency)
-    script = control_block([f"ac lin 1 {number} {number}", "write admittance.raw all"])
+    script = control_block([f"ac lin 1 {number} {number}", f"write {name}.raw all"])
     options = f".options temp={deck_number(origin.temperature)} noacct"
-    text = deck_head("admittance", origin, what, True) + "\n".join([*lines, options, *script, ".end"]) + "\n"
-    return Deck("admittance", text, writes_raw=True)
+    text = deck_head(name, origin, what, True) + "\n".join([*lines, options, *script, ".end"]) + "\n"
+    return Deck(name, text, writes_raw=True)
 
 
 def read_admittances(

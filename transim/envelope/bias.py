@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping
 
 import numpy as np
+import numpy.typing as npt
 
 from transim.envelope.junction import Array
 from transim.errors import RawFileError
@@ -31,6 +32,10 @@ class Bias:
     def points(self) -> int:
         """Number of samples."""
         return int(self.time.size)
+
+    def at(self, points: npt.NDArray[np.intp]) -> Bias:
+        """Return the bias at some of its samples only."""
+        return Bias({name: values[points] for name, values in self._vectors.items()}, self.time[points])
 
     def voltage(self, node: str) -> Array:
         """Return the voltage of a node to ground [V], shape (n,)."""

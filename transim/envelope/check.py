@@ -16,9 +16,10 @@ import numpy as np
 
 from transim.circuit.assemble import RfPort
 from transim.circuit.decks import Deck, Origin, control_block, deck_head
-from transim.circuit.elements import Behavioural, Circuit, Device
+from transim.circuit.elements import Behavioural, Circuit, Device, Opaque
 from transim.envelope.bias import Bias
 from transim.envelope.diode import DiodeLaw
+from transim.envelope.linearise import opaque_elements
 from transim.envelope.transistor import TransistorLaw
 from transim.quantities import deck_number
 
@@ -50,8 +51,11 @@ def bias_check_deck(
     Deck
         Its raw file holds one AC plot for each port and frequency.
     """
-    imposed = _ImposedBias(bias, min(frequencies), origin.temperature)
-    body = [text for line in circuit.lines if (text := imposed.rewrite(line, circuit))]
+    imposed = _ImposedBias(
+        bias, min(frequencies), origin.temperature, opaque_elements(circuit, origin.temperature)
+    )
+    body = [*circuit.model_cards]
+    body += [text for line in circuit.lines if (text := imposed.rewrite(line, circuit))]
     nodes = " ".join(f"v({port.node})" for port in ports)
     steps = []
     for port in ports:
@@ -73,8 +77,9 @@ def bias_check_deck(
 class _ImposedBias:
     """Rewrites listing lines so that nonlinear elements hang on twins of their nodes."""
 
-    def __init__(self, bias: Bias, lowest: float, temperature: float) -> None:
+    def __init__(self, bias: Bias, lowest: float, temperature: float, opaque: Sequence[Opaque]) -> None:
         self.bias = bias
+        self.opaque = opaque
         self.temperature = temperature
         # a coupling much better than 1e-5 ohm costs ngspice's matrix the digits of small conductances
         self.capacitance = deck_number(1e5 / (2.0 * math.pi * lowest))
@@ -101,9 +106,13 @@ class _ImposedBias:
         words = line.split()
         name = words[0].lower() if words else ""
         if not name[:1].isalpha():
-            return line if name == ".model" else ""
+            return ""
         if name[0] in "vi":
             return f"{words[0]} {words[1]} {words[2]} DC 0 AC 0"
+        for element in self.opaque:
+            # the element itself, at its bias: ngspice knows what the envelope has no form of
+            if element.name == name and element.rest is not None:
+                return f"{words[0]} {' '.join(map(self.twin, element.nodes))} {element.rest}"
         for device in circuit.devices:
             if device.name == name:
                 return self._diode(device) if name[0] == "d" else self._transistor(device)

@@ -115,13 +115,15 @@ class Doubt:
         voltages = solve_linear(np.asarray(system), solved.open_voltage[:, used])
         return np.asarray(solved.s - solved.reach[:, :, used] @ (y @ voltages))
 
-    def whatever(self, name: str) -> float:
+    def whatever(self, name: str, enough: float) -> float:
         """Return by how much an element moves any entry of S at most, open, tied together or anything between [dB].
 
         Parameters
         ----------
         name : str
             The element; the others are open, or have all their terminals tied together.
+        enough : float
+            Change above which nothing more is tried [dB].
         """
         others = sum(
             (self._tied(other) for other in self._elements if other != name), np.zeros((len(self._nodes),) * 2, complex)
@@ -133,21 +135,11 @@ class Doubt:
                 for trial in self._trials(name):
                     after = level_of(self._changed(solved, rest + trial))
                     largest = max(largest, float(np.abs(after - before).max()))
+                    if largest > enough:
+                        return largest
                 if not others.any():
                     break
         return largest
-
-    def open_or_tied(self, name: str, pairs: Sequence[tuple[int, int]]) -> float:
-        """Return the change of some transmissions when an element is tied together that is open, or the reverse [dB].
-
-        Parameters
-        ----------
-        name : str
-            The element.
-        pairs : sequence of tuple of int
-            Places of the ports from and to which RF goes.
-        """
-        return max(self._difference(solved, self._tied(name), pairs) for solved in self._solved)
 
     def by_share(
         self, found: Sequence[Mapping[str, Admittance]], middle: int, share: float, pairs: Sequence[tuple[int, int]]
@@ -202,13 +194,12 @@ class Doubt:
     def _between(self, first: Sequence[int], second: Sequence[int], y: complex) -> Complex:
         """Return an admittance between two groups of nodes; an empty group is ground."""
         whole = np.zeros((len(self._nodes), len(self._nodes)), dtype=complex)
-        for i in first:
-            whole[i, i] += y
-            for k in second:
-                whole[k, k] += y
-                whole[i, k] -= y
-                whole[k, i] -= y
-                whole[i, i] += y * (k != second[0])
+        # either group has one node where the other has several
+        for i in first or (-1,):
+            for k in second or (-1,):
+                for row, column, sign in ((i, i, 1.0), (k, k, 1.0), (i, k, -1.0), (k, i, -1.0)):
+                    if row >= 0 and column >= 0:
+                        whole[row, column] += sign * y
         return whole
 
     def _tied(self, name: str) -> Complex:

@@ -12,18 +12,15 @@ import numpy.typing as npt
 
 from transim.circuit.assemble import RfPort
 from transim.envelope.network import Network
-from transim.envelope.scatter import Complex, Scattering, excitation, scatter, solve_linear
+from transim.envelope.reduction import Reduction
+from transim.envelope.scatter import Scattering, excitation, scatter_at_ports
 
 __all__ = ["changing_points", "solve_frozen"]
 
-#: Time points solved at once: bounds the memory of a batch.
-_BATCH = 2048
 #: Change of an entry that asks for a new solution; linear interpolation then errs by its square.
 _SHARE = 2e-3
 #: Time points that are compared at once.
 _AHEAD = 8
-#: An inner part worse than this is not eliminated.
-_WORST_CONDITION = 1e12
 
 
 def changing_points(network: Network, share: float = _SHARE) -> npt.NDArray[np.intp]:
@@ -63,7 +60,9 @@ def changing_points(network: Network, share: float = _SHARE) -> npt.NDArray[np.i
     return np.unique(np.array(points, dtype=np.intp))
 
 
-def solve_frozen(network: Network, ports: Sequence[RfPort], frequency: Sequence[float]) -> Scattering:
+def solve_frozen(
+    network: Network, ports: Sequence[RfPort], frequency: Sequence[float], reduction: Reduction | None = None
+) -> Scattering:
     """Solve the network at every time point as if it stood still.
 
     Parameters
@@ -74,6 +73,8 @@ def solve_frozen(network: Network, ports: Sequence[RfPort], frequency: Sequence[
         p ports.
     frequency : sequence of float
         f carriers [Hz].
+    reduction : Reduction or None
+        Of a network of the same circuit, if there is one.
 
     Returns
     -------
@@ -86,56 +87,13 @@ def solve_frozen(network: Network, ports: Sequence[RfPort], frequency: Sequence[
     """
     points = changing_points(network)
     thin = network.at(points)
-    kept = _kept(network, ports)
+    reduction = reduction or Reduction(thin, 2j * np.pi * frequency[0])
+    right = excitation(network, ports)
+    nodes = np.array([network.unknowns[f"v:{port.node}"] for port in ports], dtype=np.intp)
     s = np.empty((len(frequency), network.time.size, len(ports), len(ports)), dtype=complex)
     for k, carrier in enumerate(frequency):
-        solved = _solve_at(thin, ports, 2j * np.pi * carrier, kept)
+        solved = scatter_at_ports(ports, reduction.solve(thin, right, 2j * np.pi * carrier, nodes))
         for row in range(len(ports)):
             for column in range(len(ports)):
                 s[k, :, row, column] = np.interp(network.time, thin.time, solved[:, row, column])
     return Scattering(network.time, np.asarray(frequency, dtype=float), s, "frozen")
-
-
-def _kept(network: Network, ports: Sequence[RfPort]) -> npt.NDArray[np.intp]:
-    """Return the unknowns that have to stay: those of entries that change, and what only they hold together."""
-    kept = {*network.rows.tolist(), *network.columns.tolist()}
-    for port in ports:
-        kept |= {network.unknowns[f"v:{port.node}"], network.unknowns[f"i:{port.source}"]}
-    pattern = (network.constant_g != 0.0) | (network.constant_c != 0.0)
-    for entry in network.delays:
-        pattern[entry.row, entry.column] = True
-    rest = set(range(network.size)) - kept
-    # a source between two nodes that stay has an empty row among the rest, and cannot be eliminated
-    lonely = rest
-    while lonely:
-        columns = sorted(rest)
-        lonely = {row for row in rest if not (pattern[row, columns].any() and pattern[columns, row].any())}
-        rest -= lonely
-    return np.array(sorted(set(range(network.size)) - rest), dtype=np.intp)
-
-
-def _solve_at(
-    network: Network, ports: Sequence[RfPort], omega: complex, kept: npt.NDArray[np.intp]
-) -> Complex:
-    """Return S at every time point, shape (n, p, p), for one j w; unknowns that are not kept are eliminated once."""
-    right = excitation(network, ports)
-    matrix = network.constant(omega)
-    rest = np.setdiff1d(np.arange(network.size), kept)
-    if rest.size:
-        inner = matrix[np.ix_(rest, rest)]
-        if np.linalg.cond(inner) > _WORST_CONDITION:
-            kept = np.arange(network.size)
-        else:
-            matrix[np.ix_(kept, kept)] -= matrix[np.ix_(kept, rest)] @ np.linalg.solve(
-                inner, matrix[np.ix_(rest, kept)]
-            )
-    matrix = matrix[np.ix_(kept, kept)]
-    rows, columns = np.searchsorted(kept, network.rows), np.searchsorted(kept, network.columns)
-    varying = network.varying_g + omega * network.varying_c
-    x = np.zeros((network.time.size, network.size, len(ports)), dtype=complex)
-    for first in range(0, network.time.size, _BATCH):
-        batch = slice(first, first + _BATCH)
-        matrices = np.broadcast_to(matrix, (len(varying[batch]), *matrix.shape)).copy()
-        matrices[:, rows, columns] += varying[batch]
-        x[batch, kept] = solve_linear(matrices, right[kept])
-    return scatter(network, ports, x)

@@ -10,7 +10,7 @@ import numpy.typing as npt
 from transim.circuit.assemble import RfPort
 from transim.envelope.junction import Array
 from transim.envelope.network import Network
-from transim.envelope.scatter import solve_linear
+from transim.envelope.reduction import Reduction
 
 __all__ = ["RfSolution", "solve_internal"]
 
@@ -88,8 +88,4 @@ def solve_internal(network: Network, port: RfPort, carrier: float) -> RfSolution
     right = np.zeros((network.size, 1), dtype=complex)
     right[network.unknowns[f"i:{port.source}"], 0] = 1.0
     omega = 2j * np.pi * carrier
-    matrices = np.broadcast_to(
-        network.constant(omega), (network.time.size, network.size, network.size)
-    ).copy()
-    matrices[:, network.rows, network.columns] += network.varying_g + omega * network.varying_c
-    return RfSolution(network, solve_linear(matrices, right)[:, :, 0])
+    return RfSolution(network, Reduction(network, omega).solve(network, right, omega)[:, :, 0])

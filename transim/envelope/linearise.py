@@ -29,6 +29,10 @@ def saved_vectors(circuit: Circuit) -> tuple[str, ...]:
     )
 
 
+#: An entry that changes by a smaller share is a constant: its changes are rounding.
+_STILL = 1e-12
+
+
 class _Stamps:
     """Collects the entries of G and C."""
 
@@ -82,9 +86,10 @@ class _Stamps:
         for kind, entries in self.constant.items():
             for (row, column), value in entries.items():
                 fixed[kind][row, column] += value
-        places = sorted({*self.varying["g"], *self.varying["c"]})
+        changing = {kind: self._changing(kind, fixed[kind]) for kind in "gc"}
+        places = sorted({*changing["g"], *changing["c"]})
         varying = {kind: np.zeros((self.points, len(places))) for kind in "gc"}
-        for kind, table in self.varying.items():
+        for kind, table in changing.items():
             for k, place in enumerate(places):
                 if place in table:
                     varying[kind][:, k] = table[place]
@@ -101,6 +106,17 @@ class _Stamps:
             tuple(self.junctions),
             tuple(self.delays),
         )
+
+    def _changing(self, kind: str, fixed: Array) -> dict[tuple[int, int], Array]:
+        """Return the entries that change with time; those that do not are added to the fixed ones."""
+        changing = {}
+        for place, values in self.varying[kind].items():
+            first = values[0]
+            if np.abs(values - first).max() <= _STILL * abs(first):
+                fixed[place] += first
+            else:
+                changing[place] = values
+        return changing
 
 
 def opaque_elements(circuit: Circuit, temperature: float) -> tuple[Opaque, ...]:

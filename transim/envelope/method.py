@@ -12,6 +12,7 @@ from transim.circuit.assemble import RfPort
 from transim.envelope.frozen import solve_frozen
 from transim.envelope.junction import Array
 from transim.envelope.network import Network
+from transim.envelope.reduction import Reduction
 from transim.envelope.ringing import solve_ringing
 from transim.envelope.scatter import Scattering
 
@@ -95,12 +96,12 @@ def solve_envelope(
     LinearisationError
         If the network is singular.
     """
-    frozen = solve_frozen(network, ports, frequency)
+    reduction = Reduction(network, 2j * np.pi * frequency[0])
+    frozen = solve_frozen(network, ports, frequency, reduction)
     methods, reasons = [], []
     for k, carrier in enumerate(frequency):
-        transition = max(
-            (_transition(network, ports, carrier, pair, frozen.s[k]) for pair in pairs), key=lambda one: one.share
-        )
+        each = [_transition(_Pair(network, ports, pair, reduction), carrier, frozen.s[k]) for pair in pairs]
+        transition = max(each, key=lambda one: one.share)
         methods.append(wanted if wanted != "auto" else ("ringing" if transition.slow_network else "frozen"))
         share = transition.share
         reason = (
@@ -118,39 +119,41 @@ def solve_envelope(
     return Envelope(network.time, s, frozen.s, tuple(methods), tuple(reasons))
 
 
-def _transition(
-    network: Network,
-    ports: Sequence[RfPort],
-    carrier: float,
-    pair: tuple[int, int],
-    s: npt.NDArray[np.complex128],
-) -> Transition:
-    level = np.abs(s[:, pair[1], pair[0]])
+@dataclass(frozen=True)
+class _Pair:
+    """A network, and the pair of its ports that is looked at."""
+
+    network: Network
+    ports: Sequence[RfPort]
+    pair: tuple[int, int]
+    reduction: Reduction
+
+
+def _transition(way: _Pair, carrier: float, s: npt.NDArray[np.complex128]) -> Transition:
+    time = way.network.time
+    level = np.abs(s[:, way.pair[1], way.pair[0]])
     top = float(level.max())
-    fastest = min(_shortest(network.time, level / top), _shortest(network.time, 1.0 - level / top))
+    fastest = min(_shortest(time, level / top), _shortest(time, 1.0 - level / top))
     passing = np.flatnonzero(level >= _PASSING * top)
     sample = passing[np.unique(np.linspace(0, passing.size - 1, 32).astype(int))]
-    delay = float(_group_delay(network.at(sample), ports, carrier, pair).max())
+    delay = float(_group_delay(way, sample, carrier).max())
     return Transition(delay, fastest)
 
 
 def _shortest(time: Array, level: Array) -> float:
     """Return the shortest time from below 0.1 to above 0.9 of a level [s]; infinite without such a change."""
-    shortest = np.inf
-    low = -1
-    for k in np.flatnonzero((level <= 0.1) | (level >= 0.9)):
-        if level[k] <= 0.1:
-            low = int(k)
-        elif low >= 0:
-            shortest = min(shortest, float(time[k] - time[low]))
-            low = -1
-    return shortest
+    outside = np.flatnonzero((level <= 0.1) | (level >= 0.9))
+    low = level[outside] <= 0.1
+    rises = np.flatnonzero(low[:-1] & ~low[1:])
+    return float(np.min(time[outside[rises + 1]] - time[outside[rises]], initial=np.inf))
 
 
-def _group_delay(network: Network, ports: Sequence[RfPort], carrier: float, pair: tuple[int, int]) -> Array:
-    """Return |d ln S / dw| at every time point [s]: group delay, amplitude slope included."""
+def _group_delay(way: _Pair, points: npt.NDArray[np.intp], carrier: float) -> Array:
+    """Return |d ln S / dw| at some time points [s]: group delay, amplitude slope included."""
     spread = 1e-4
-    both = solve_frozen(network, ports, [carrier * (1.0 - spread), carrier * (1.0 + spread)])
-    through = both.s[:, :, pair[1], pair[0]]
+    both = solve_frozen(
+        way.network.at(points), way.ports, [carrier * (1.0 - spread), carrier * (1.0 + spread)], way.reduction
+    )
+    through = both.s[:, :, way.pair[1], way.pair[0]]
     middle = 0.5 * (through[0] + through[1])
     return np.asarray(np.abs((through[1] - through[0]) / middle) / (2.0 * np.pi * carrier * 2.0 * spread))

@@ -158,6 +158,6 @@ class Network:
         for values, small in ((self.varying_g, _SMALL_G), (self.varying_c, _SMALL_C)):
             scaled = np.arcsinh(values / small)
             between = [np.interp(position, place, column) for column in scaled.T]
-            varying.append(small * np.sinh(np.stack(between, axis=1)) if between else values[:0])
+            varying.append(small * np.sinh(np.stack(between, axis=1)) if between else np.zeros((position.size, 0)))
         time = np.interp(position, place, self.time)
         return replace(self, varying_g=varying[0], varying_c=varying[1], time=time, junctions=())

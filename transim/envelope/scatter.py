@@ -12,7 +12,7 @@ from transim.circuit.assemble import RfPort
 from transim.envelope.network import Network
 from transim.errors import LinearisationError
 
-__all__ = ["Complex", "Scattering", "excitation", "scatter", "solve_linear"]
+__all__ = ["Complex", "Scattering", "excitation", "scatter", "scatter_at_ports", "solve_linear"]
 
 Complex = npt.NDArray[np.complex128]
 
@@ -58,9 +58,14 @@ def excitation(network: Network, ports: Sequence[RfPort]) -> Complex:
 def scatter(network: Network, ports: Sequence[RfPort], x: Complex) -> Complex:
     """Turn solutions, shape (..., m, p), into S-parameters, shape (..., p, p)."""
     nodes = [network.unknowns[f"v:{port.node}"] for port in ports]
+    return scatter_at_ports(ports, x[..., nodes, :])
+
+
+def scatter_at_ports(ports: Sequence[RfPort], voltages: Complex) -> Complex:
+    """Turn voltages at the ports, shape (..., p, p), into S-parameters of the same shape."""
     impedance = np.array([port.impedance for port in ports])
     scale = 2.0 * np.sqrt(impedance[None, :] / impedance[:, None])
-    return np.asarray(x[..., nodes, :] * scale - np.eye(len(ports)))
+    return np.asarray(voltages * scale - np.eye(len(ports)))
 
 
 def solve_linear(matrices: Complex, right: Complex) -> Complex:

@@ -11,7 +11,7 @@ from transim.circuit.assemble import RfPort
 from transim.engine.rawfile import Plot
 from transim.errors import RawFileError
 
-__all__ = ["largest_difference", "read_scattering"]
+__all__ = ["largest_difference", "level_of", "read_scattering"]
 
 Complex = npt.NDArray[np.complex128]
 #: Waves below -60 dB are noise of the check's own arithmetic; their decibels are not compared.
@@ -63,6 +63,11 @@ def read_scattering(
     return s
 
 
+def level_of(matrix: Complex) -> npt.NDArray[np.float64]:
+    """Return the levels of an S-matrix [dB], with a floor of -60 dB."""
+    return np.asarray(20.0 * np.log10(np.abs(matrix) + _FLOOR))
+
+
 def largest_difference(first: Complex, second: Complex) -> float:
     """Return the largest difference of two S-matrices [dB].
 
@@ -72,5 +77,5 @@ def largest_difference(first: Complex, second: Complex) -> float:
         The matrices; both get a floor of -60 dB. Columns of ports that `first` was not excited at are left out.
     """
     columns = np.flatnonzero(~np.isnan(first).all(axis=0))
-    levels = [20.0 * np.log10(np.abs(matrix[:, columns]) + _FLOOR) for matrix in (first, second)]
+    levels = [level_of(matrix[:, columns]) for matrix in (first, second)]
     return float(np.abs(levels[0] - levels[1]).max())

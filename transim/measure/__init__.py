@@ -4,7 +4,8 @@ Nothing here knows a deck or a circuit: a simulated cycle and an oscilloscope re
 """
 
 # Importing a module of figures enters them in the register, in the order of the imports.
-from transim.measure import pulse, settling, leakage, drive, dissipation, rate, static, holdoff, large, overlap, shortest  # isort: skip
+from transim.measure import pulse, settling, leakage, drive, dissipation, rate  # isort: skip
+from transim.measure import static, holdoff, large, overlap, shortest  # isort: skip
 from transim.measure.definitions import Definitions, Timing
 from transim.measure.limits import Judgement, Limit, Verdict, judge, verdict
 from transim.measure.metrics import METRICS, Figure, Metric, extract, metric

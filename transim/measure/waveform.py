@@ -3,13 +3,15 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass, field
-from typing import Literal
+from typing import Any, Literal, TypeVar, cast
 
 import numpy as np
 from numpy.typing import NDArray
 
 from transim.errors import MeasurementError
+from transim.measure.instants import Instants
 from transim.measure.pole import single_pole
 from transim.measure.spectrum import fourier_integral
 from transim.quantities import format_quantity
@@ -18,6 +20,7 @@ __all__ = ["Waveform"]
 
 Real = NDArray[np.float64]
 Samples = NDArray[np.float64] | NDArray[np.complex128]
+_Found = TypeVar("_Found")
 
 #: An instant may lie this share of the span outside it: engines round their last time point.
 END_ROUNDING = 1e-9
@@ -54,26 +57,24 @@ class Waveform:
     time: Real
     value: Samples
     unit: str
-    _cuts: dict[tuple[float, float], Waveform] = field(init=False, repr=False)
+    _instants: Instants = field(init=False, repr=False)
+    #: What was computed before: metrics ask for the same few intervals and extremes again and again.
+    _found: dict[object, Any] = field(init=False, repr=False)
 
     def __post_init__(self) -> None:
-        time = np.array(self.time, dtype=np.float64)
-        value = np.array(self.value)
-        value = value.astype(np.complex128 if np.iscomplexobj(value) else np.float64)
+        known = Instants.known(self.time)
+        time = np.array(self.time, dtype=np.float64) if known is None else known.time
+        value = np.array(self.value, dtype=np.complex128 if np.iscomplexobj(self.value) else np.float64)
         if time.ndim != 1 or value.shape != time.shape or time.size < 2:
             raise MeasurementError(
                 f"a waveform needs two or more times and as many values: found {time.shape} and {value.shape}"
             )
-        if not np.all(np.isfinite(time)):
-            raise MeasurementError("a time of the waveform is not a finite number")
-        back = np.flatnonzero(np.diff(time) <= 0.0)
-        if back.size:
-            raise MeasurementError(f"time does not increase after {format_quantity(time[back[0]], 's')}")
-        time.setflags(write=False)
+        instants = known or Instants(time)
         value.setflags(write=False)
-        object.__setattr__(self, "time", time)
+        object.__setattr__(self, "time", instants.time)
         object.__setattr__(self, "value", value)
-        object.__setattr__(self, "_cuts", {})
+        object.__setattr__(self, "_instants", instants)
+        object.__setattr__(self, "_found", {})
 
     def at(self, instant: float) -> complex:
         """Return the value at one instant, linear between samples.
@@ -114,18 +115,18 @@ class Waveform:
         MeasurementError
             If the interval is empty or leaves the waveform, or a sample is not finite.
         """
-        # the metrics ask for the same few intervals again and again
-        if (start, stop) in self._cuts:
-            return self._cuts[start, stop]
+        if (start, stop) in self._found:
+            return cast("Waveform", self._found[start, stop])
         if not start < stop:
             raise MeasurementError(f"empty interval at {format_quantity(start, 's')}", span=(start, stop))
         self._inside(start, stop)
-        first, last = max(start, float(self.time[0])), min(stop, float(self.time[-1]))
-        inner = self.time[(self.time > first) & (self.time < last)]
-        time = np.concatenate(([first], inner, [last]))
-        cut = Waveform(time, np.interp(time, self.time, self._finite()), self.unit)
-        self._cuts[start, stop] = cut
-        return cut
+        value = self._finite()
+        cut = self._instants.between(start, stop)
+        ends = np.interp(cut.instants.time[[0, -1]], self.time, value)
+        inner = value[cut.first : cut.first + cut.instants.time.size - 2]
+        found = Waveform(cut.instants.time, np.concatenate((ends[:1], inner, ends[1:])), self.unit)
+        self._found[start, stop] = found
+        return found
 
     def magnitude(self) -> Waveform:
         """Return the magnitude of the samples.
@@ -140,7 +141,7 @@ class Waveform:
         MeasurementError
             If a sample is not finite.
         """
-        return Waveform(self.time, np.abs(self._finite()), self.unit)
+        return self._once("magnitude", lambda: Waveform(self.time, np.abs(self._finite()), self.unit))
 
     def extremes(self) -> tuple[float, float]:
         """Return the smallest and the largest value.
@@ -155,8 +156,7 @@ class Waveform:
         MeasurementError
             If the waveform is complex or a sample is not finite.
         """
-        value = self._real()
-        return float(value.min()), float(value.max())
+        return self._once("extremes", lambda: (float(self._real().min()), float(self._real().max())))
 
     def peak(self) -> tuple[float, float]:
         """Return instant and value of the sample of largest magnitude, the first if there are several.
@@ -255,8 +255,11 @@ class Waveform:
         MeasurementError
             If the waveform is complex or a sample is not finite.
         """
+        return self._once("integral", self._integral)
+
+    def _integral(self) -> float:
         value = self._real()
-        return math.fsum(np.diff(self.time) * (value[:-1] + value[1:]) / 2.0)
+        return math.fsum((self._instants.steps * (value[:-1] + value[1:]) / 2.0).tolist())
 
     def square_integral(self) -> float:
         """Return the integral of the square over the whole waveform, exact for straight lines.
@@ -273,7 +276,7 @@ class Waveform:
         """
         value = self._real()
         first, second = value[:-1], value[1:]
-        return math.fsum(np.diff(self.time) * (first * first + first * second + second * second) / 3.0)
+        return math.fsum((self._instants.steps * (first * first + first * second + second * second) / 3.0).tolist())
 
     def fourier(self, frequency: float) -> complex:
         """Return the Fourier integral at one frequency, exact for straight lines.
@@ -324,9 +327,20 @@ class Waveform:
         """
         if not (math.isfinite(bandwidth) and bandwidth > 0.0):
             raise MeasurementError(f"the bandwidth of a low-pass must be above 0 Hz, found {bandwidth} Hz")
-        return Waveform(*single_pole(self.time, self._real(), bandwidth), self.unit)
+        return self._once(
+            ("lowpass", bandwidth), lambda: Waveform(*single_pole(self.time, self._real(), bandwidth), self.unit)
+        )
+
+    def _once(self, name: object, compute: Callable[[], _Found]) -> _Found:
+        """Return what was computed before, or compute it; samples never change."""
+        if name not in self._found:
+            self._found[name] = compute()
+        return cast("_Found", self._found[name])
 
     def _finite(self) -> Samples:
+        return self._once("finite", self._checked)
+
+    def _checked(self) -> Samples:
         finite = np.isfinite(self.value)
         if not finite.all():
             bad = np.flatnonzero(~finite)

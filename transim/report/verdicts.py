@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import replace
 
 from transim.measure.definitions import Definitions
 from transim.measure.limits import Judgement, Verdict
@@ -179,7 +180,8 @@ def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterato
             note = judgement.note or result.figures[judgement.metric].note
             yield from wrap(f"undefined: {judgement.metric} {_where(judgement, places[id(result)])}, {note}", "  ")
     yield from _remarks(results, places)
-    methods = {f"{result.analysis} at {places[id(result)]}": result.method for result in results}
+    # the slowest throw decides on the method of all
+    methods = {f"{result.analysis} at {_place(replace(result, throw=''), several)}": result.method for result in results}
     for place, method in methods.items():
         yield from wrap(f"{place}: {method}", "  ")
     checks = [result.check for result in results if result.check is not None]
@@ -258,8 +260,13 @@ def _where(judgement: Judgement, place: str) -> str:
 _COUNTED = {"PASS": "met", "FAIL": "missed", "UNDEFINED": "undefined"}
 
 
+def _carrier(result: Result) -> str:
+    on = f" on {result.throw}" if result.throw else ""
+    return f"{format_quantity(result.carrier, 'Hz', 12)}{on}"
+
+
 def _place(result: Result, several: bool) -> str:
-    place = format_quantity(result.carrier, "Hz", 12)
+    place = _carrier(result)
     return f"{place} and {format_quantity(result.temperature, 'degC', 12)}" if several else place
 
 

@@ -94,7 +94,8 @@ def video_waveforms(video: Plot, netlist: Netlist) -> dict[str, tuple[Array, str
     dict
         Samples and unit by name, all on the same instants: ``time``, ``control``, ``driver_voltage``,
         ``driver_current`` (positive into the bias entry; of a second one with its name), ``port_NAME``,
-        ``supply_current_NAME`` (positive out of the supply), and ``charge_NAME``, ``current_NAME``, ``reverse_NAME`` of each junction.
+        ``supply_current_NAME`` (positive out of the supply), and ``charge_NAME``, ``current_NAME``,
+        ``reverse_NAME`` of each junction.
     """
     found = {
         "time": (np.real(video["time"]), "s"),

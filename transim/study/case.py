@@ -9,7 +9,7 @@ from pathlib import Path
 import numpy as np
 
 from transim.circuit.assemble import Netlist, assemble
-from transim.circuit.decks import Deck, Origin, point_deck, static_deck, video_deck
+from transim.circuit.decks import Deck, Origin, entered_ports, point_deck, static_deck, video_deck
 from transim.circuit.elements import Circuit, read_listing
 from transim.circuit.timeline import Timeline, timeline_of
 from transim.design.model import Design, Driver
@@ -95,15 +95,15 @@ class Case:
             If the deck fails: there is no second try.
         """
         design, ports, frequencies = self.design, self.netlist.ports, self.design.carrier.frequency
-        entered = sorted({throw.through[0] for throw in self.netlist.throws})
         deck = point_deck(
-            self.netlist, design.control, self.timeline, frequencies, design.numerics, self.origin, saved, entered
+            self.netlist, design.control, self.timeline, frequencies, design.numerics, self.origin, saved
         )
         done = run_once(self.engine, deck, design.numerics)
         self.decks.append(deck)
         self.seconds += done.seconds
         video, *plots = done.plots
         half = len(plots) // 2
+        entered = entered_ports(self.netlist)
         states = [read_scattering(some, ports, frequencies, entered) for some in (plots[:half], plots[half:])]
         self.circuit = read_listing(done.log)
         return self.circuit, np.stack(states), self._kept(video)

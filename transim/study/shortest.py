@@ -10,8 +10,7 @@ import numpy as np
 
 from transim.circuit.assemble import ThrowPlace
 from transim.circuit.elements import Circuit
-from transim.envelope.bias import Bias
-from transim.envelope.linearise import linearise, saved_vectors
+from transim.envelope.linearise import saved_vectors
 from transim.envelope.method import solve_envelope
 from transim.envelope.stationary import Complex
 from transim.errors import EngineError, MeasurementError
@@ -23,6 +22,7 @@ from transim.measure.usable import Shortest, Usable
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
 from transim.study.case import Case
+from transim.study.linearised import linearised_case
 from transim.study.records import record_of
 
 __all__ = ["find_shortest", "wants_shortest"]
@@ -180,7 +180,7 @@ class _Trials:
         base.seconds += case.seconds
         vectors = {name: np.real(video.data[:, k]) for k, name in enumerate(video.names)}
         ports = case.netlist.ports
-        network = linearise(self._circuit, Bias(vectors, vectors["time"]), case.temperature, [p.source for p in ports])
+        network = linearised_case(case, self._circuit, vectors).network
         pairs = [throw.through for throw in case.netlist.throws]
         solution = solve_envelope(network, ports, frequencies, pairs, design.numerics.solution)
         throw = next(one for one in case.netlist.throws if one.name == self._throw.name)

@@ -15,9 +15,8 @@ from transim.circuit.elements import Circuit
 from transim.design.model import Design, Driver
 from transim.engine.ngspice import Engine
 from transim.engine.rawfile import Plot
-from transim.envelope.bias import Bias
 from transim.envelope.junction import Array
-from transim.envelope.linearise import linearise, saved_vectors
+from transim.envelope.linearise import saved_vectors
 from transim.envelope.method import Envelope, solve_envelope
 from transim.envelope.stationary import Complex, largest_difference
 from transim.errors import MeasurementError
@@ -35,6 +34,7 @@ from transim.quantities import format_quantity
 from transim.study.carrier import run_carrier
 from transim.study.case import Case
 from transim.study.holdoff import HoldOffProbe
+from transim.study.linearised import linearised_case
 from transim.study.probe import TurnOnProbe
 from transim.study.records import record_of
 from transim.study.settled import run_static_sweeps
@@ -310,9 +310,8 @@ def _envelope(
 ) -> None:
     design, netlist = case.design, case.netlist
     frequencies = design.carrier.frequency
-    network = linearise(
-        circuit, Bias(vectors, vectors["time"]), case.temperature, [p.source for p in netlist.ports]
-    )
+    linearised = linearised_case(case, circuit, vectors)
+    network = linearised.network
     pairs = [throw.through for throw in netlist.throws]
     solution = solve_envelope(network, netlist.ports, frequencies, pairs, design.numerics.solution)
     points = _check_points(case, solution)
@@ -345,7 +344,7 @@ def _envelope(
                     level_90 = voltage_share(record, 90) * full_on(record)
                     probe = probe or TurnOnProbe(case, throw, frequency, level_90, time)
                     warnings = (*probe.warnings(at_level), *warnings)
-                results.append(replace(result, warnings=warnings))
+                results.append(replace(result, warnings=warnings, notes=(*result.notes, *linearised.notes)))
 
 
 def _check_points(case: Case, solution: Envelope) -> dict[str, int]:
