@@ -14,7 +14,7 @@ import pytest
 from matplotlib.figure import Figure
 
 from transim.measure.sweep import BiasSweep
-from transim.report.cycle import Trace, cycles_of, thinned
+from transim.report.cycle import cycles_of
 from transim.report.gallery import run_figures
 from transim.report.leakage_figures import spectrum_figure
 from transim.report.static_figures import bias_figure, static_figure
@@ -28,6 +28,7 @@ from transim.report.study_figures import (
     tune_figure,
 )
 from transim.report.style import axis_scale, save_figure
+from transim.report.trace import Trace, thinned
 from transim.report.waveform_figures import envelope_figure, overlay_figure
 
 WINDOW = Window("c", "F", (1e-11, 9e-11), (3e-11, 5e-11), 4e-11)

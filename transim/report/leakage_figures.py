@@ -10,8 +10,9 @@ import numpy.typing as npt
 
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
-from transim.report.cycle import Cycle, Trace, edge_span, lead_in
+from transim.report.cycle import Cycle, edge_span, lead_in
 from transim.report.style import axis_scale, draw_series, drawn, label_lines, log_axis, name_axis, new_figure
+from transim.report.trace import Trace
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes

@@ -10,8 +10,9 @@ import numpy as np
 
 from transim.measure.metrics import METRICS
 from transim.quantities import format_quantity
-from transim.report.cycle import Cycle, Trace, thinned
+from transim.report.cycle import Cycle
 from transim.report.style import COLOURS, DASHES, axis_scale, short
+from transim.report.trace import Trace, thinned
 
 __all__ = ["MOST_POINTS", "Panel", "embed_panels", "key_of", "panels_of", "thinned_note", "time_scale"]
 

@@ -181,7 +181,8 @@ def _driver(driver: str, results: Sequence[Result], verdict: Verdict) -> Iterato
             yield from wrap(f"undefined: {judgement.metric} {_where(judgement, places[id(result)])}, {note}", "  ")
     yield from _remarks(results, places)
     # the slowest throw decides on the method of all
-    methods = {f"{result.analysis} at {_place(replace(result, throw=''), several)}": result.method for result in results}
+    plain = [replace(result, throw="") for result in results]
+    methods = {f"{result.analysis} at {_place(result, several)}": result.method for result in plain}
     for place, method in methods.items():
         yield from wrap(f"{place}: {method}", "  ")
     checks = [result.check for result in results if result.check is not None]

@@ -10,8 +10,9 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from transim.quantities import format_quantity
-from transim.report.cycle import Cycle, Trace, edge_span, lead_in
+from transim.report.cycle import Cycle, edge_span, lead_in
 from transim.report.style import axis_scale, draw_series, drawn, label_lines, name_axis, new_figure
+from transim.report.trace import Trace
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
