@@ -256,7 +256,8 @@ def test_interpolation_between_the_points_that_are_solved():
 @given(PATHS, st.floats(0.05, 0.5))
 def test_refined_keeps_the_points_and_bounds_the_steps(conductance, share):
     before = walk(conductance)
-    after = before.refined(share)
+    after, position = before.refined(share, np.ones(before.time.size - 1, dtype=bool))
+    assert np.interp(position, np.arange(before.time.size), before.time) == pytest.approx(after.time)
     assert np.all(np.diff(after.time) > 0.0)
     kept = np.searchsorted(after.time, before.time)
     assert after.time[kept] == pytest.approx(before.time)

@@ -56,7 +56,7 @@ def test_an_envelope_leaves_a_matched_line_one_delay_later(delay):
     vectors = {"v(m)": share, "v(p2)": np.zeros_like(time), "v(x)": np.zeros_like(time)}
     net = network(extra, delay=delay, vectors=vectors, time=time)
     frequency = 1e9
-    ringing = solve_ringing(net, PORTS, [frequency]).s[0, :, 1, 0]
+    ringing = solve_ringing(net, PORTS, [frequency], solve_frozen(net, PORTS, [frequency]).s).s[0, :, 1, 0]
     # the line itself does not change: S stays exp(-j w T) at all times, however long the delay is against the step
     assert ringing == pytest.approx(np.full(time.size, cmath.exp(-2j * math.pi * frequency * delay)), abs=1e-6)
 

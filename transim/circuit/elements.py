@@ -9,6 +9,7 @@ from __future__ import annotations
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import lru_cache
 
 from transim.circuit.expression import Expression, ExpressionError, parse_expression, spice_number
 from transim.errors import LinearisationError, NetlistError
@@ -318,6 +319,16 @@ def _node(name: str) -> str:
 def _read_element(
     line: str, models: Mapping[str, Model]
 ) -> Element | Coupling | Device | Behavioural | Line:
+    if line[0] in "dDqQ":
+        words = line.split()
+        return _read_device(words[0].lower(), words, models)
+    return _read_alone(line)
+
+
+# most lines are the same in all points of a study
+@lru_cache(maxsize=4096)
+def _read_alone(line: str) -> Element | Coupling | Behavioural | Line:
+    """Read an element that needs no model."""
     words = line.split()
     name = words[0].lower()
     letter = name[0]
@@ -329,8 +340,6 @@ def _read_element(
         return _read_line(name, words)
     if letter == "k":
         return Coupling(name, (words[1].lower(), words[2].lower()), spice_number(words[3]))
-    if letter in "dq":
-        return _read_device(name, words, models)
     if letter in "vi":
         return Element(name, (_node(words[1]), _node(words[2])), 0.0)
     if letter in "efgh":

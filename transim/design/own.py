@@ -12,7 +12,7 @@ from transim.design.model import Driver, Junction, Switch
 from transim.design.ratings import read_driver_ratings
 from transim.errors import DesignError, NetlistError
 from transim.parts.header import read_role
-from transim.parts.own import OwnDriver, OwnPath, read_own_driver, read_own_path
+from transim.parts.own import OWN_PATH, OwnDriver, OwnPath, read_own_driver, read_own_path
 from transim.parts.part import Part
 
 __all__ = ["DRIVER_KEYS", "PATH_KEYS", "names_plain_file", "read_driver_circuit", "read_path_circuit"]
@@ -73,14 +73,14 @@ class _Table:
                 self.faults.missing((*self.path, key), wanted)
             return ()
         raw = self.table[key]
-        items = [raw] if isinstance(raw, str) else raw
+        items = [raw] if isinstance(raw, str | int) else raw
         if not isinstance(items, list) or not least <= len(items) <= most:
             error = DesignError("names of nodes are wanted", expected=wanted, found=shown(raw))
             self.faults.adopt((*self.path, key), error)
             return ()
         # a node may have a number for a name
         texts = [str(item) if isinstance(item, int) and not isinstance(item, bool) else item for item in items]
-        places = [(*self.path, key) if isinstance(raw, str) else (*self.path, key, k) for k in range(len(texts))]
+        places = [(*self.path, key) if isinstance(raw, str | int) else (*self.path, key, k) for k in range(len(texts))]
         names = [self.faults.value(place, text, _NODE) for place, text in zip(places, texts, strict=True)]
         for name in names:
             if name is not None and (not name.strip() or any(c in name for c in " \t(),=;$'\"{}")):
@@ -113,7 +113,8 @@ def read_path_circuit(faults: Faults, folder: Path, table: Mapping[str, object])
         With a junction for each diode and transistor; None, with errors added, if something is wrong.
     """
     keys = _Table(faults, ("switch",), table, PATH_KEYS)
-    ports = keys.nodes("ports", 'the nodes of the RF ports, for example ["rfin", "rfout"]; the file has no header', 2, 20)
+    wanted = 'the nodes of the RF ports, for example ["rfin", "rfout"]; the file has no header'
+    ports = keys.nodes("ports", wanted, 2, 20)
     bias = keys.nodes("bias", 'the node that the driver feeds, for example "vb", or an array of them', 1, 20)
     passes: str | None = None
     if "passes" not in table:
@@ -132,7 +133,7 @@ def read_path_circuit(faults: Faults, folder: Path, table: Mapping[str, object])
         return None
     named = OwnPath(ports, bias, through, passes == "high", inverted, ground, subcircuit)
     try:
-        part, found = read_own_path(folder / file, named, "own_path")
+        part, found = read_own_path(folder / file, named, OWN_PATH)
     except NetlistError as exc:
         keys.adopt("path", exc)
         return None

@@ -142,8 +142,9 @@ def changed_design(design: Design, values: Mapping[str, float]) -> Design:
         If a name is not known, a value is out of its range, or values exclude each other.
     """
     tables: dict[str, dict[str, float]] = {}
+    known = parameters_of(design)
     for name, value in values.items():
-        kind = find_parameter(design, name)
+        kind = known[name] if name in known else find_parameter(design, name)
         try:
             number = kind.read(value, from_file=False)
         except DesignError as exc:

@@ -41,7 +41,7 @@ def doubt_points(candidates: npt.NDArray[np.intp]) -> npt.NDArray[np.intp]:
     """
     if candidates.size <= _MOST_POINTS:
         return candidates
-    return candidates[np.unique(np.linspace(0, candidates.size - 1, _MOST_POINTS).astype(int))]
+    return np.asarray(candidates[np.unique(np.linspace(0, candidates.size - 1, _MOST_POINTS).astype(np.intp))])
 
 
 @dataclass(frozen=True)
@@ -105,6 +105,8 @@ class Doubt:
 
     def _changed(self, solved: _Solved, y: Complex) -> Complex:
         """Return S with an admittance matrix over all nodes added, shape (n, p, p)."""
+        if not self._nodes:
+            return solved.s
         y = np.broadcast_to(y, solved.impedance.shape)
         used = np.flatnonzero((np.abs(y).max(axis=(0, 1)) + np.abs(y).max(axis=(0, 2))) > 0.0)
         if used.size == 0:
@@ -116,7 +118,10 @@ class Doubt:
         return np.asarray(solved.s - solved.reach[:, :, used] @ (y @ voltages))
 
     def whatever(self, name: str, enough: float) -> float:
-        """Return by how much an element moves any entry of S at most, open, tied together or anything between [dB].
+        """Return by how much an element moves any entry of S at most [dB].
+
+        It may be open, tied together, anything between, or a current at one terminal that the voltage at another
+        controls.
 
         Parameters
         ----------
@@ -125,20 +130,31 @@ class Doubt:
         enough : float
             Change above which nothing more is tried [dB].
         """
+        return self._largest(name, (self._tied(name), *self._passive(name), *self._transfers(name)), enough)
+
+    def between(self, name: str) -> float:
+        """Return by how much an element moves any entry of S between open and tied together [dB].
+
+        Parameters
+        ----------
+        name : str
+            The element; the others are open, or have all their terminals tied together.
+        """
+        return self._largest(name, (self._tied(name), *self._passive(name)), np.inf)
+
+    def _largest(self, name: str, trials: Sequence[Complex], enough: float) -> float:
         others = sum(
             (self._tied(other) for other in self._elements if other != name), np.zeros((len(self._nodes),) * 2, complex)
         )
         largest = 0.0
         for solved in self._solved:
-            for rest in (np.zeros_like(others), others):
+            for rest in (np.zeros_like(others), others)[: 1 + bool(others.any())]:
                 before = level_of(self._changed(solved, rest))
-                for trial in self._trials(name):
+                for trial in trials:
                     after = level_of(self._changed(solved, rest + trial))
                     largest = max(largest, float(np.abs(after - before).max()))
                     if largest > enough:
                         return largest
-                if not others.any():
-                    break
         return largest
 
     def by_share(
@@ -208,28 +224,37 @@ class Doubt:
             return self._between(places, (), _TIE)
         return self._between(places[1:], places[:1], _TIE) if places else self._between((), (), 0.0)
 
-    def _trials(self, name: str) -> Iterator[Complex]:
-        """Go through what an element may be; the ends of a Moebius map of Y lie on the edge of where Y may be."""
+    def _ends(self, name: str) -> list[tuple[int, ...]]:
+        """Return the terminals of an element that differ at RF; an empty one is ground."""
         places, grounded = self._places(name)
-        ends: list[tuple[int, ...]] = [(place,) for place in places] + ([()] if grounded else [])
-        yield self._tied(name)
-        for position, first in enumerate(ends):
-            for second in ends[position + 1 :]:
-                for size in _TRIALS:
+        return [(place,) for place in places] + ([()] if grounded else [])
+
+    def _passive(self, name: str) -> Iterator[Complex]:
+        """Go through admittances between two terminals, the others open or tied to one of them.
+
+        What S may become is the image of where Y may lie under a Moebius map: its extremes belong to the edges,
+        real Y and imaginary Y.
+        """
+        places, grounded = self._places(name)
+        ends = self._ends(name)
+        for size in (y for magnitude in _TRIALS for y in (magnitude, 1j * magnitude)):
+            for position, first in enumerate(ends):
+                for second in ends[position + 1 :]:
                     yield self._between(first, second, size)
-                    yield self._between(first, second, 1j * size)
-        if len(ends) < 3:
-            return
-        for first in ends[: len(places)]:
-            rest = [place for place in places if place not in first]
-            tie = self._between(rest, (), _TIE) if grounded else self._between(rest[1:], rest[:1], _TIE)
-            for size in _TRIALS:
-                for y in (size, 1j * size):
-                    yield tie + self._between(first, () if grounded else rest[:1], y)
-            for size in (*_TRANSFERS, *-_TRANSFERS):
-                for control in places:
-                    transfer = np.zeros_like(tie)
-                    transfer[first[0], control] = size
+            for first in ends[: len(places)] if len(ends) > 2 else ():
+                rest = [place for place in places if place not in first]
+                tie = self._between(rest, (), _TIE) if grounded else self._between(rest[1:], rest[:1], _TIE)
+                yield tie + self._between(first, () if grounded else rest[:1], size)
+
+    def _transfers(self, name: str) -> Iterator[Complex]:
+        """Go through transadmittances: a current at one terminal that the voltage at another controls."""
+        places, grounded = self._places(name)
+        for out in places if len(places) + grounded > 2 else ():
+            back = next((place for place in places if place != out), out)
+            for control in places:
+                for size in (*_TRANSFERS, *-_TRANSFERS):
+                    transfer = np.zeros((len(self._nodes), len(self._nodes)), dtype=complex)
+                    transfer[out, control] = size
                     if not grounded:
-                        transfer[rest[0], control] = -size
+                        transfer[back, control] = -size
                     yield transfer

@@ -64,7 +64,9 @@ class RfSolution:
         return found
 
 
-def solve_internal(network: Network, port: RfPort, carrier: float) -> RfSolution:
+def solve_internal(
+    network: Network, port: RfPort, carrier: float, reduction: Reduction | None = None
+) -> RfSolution:
     """Solve for everything inside the circuit.
 
     Parameters
@@ -75,6 +77,8 @@ def solve_internal(network: Network, port: RfPort, carrier: float) -> RfSolution
         Where the RF enters.
     carrier : float
         Frequency [Hz].
+    reduction : Reduction or None
+        Of a network of the same circuit, if there is one.
 
     Returns
     -------
@@ -88,4 +92,5 @@ def solve_internal(network: Network, port: RfPort, carrier: float) -> RfSolution
     right = np.zeros((network.size, 1), dtype=complex)
     right[network.unknowns[f"i:{port.source}"], 0] = 1.0
     omega = 2j * np.pi * carrier
-    return RfSolution(network, Reduction(network, omega).solve(network, right, omega)[:, :, 0])
+    reduction = reduction or Reduction(network, omega)
+    return RfSolution(network, reduction.solve(network, right, omega)[:, :, 0])

@@ -170,10 +170,9 @@ def linearise(
     LinearisationError
         Naming the first element that has no small-signal form and that nothing stands for.
     """
-    opaque = {element.name: element for element in opaque_elements(circuit, temperature)}
-    for name, element in opaque.items():
-        if name not in admittances:
-            raise element.reason
+    opaque = opaque_elements(circuit, temperature)
+    if unknown := [element for element in opaque if element.name not in admittances]:
+        raise unknown[0].reason
     supplies = _supplies(circuit, ports)
     stamps = _Stamps(bias.points, frozenset(supplies.values()))
     for node in circuit.nodes:
@@ -186,11 +185,9 @@ def linearise(
         _stamp_line(stamps, line)
     for coupling in circuit.couplings:
         _stamp_coupling(stamps, coupling, inductance)
-    for name, element in opaque.items():
-        _stamp_opaque(stamps, element, admittances[name])
-    for device in circuit.devices:
-        if device.name in opaque:
-            continue
+    _stamp_opaque(stamps, opaque, admittances)
+    known = [device for device in circuit.devices if device.name not in admittances]
+    for device in known:
         (_stamp_diode if device.name[0] == "d" else _stamp_transistor)(stamps, device, bias, temperature)
     for source in circuit.behaviourals:
         _stamp_behavioural(stamps, source, bias, temperature)
@@ -218,9 +215,10 @@ def _supplies(circuit: Circuit, ports: Collection[str]) -> dict[str, str]:
     used |= {name for source in circuit.behaviourals for name in source.law.sources}
     found: dict[str, str] = {}
     for element in circuit.elements:
-        if element.name[0] == "v" and element.name not in used and "0" in element.nodes:
+        # a source inside the path may be the ammeter of a junction with a grounded terminal, whose RF current is wanted
+        if element.name[0] == "v" and element.name not in used and not element.name.startswith("v.xpath."):
             node = element.nodes[0] if element.nodes[1] == "0" else element.nodes[1]
-            if node != "0" and node not in found.values():
+            if "0" in element.nodes and node != "0" and node not in found.values():
                 found[element.name] = node
     return found
 
@@ -244,12 +242,18 @@ def _stamp_element(stamps: _Stamps, element: Element, inductance: dict[str, floa
                 stamps.add(row, stamps.node(node), sign * element.value)
 
 
-def _stamp_opaque(stamps: _Stamps, element: Opaque, admittance: Admittance | None) -> None:
-    """Add an admittance between terminals; the leakage keeps a node that nothing else holds from being singular."""
-    for node in dict.fromkeys(element.nodes):
-        stamps.add(stamps.node(node), stamps.node(node), GMIN)
-    if admittance is None:
-        return
+def _stamp_opaque(
+    stamps: _Stamps, elements: Collection[Opaque], admittances: Mapping[str, Admittance | None]
+) -> None:
+    """Add what stands for elements; the leakage keeps a node that nothing else holds from being singular."""
+    for element in elements:
+        for node in dict.fromkeys(element.nodes):
+            stamps.add(stamps.node(node), stamps.node(node), GMIN)
+        if (admittance := admittances[element.name]) is not None:
+            _stamp_admittance(stamps, admittance)
+
+
+def _stamp_admittance(stamps: _Stamps, admittance: Admittance) -> None:
     places = [stamps.node(node) for node in admittance.nodes]
     for i, row in enumerate(places):
         for k, column in enumerate(places):

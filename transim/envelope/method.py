@@ -113,7 +113,7 @@ def solve_envelope(
     s = frozen.s
     slow = [k for k, method in enumerate(methods) if method == "ringing"]
     if slow:
-        ringing: Scattering = solve_ringing(network, ports, [frequency[k] for k in slow])
+        ringing: Scattering = solve_ringing(network, ports, [frequency[k] for k in slow], frozen.s[slow])
         s = s.copy()
         s[slow] = ringing.s
     return Envelope(network.time, s, frozen.s, tuple(methods), tuple(reasons))

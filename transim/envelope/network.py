@@ -140,15 +140,24 @@ class Network:
         scaled = np.arcsinh(np.concatenate([total_g / _SMALL_G, total_c / _SMALL_C], axis=1))
         return np.asarray(scaled[:, np.ptp(scaled, axis=0) > 0.0])
 
-    def refined(self, share: float) -> Network:
+    def refined(self, share: float, counted: npt.NDArray[np.bool_]) -> tuple[Network, Array]:
         """Return the network with points added wherever an entry changes by more than a share from one to the next.
 
         Parameters
         ----------
         share : float
             Largest relative change between neighbours.
+        counted : ndarray of bool, shape (n - 1,)
+            The steps that are looked at.
+
+        Returns
+        -------
+        Network
+            At the points as they were and between them.
+        ndarray, shape (k,)
+            Place of each of its points, in steps of the n points.
         """
-        jumps = np.abs(np.diff(self.scaled_changes(), axis=0)).max(axis=1, initial=0.0)
+        jumps = np.abs(np.diff(self.scaled_changes(), axis=0)).max(axis=1, initial=0.0) * counted
         parts = np.maximum(1, np.ceil(jumps / share)).astype(int)
         position = np.concatenate(
             [[0.0], *(k + np.arange(1, part + 1) / part for k, part in enumerate(parts.tolist()))]
@@ -160,4 +169,4 @@ class Network:
             between = [np.interp(position, place, column) for column in scaled.T]
             varying.append(small * np.sinh(np.stack(between, axis=1)) if between else np.zeros((position.size, 0)))
         time = np.interp(position, place, self.time)
-        return replace(self, varying_g=varying[0], varying_c=varying[1], time=time, junctions=())
+        return replace(self, varying_g=varying[0], varying_c=varying[1], time=time, junctions=()), position

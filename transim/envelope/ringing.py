@@ -1,4 +1,4 @@
-"""Ringing solution: d/dt kept, integrated on the video run's own time points.
+"""Ringing solution: d/dt kept, integrated on time points of the video run, as many as the solution needs.
 
 BDF2 with variable step (C. W. Gear, Numerical Initial Value Problems in Ordinary Differential Equations, 1971) damps
 the modes near -j w that a trapezoidal rule would keep.
@@ -6,12 +6,15 @@ the modes near -j w that a trapezoidal rule would keep.
 
 from __future__ import annotations
 
+import bisect
 from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 
 from transim.circuit.assemble import RfPort
 from transim.envelope.junction import Array
+from transim.envelope.memoryless import without_memoryless
 from transim.envelope.network import Network
 from transim.envelope.scatter import Complex, Scattering, excitation, scatter, solve_linear
 
@@ -20,9 +23,18 @@ __all__ = ["solve_ringing"]
 #: Largest change of an entry in one step. A capacitance that falls by orders of magnitude in one step of the
 #: video run would otherwise leave its charge behind as a voltage that no circuit has.
 _SHARE = 0.25
+#: Furthest that a solution may be from a straight line through the last two, in V for 1 V of a source; else the step
+#: is halved. The step's own error, of third order, is far smaller.
+_BEND = 2e-4
+#: Change of a frozen S that counts as none, and largest way of it, back and forth included, that one step spans.
+_STILL, _MOVE = 1e-4, 0.02
+#: Share of a step's change that has to come in the first half of its time.
+_FIRST_HALF = 0.1
 
 
-def solve_ringing(network: Network, ports: Sequence[RfPort], frequency: Sequence[float]) -> Scattering:
+def solve_ringing(
+    network: Network, ports: Sequence[RfPort], frequency: Sequence[float], frozen: Complex
+) -> Scattering:
     """Integrate the network's own transients at the carrier, from the stationary state of the first point.
 
     Parameters
@@ -33,6 +45,8 @@ def solve_ringing(network: Network, ports: Sequence[RfPort], frequency: Sequence
         p ports.
     frequency : sequence of float
         f carriers [Hz].
+    frozen : ndarray, shape (f, n, p, p)
+        The frozen solution; where it stands still, entries that change are none that the RF sees.
 
     Returns
     -------
@@ -44,8 +58,10 @@ def solve_ringing(network: Network, ports: Sequence[RfPort], frequency: Sequence
         If the network is singular.
     """
     samples = network.time
-    network = network.refined(_SHARE)
-    right = excitation(network, ports)
+    moves = np.abs(np.diff(frozen, axis=1)).max(axis=(0, 2, 3), initial=0.0)
+    network, position = network.refined(_SHARE, moves > _STILL)
+    moved = np.interp(position, np.arange(samples.size), np.concatenate([[0.0], np.cumsum(moves)]))
+    network, right = without_memoryless(network, excitation(network, ports), [f"v:{port.node}" for port in ports])
     omega = 2j * np.pi * np.asarray(frequency, dtype=float)[:, None, None]
     time = network.time
 
@@ -59,66 +75,119 @@ def solve_ringing(network: Network, ports: Sequence[RfPort], frequency: Sequence
     first = np.stack([network.constant(complex(w)) for w in omega[:, 0, 0]])
     first[:, network.rows, network.columns] += network.varying_g[0] + omega[:, :, 0] * network.varying_c[0]
     x = solve_linear(first, right)
-    capacitance = at(0)[1]
+    volts = [place for name, place in network.unknowns.items() if name.startswith("v:")]
+    stretch = _Stretch(time, moved)
     past = _Past(network, omega, x)
-    s = np.empty((len(frequency), time.size, len(ports), len(ports)), dtype=complex)
-    s[:, 0] = scatter(network, ports, x)
-    charge = [capacitance @ x, capacitance @ x]
-    previous_step = 0.0
-    for point in range(1, time.size):
-        step = float(time[point] - time[point - 1])
-        ratio = step / previous_step if previous_step > 0.0 else 0.0
+    states = [_State(0, x, at(0)[1] @ x)]
+    solved = [scatter(network, ports, x)]
+    while states[-1].point < time.size - 1:
+        now, before = states[-1], states[-2] if len(states) > 1 else states[-1]
+        point = stretch.target(now.point)
+        step, previous = float(time[point] - time[now.point]), float(time[now.point] - time[before.point])
+        ratio = step / previous if previous > 0.0 else 0.0
         # variable-step BDF2; ratio 0 is the implicit Euler step that starts it
         lead = (1.0 + 2.0 * ratio) / (1.0 + ratio) / step
         one = (1.0 + ratio) / step
         two = -ratio * ratio / (1.0 + ratio) / step
         conductance, capacitance = at(point)
-        matrix, known = past.delayed(conductance + (omega + lead) * capacitance, point)
-        x = solve_linear(matrix, right + one * charge[0] + two * charge[1] - known)
-        past.keep(point, x)
-        s[:, point] = scatter(network, ports, x)
-        charge = [capacitance @ x, charge[0]]
-        previous_step = step
-    averaged = np.stack([_average(time, s[k], 1.0 / carrier, samples) for k, carrier in enumerate(frequency)])
+        matrix, known = past.delayed(conductance + (omega + lead) * capacitance, float(time[point]))
+        x = solve_linear(matrix, right + one * now.charge + two * before.charge - known)
+        # against a straight line through the last two: what the step cannot have seen shows here
+        bend = (x - now.x - ratio * (now.x - before.x))[:, volts]
+        if stretch.refused(float(np.abs(bend).max(initial=0.0))):
+            continue
+        past.keep(float(time[point]), x)
+        solved.append(scatter(network, ports, x))
+        states = [now, _State(point, x, capacitance @ x)]
+        stretch.passed.append(point)
+    instants, s = time[stretch.passed], np.stack(solved, axis=1)
+    averaged = np.stack([_average(instants, s[k], 1.0 / carrier, samples) for k, carrier in enumerate(frequency)])
     return Scattering(samples, np.asarray(frequency, dtype=float), averaged, "ringing")
+
+
+@dataclass(frozen=True)
+class _State:
+    """Solution x and charge C x at a point."""
+
+    point: int
+    x: Complex
+    charge: Complex
+
+
+class _Stretch:
+    """How many points of the video run one step may span: lines make ngspice step far finer than anything moves."""
+
+    def __init__(self, time: Array, moved: Array) -> None:
+        self._time, self._moved = time, moved
+        self._points = 1
+        self._at = 0
+        self.passed = [0]
+
+    def target(self, point: int) -> int:
+        """Return the point that the next step goes to; the frozen S moves little on the way."""
+        allowed = int(np.searchsorted(self._moved, self._moved[point] + _MOVE, side="right")) - 1
+        self._at = point
+        self._to = self._before_change(point, min(point + self._points, max(allowed, point + 1), self._moved.size - 1))
+        return self._to
+
+    def _before_change(self, point: int, to: int) -> int:
+        """Shorten a step over a rest and the change after it: S is a straight line between its ends."""
+        time, moved = self._time, self._moved
+        while to > point + 1 and moved[to] - moved[point] > _STILL:
+            middle = int(np.searchsorted(time, 0.5 * (time[point] + time[to]), side="right")) - 1
+            if moved[middle] - moved[point] >= _FIRST_HALF * (moved[to] - moved[point]):
+                break
+            to = max(middle, point + 1)
+        return to
+
+    def refused(self, bend: float) -> bool:
+        """Tell whether the step was too long, and set the length of the next."""
+        taken = self._to - self._at
+        if bend > _BEND and taken > 1:
+            self._points = taken // 2
+            return True
+        self._points = 2 * taken if bend < _BEND / 4.0 else taken
+        return False
 
 
 class _Past:
     """Solutions so far, for what acts on them after a delay: the far ends of lines."""
 
     def __init__(self, network: Network, omega: Complex, first: Complex) -> None:
-        self._network = network
         self._factors = [
             (entry, entry.coefficient * np.exp(-omega[:, 0, 0] * entry.delay)) for entry in network.delays
         ]
-        # without lines nothing is kept
-        points = network.time.size if network.delays else 1
-        self._x = np.empty((points, *first.shape), dtype=complex)
-        self._x[0] = first
+        self._columns = sorted({entry.column for entry in network.delays})
+        self._time = [float(network.time[0])]
+        self._x = [first[:, self._columns]]
 
-    def keep(self, point: int, x: Complex) -> None:
-        if self._network.delays:
-            self._x[point] = x
+    def keep(self, time: float, x: Complex) -> None:
+        """Remember a solution."""
+        if self._factors:
+            self._time.append(time)
+            self._x.append(x[:, self._columns])
 
-    def delayed(self, matrix: Complex, point: int) -> tuple[Complex, Complex]:
+    def delayed(self, matrix: Complex, time: float) -> tuple[Complex, Complex]:
         """Return matrix and known part of one step's delayed terms, shape (f, m, m) and (f, m, p)."""
         if not self._factors:
             return matrix, np.zeros(1, dtype=complex)
-        time, known = self._network.time, np.zeros_like(self._x[0])
+        known = np.zeros((*matrix.shape[:2], self._x[0].shape[2]), dtype=complex)
         matrix = matrix.copy()
         for entry, factor in self._factors:
-            at = time[point] - entry.delay
-            if at <= time[0]:
-                known[:, entry.row] += factor[:, None] * self._x[0][:, entry.column]
+            column, at = self._columns.index(entry.column), time - entry.delay
+            if at <= self._time[0]:
+                known[:, entry.row] += factor[:, None] * self._x[0][:, column]
                 continue
-            after = min(int(np.searchsorted(time, at)), point)
-            share = (at - time[after - 1]) / (time[after] - time[after - 1])
-            known[:, entry.row] += (1.0 - share) * factor[:, None] * self._x[after - 1][:, entry.column]
-            if after == point:
+            after = bisect.bisect_left(self._time, at)
+            start = self._time[after - 1]
+            stop = self._time[after] if after < len(self._time) else time
+            share = (at - start) / (stop - start)
+            known[:, entry.row] += (1.0 - share) * factor[:, None] * self._x[after - 1][:, column]
+            if after == len(self._time):
                 # a delay shorter than the step: the far end depends on the step's own solution
                 matrix[:, entry.row, entry.column] += share * factor
             else:
-                known[:, entry.row] += share * factor[:, None] * self._x[after][:, entry.column]
+                known[:, entry.row] += share * factor[:, None] * self._x[after][:, column]
         return matrix, known
 
 

@@ -124,7 +124,8 @@ class Waveform:
         cut = self._instants.between(start, stop)
         ends = np.interp(cut.instants.time[[0, -1]], self.time, value)
         inner = value[cut.first : cut.first + cut.instants.time.size - 2]
-        found = Waveform(cut.instants.time, np.concatenate((ends[:1], inner, ends[1:])), self.unit)
+        joined = cast("Samples", np.concatenate((ends[:1], inner, ends[1:])))
+        found = Waveform(cut.instants.time, joined, self.unit)
         self._found[start, stop] = found
         return found
 

@@ -126,7 +126,20 @@ def _model_complaint(text: str) -> str | None:
     if fields[2].lower() not in MODELS:
         known = ", ".join(MODELS).upper()
         return f'a model of kind "{_shortened(fields[2])}" is not allowed here; known kinds are {known}'
+    rest = text.split(None, 2)[2][len(fields[2]) :].strip()
+    if rest.startswith("(") and (after := _after_parentheses(rest)):
+        return f'nothing may follow the parentheses of a .model card, found "{_shortened(after)}"'
     return None
+
+
+def _after_parentheses(text: str) -> str:
+    """Return what follows the parenthesis that closes the first one."""
+    depth = 0
+    for place, character in enumerate(text):
+        depth += {"(": 1, ")": -1}.get(character, 0)
+        if depth == 0:
+            return text[place + 1 :].strip()
+    return ""
 
 
 def _shortened(text: str) -> str:

@@ -16,8 +16,10 @@ from transim.parts.part import Parameter, Part, Throw
 from transim.parts.plain import PlainFile, read_plain
 from transim.parts.scope import Scope, scope_of
 
-__all__ = ["OwnDriver", "OwnPath", "read_own_driver", "read_own_path"]
+__all__ = ["OWN_PATH", "OwnDriver", "OwnPath", "read_own_driver", "read_own_path"]
 
+#: Name of the part that a path without a header becomes.
+OWN_PATH = "own_path"
 _SAFE = re.compile(r"[a-z][a-z0-9_]*")
 #: Nodes and variables that every deck has.
 _TAKEN = re.compile(r"drive\d*|ctl\w*|out|mirror|time|temper|hertz|pi|e")

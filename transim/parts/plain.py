@@ -26,7 +26,7 @@ _LEFT_OUT = {
     ".temp": "the temperature is that of [environment]",
 }
 #: Commands that neither change the circuit nor touch files; a block of others is refused.
-_HARMLESS = frozenset(  # fmt: skip
+_HARMLESS = frozenset(
     (
         "run", "op", "tran", "ac", "dc", "noise", "tf", "sens", "pz", "disto", "plot", "print", "iplot", "asciiplot",
         "listing", "display", "show", "showmod", "echo", "meas", "fft", "linearize", "setplot", "settype", "destroy",
@@ -79,7 +79,7 @@ def read_plain(path: Path) -> PlainFile:
     lines = read_netlist_text(path).split("\n")
     notes: list[str] = []
     lines = _without_control(lines, path, notes)
-    lines, ended = _without_end(lines, path)
+    lines = _without_end(lines, path)
     lines = _without_title(lines, path, notes)
     check_lines(lines, file=path)
     cards = []
@@ -94,7 +94,7 @@ def read_plain(path: Path) -> PlainFile:
         cards.append(_quiet(card, notes))
     notes += [f"the card {keyword} is left out: {reason}" for keyword, reason in left.items()]
     if not cards:
-        raise NetlistError("the file has no circuit", file=path, line=ended)
+        raise NetlistError("the file has no circuit", file=path, line=1)
     return PlainFile(path, tuple(cards), tuple(dict.fromkeys(notes)))
 
 
@@ -130,15 +130,15 @@ def _without_control(lines: Sequence[str], path: Path, notes: list[str]) -> list
     return kept
 
 
-def _without_end(lines: list[str], path: Path) -> tuple[list[str], int]:
-    """Cut the lines at `.end`, after which only comments may follow; return the number of the last one too."""
+def _without_end(lines: list[str], path: Path) -> list[str]:
+    """Cut the lines at `.end`, after which only comments may follow."""
     for place, line in enumerate(lines):
         if line.split()[:1] and line.split()[0].lower() == ".end":
             for number, rest in enumerate(lines[place + 1 :], start=place + 2):
                 if rest.strip() and not rest.lstrip().startswith("*"):
                     raise NetlistError("nothing of a circuit may follow .end", file=path, line=number)
-            return lines[:place], place + 1
-    return lines, len(lines)
+            return lines[:place]
+    return lines
 
 
 def _without_title(lines: list[str], path: Path, notes: list[str]) -> list[str]:

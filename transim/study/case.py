@@ -19,6 +19,7 @@ from transim.envelope.bias import Bias
 from transim.envelope.check import bias_check_deck
 from transim.envelope.junction import Array
 from transim.envelope.stationary import Complex, read_scattering
+from transim.measure.instants import Instants
 from transim.measure.usable import Shortest
 from transim.study.attempt import run_deck, run_once
 
@@ -41,7 +42,9 @@ class Case:
         #: What is to be said of decks that needed a second try.
         self.retries: list[str] = []
         #: Every vector of the video run, once it has run, by name.
-        self.vectors: Mapping[str, Array] = {}
+        self.vectors: dict[str, Array] = {}
+        #: Its times.
+        self.instants: Instants | None = None
         self.seconds = 0.0
         #: Whether only figures and verdicts are wanted, as in a study.
         self.lean = False
@@ -111,7 +114,10 @@ class Case:
     def _kept(self, plot: Plot) -> Plot:
         """Keep the vectors of the video run; each lies in one piece."""
         columns = np.ascontiguousarray(np.real(plot.data).T)
+        self.instants = Instants(columns[plot.names.index("time")].copy())
         self.vectors = {name: _from_start(name, columns[k]) for k, name in enumerate(plot.names)}
+        # one array for all waveforms of the run, checked once
+        self.vectors["time"] = self.instants.time
         return plot
 
     def check(self, name: str, circuit: Circuit, vectors: Mapping[str, Array], point: int) -> Complex:

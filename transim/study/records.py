@@ -85,7 +85,8 @@ def record_of(
         power = Waveform(time, np.sum(delivered, axis=0), "W")
     fed: dict[str, float] = {}
     other: dict[str, Waveform] = {}
-    if case.circuit is not None:
+    # only the charge account of a single run asks for them
+    if case.circuit is not None and not case.lean:
         reached = reached_nodes(case.circuit, throw.feed)
         fed = fed_junctions(case, reached)
         other = other_charges(case.circuit, throw.feed, reached, vectors)

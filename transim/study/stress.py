@@ -11,6 +11,7 @@ from transim.circuit.assemble import ThrowPlace
 from transim.envelope.internal import RfSolution, solve_internal
 from transim.envelope.junction import Array
 from transim.envelope.network import Network
+from transim.envelope.reduction import Reduction
 from transim.envelope.stationary import Complex
 from transim.measure.rf import JunctionRf, RfStress
 from transim.quantities import format_quantity
@@ -79,7 +80,8 @@ class StressSolution:
         self._vectors = vectors
         port = case.netlist.ports[throw.through[0]]
         self._settled = np.array([0, end], dtype=np.intp)
-        self._solution: RfSolution = solve_internal(network.at(self._settled), port, carrier)
+        reduction = Reduction(network, 2j * np.pi * carrier)
+        self._solution: RfSolution = solve_internal(network.at(self._settled), port, carrier, reduction)
         instants = _transition_points(np.abs(through))
         self._modulation = 0.0 if instants.size else None
         if instants.size:
@@ -87,7 +89,7 @@ class StressSolution:
             # zero stands for a path without junctions
             currents.append(np.zeros(instants.size))
             least = _CONDUCTING * np.max(currents, axis=0)
-            found = solve_internal(network.at(instants), port, carrier).modulation(least)
+            found = solve_internal(network.at(instants), port, carrier, reduction).modulation(least)
             self._modulation = max((float(values.max()) for values in found.values()), default=0.0)
 
     def _ammeters(self) -> list[str]:

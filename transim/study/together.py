@@ -7,7 +7,6 @@ guess that each run proves or corrects, so that no figure depends on which point
 
 from __future__ import annotations
 
-import contextlib
 import re
 from collections import OrderedDict
 
@@ -55,8 +54,10 @@ def run_together(case: Case) -> tuple[Circuit, Complex, Plot]:
     if saved is None:
         # a case of its own, so that nothing of this run is left in the results
         first = Case(case.design, case.driver, case.temperature, case.engine)
-        with contextlib.suppress(ConvergenceError):
+        try:
             saved = _remember(shape, saved_vectors(first.static()[0]))
+        except ConvergenceError as error:
+            discard_kept(error)
     if saved is not None:
         try:
             return _run(case, shape, saved)
