@@ -159,9 +159,10 @@ class Network:
         """
         jumps = np.abs(np.diff(self.scaled_changes(), axis=0)).max(axis=1, initial=0.0) * counted
         parts = np.maximum(1, np.ceil(jumps / share)).astype(int)
-        position = np.concatenate(
-            [[0.0], *(k + np.arange(1, part + 1) / part for k, part in enumerate(parts.tolist()))]
-        )
+        step, before = np.repeat(np.arange(parts.size), parts), np.repeat(np.cumsum(parts) - parts, parts)
+        position = np.concatenate([[0.0], step + (np.arange(step.size) - before + 1) / parts[step]])
+        if position.size == self.time.size:
+            return replace(self, junctions=()), position
         place = np.arange(self.time.size)
         varying = []
         for values, small in ((self.varying_g, _SMALL_G), (self.varying_c, _SMALL_C)):

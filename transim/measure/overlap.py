@@ -15,7 +15,7 @@ from transim.measure.waveform import Waveform
 __all__ = ["throw_gap", "throw_overlap"]
 
 Span = tuple[float, float]
-#: A gap below this share of the interval is the rounding of two instants.
+#: A gap below this share of the interval, or of an instant, is rounding.
 _ROUNDING = 1e-12
 
 
@@ -99,15 +99,18 @@ def _above(wave: Waveform, level: float) -> list[Span]:
     length = share * (time[some + 1] - time[some])
     rising = height[some + 1] >= height[some]
     starts = np.where(rising, time[some + 1] - length, time[some])
-    return _joined([[(float(start), float(start + span)) for start, span in zip(starts, length, strict=True)]])
+    stops = starts + length
+    # neighbouring segments meet but for rounding
+    apart = starts[1:] > stops[:-1] + _ROUNDING * np.abs(stops[:-1])
+    first, last = np.flatnonzero(np.append(True, apart)), np.flatnonzero(np.append(apart, True))
+    return [(float(starts[a]), float(stops[b])) for a, b in zip(first, last, strict=True)] if some.size else []
 
 
 def _joined(several: Sequence[Sequence[Span]]) -> list[Span]:
     """Return the union of intervals."""
     found: list[Span] = []
     for start, stop in sorted(span for spans in several for span in spans):
-        # neighbouring segments meet but for rounding
-        if found and start <= found[-1][1] + 1e-12 * abs(found[-1][1]):
+        if found and start <= found[-1][1]:
             found[-1] = found[-1][0], max(found[-1][1], stop)
         else:
             found.append((start, stop))
