@@ -160,7 +160,7 @@ def test_mosfets_in_the_driver_leave_envelope_and_carrier_in_agreement(engine, t
 
 def test_own_path_and_driver_of_bipolars_with_the_command_low(engine, tmp_path):
     # at 500 MHz the transition, which has no reverse bias to leave, lasts several periods of the carrier
-    more = {"low": "0 V", "high": "3.3 V", "carriers": '["500 MHz"]', "times": ("1 us", "2 us"), "level": "-50 dBm"}
+    more = {"low": "0 V", "high": "3.3 V", "carriers": '["500 MHz"]', "times": ("1 us", "2 us"), "level": "-40 dBm"}
     file = write(tmp_path, OWN.format(passes="low"), BIPOLAR, path=PAIR, **more)
     outcome = run_design(read_design(file), engine, analysis="both")
     envelope = assert_agreement(outcome)

@@ -63,6 +63,14 @@ def solve_ringing(
     moved = np.interp(position, np.arange(samples.size), np.concatenate([[0.0], np.cumsum(moves)]))
     network, right = without_memoryless(network, excitation(network, ports), [f"v:{port.node}" for port in ports])
     omega = 2j * np.pi * np.asarray(frequency, dtype=float)[:, None, None]
+    points, solutions = _integrate(network, right, omega, _Stretch(network.time, moved))
+    instants, s = network.time[points], scatter(network, ports, np.stack(solutions, axis=1))
+    averaged = np.stack([_average(instants, s[k], 1.0 / carrier, samples) for k, carrier in enumerate(frequency)])
+    return Scattering(samples, np.asarray(frequency, dtype=float), averaged, "ringing")
+
+
+def _integrate(network: Network, right: Complex, omega: Complex, stretch: _Stretch) -> tuple[list[int], list[Complex]]:
+    """Return the points that the steps went to, and the solution at each, shape (f, m, p)."""
     time = network.time
 
     def at(point: int) -> tuple[Complex, Complex]:
@@ -76,12 +84,10 @@ def solve_ringing(
     first[:, network.rows, network.columns] += network.varying_g[0] + omega[:, :, 0] * network.varying_c[0]
     x = solve_linear(first, right)
     volts = [place for name, place in network.unknowns.items() if name.startswith("v:")]
-    stretch = _Stretch(time, moved)
     past = _Past(network, omega, x)
-    states = [_State(0, x, at(0)[1] @ x)]
-    solved = [scatter(network, ports, x)]
-    while states[-1].point < time.size - 1:
-        now, before = states[-1], states[-2] if len(states) > 1 else states[-1]
+    now = before = _State(0, x, at(0)[1] @ x)
+    points, solutions = [0], [x]
+    while now.point < time.size - 1:
         point = stretch.target(now.point)
         step, previous = float(time[point] - time[now.point]), float(time[now.point] - time[before.point])
         ratio = step / previous if previous > 0.0 else 0.0
@@ -97,12 +103,10 @@ def solve_ringing(
         if stretch.refused(float(np.abs(bend).max(initial=0.0))):
             continue
         past.keep(float(time[point]), x)
-        solved.append(scatter(network, ports, x))
-        states = [now, _State(point, x, capacitance @ x)]
-        stretch.passed.append(point)
-    instants, s = time[stretch.passed], np.stack(solved, axis=1)
-    averaged = np.stack([_average(instants, s[k], 1.0 / carrier, samples) for k, carrier in enumerate(frequency)])
-    return Scattering(samples, np.asarray(frequency, dtype=float), averaged, "ringing")
+        now, before = _State(point, x, capacitance @ x), now
+        points.append(point)
+        solutions.append(x)
+    return points, solutions
 
 
 @dataclass(frozen=True)
@@ -121,7 +125,6 @@ class _Stretch:
         self._time, self._moved = time, moved
         self._points = 1
         self._at = 0
-        self.passed = [0]
 
     def target(self, point: int) -> int:
         """Return the point that the next step goes to; the frozen S moves little on the way."""

@@ -251,7 +251,8 @@ def _read_throws(header: _Header, ports: tuple[str, ...], bias: tuple[str, ...])
     if not facts:
         if len(bias) != 1:
             raise header.fail(
-                f'a path with {len(bias)} bias entries states its ways by "* throw: name | from to | high or low | bias"',
+                f"a path with {len(bias)} bias entries states its ways by "
+                '"* throw: name | from to | high or low | bias"',
                 header.one("bias").line,
             )
         through = _read_through(header, ports)
