@@ -16,7 +16,7 @@ from transim.circuit.assemble import RfPort
 from transim.envelope.junction import Array
 from transim.envelope.memoryless import without_memoryless
 from transim.envelope.network import Network
-from transim.envelope.scatter import Complex, Scattering, excitation, scatter, solve_linear
+from transim.envelope.scatter import Complex, Scattering, excitation, scatter_at_ports, solve_linear
 
 __all__ = ["solve_ringing"]
 
@@ -63,14 +63,17 @@ def solve_ringing(
     moved = np.interp(position, np.arange(samples.size), np.concatenate([[0.0], np.cumsum(moves)]))
     network, right = without_memoryless(network, excitation(network, ports), [f"v:{port.node}" for port in ports])
     omega = 2j * np.pi * np.asarray(frequency, dtype=float)[:, None, None]
-    points, solutions = _integrate(network, right, omega, _Stretch(network.time, moved))
-    instants, s = network.time[points], scatter(network, ports, np.stack(solutions, axis=1))
+    nodes = [network.unknowns[f"v:{port.node}"] for port in ports]
+    points, voltages = _integrate(network, right, omega, nodes, _Stretch(network.time, moved))
+    instants, s = network.time[points], scatter_at_ports(ports, np.stack(voltages, axis=1))
     averaged = np.stack([_average(instants, s[k], 1.0 / carrier, samples) for k, carrier in enumerate(frequency)])
     return Scattering(samples, np.asarray(frequency, dtype=float), averaged, "ringing")
 
 
-def _integrate(network: Network, right: Complex, omega: Complex, stretch: _Stretch) -> tuple[list[int], list[Complex]]:
-    """Return the points that the steps went to, and the solution at each, shape (f, m, p)."""
+def _integrate(
+    network: Network, right: Complex, omega: Complex, nodes: Sequence[int], stretch: _Stretch
+) -> tuple[list[int], list[Complex]]:
+    """Return the points that the steps went to, and the solution at some nodes at each, shape (f, k, p)."""
     time = network.time
 
     def at(point: int) -> tuple[Complex, Complex]:
@@ -86,7 +89,7 @@ def _integrate(network: Network, right: Complex, omega: Complex, stretch: _Stret
     volts = [place for name, place in network.unknowns.items() if name.startswith("v:")]
     past = _Past(network, omega, x)
     now = before = _State(0, x, at(0)[1] @ x)
-    points, solutions = [0], [x]
+    points, voltages = [0], [x[:, nodes]]
     while now.point < time.size - 1:
         point = stretch.target(now.point)
         step, previous = float(time[point] - time[now.point]), float(time[now.point] - time[before.point])
@@ -105,8 +108,8 @@ def _integrate(network: Network, right: Complex, omega: Complex, stretch: _Stret
         past.keep(float(time[point]), x)
         now, before = _State(point, x, capacitance @ x), now
         points.append(point)
-        solutions.append(x)
-    return points, solutions
+        voltages.append(x[:, nodes])
+    return points, voltages
 
 
 @dataclass(frozen=True)
