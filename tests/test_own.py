@@ -209,6 +209,23 @@ def test_a_mistake_gets_one_message_with_file_line_and_key(own, tmp_path, change
     assert words in str(error)
 
 
+@pytest.mark.parametrize(
+    ("card", "words"),
+    [
+        ("X1 rfin rfout coupler", "X1 calls coupler, which is no subcircuit of the file"),
+        ("D3 rfin 0 schottky", "D3 has no model of the file; it has pin"),
+        ("M1 rfin 1 0 0 nm w=1u", "M1 has no model of the file"),
+        ("R7 rfin", "no whole card of an element"),
+        ("C(3 rfin 0 1p", "no whole card of an element"),
+    ],
+)
+def test_what_the_file_lacks_is_said_with_its_line(own, card, words):
+    with pytest.raises(InvalidDesign) as caught:
+        own(path=PATH.replace(".end\n", f"{card}\n"))
+    assert words in str(caught.value)
+    assert "path.cir:13" in str(caught.value)
+
+
 def test_a_source_at_a_named_node_is_refused(own):
     with pytest.raises(InvalidDesign, match=r"Vin holds the node rfin.*remove it"):
         own(path=PATH.replace(".end\n", "Vin rfin 0 SIN(0 1 1meg)\n"))

@@ -12,6 +12,7 @@ import hashlib
 import importlib
 import os
 import re
+import shutil
 import subprocess
 import sys
 import tarfile
@@ -92,8 +93,7 @@ def examples(request, tmp_path_factory):
     cache = request.config.cache.mkdir("pyspice")
     archive = cache / "PySpice-1.5.tar.gz"
     if not archive.exists():
-        # a worker of its own folder, so that two do not write one file
-        folder = cache / f"download-{os.getpid()}"
+        folder = tmp_path_factory.mktemp("download")
         command = [sys.executable, "-m", "pip", "download", "--quiet", "--no-deps", "--no-binary", ":all:"]
         try:
             done = subprocess.run(
@@ -105,8 +105,10 @@ def examples(request, tmp_path_factory):
         if reason:
             text = f"the source distribution of PySpice 1.5 cannot be downloaded: {reason}"
             (pytest.fail if os.environ.get("CI") else pytest.skip)(text)
-        (folder / archive.name).replace(archive)
-        folder.rmdir()
+        # moved in whole, since other workers look for it too
+        whole = archive.with_suffix(f".{os.getpid()}")
+        shutil.move(folder / archive.name, whole)
+        whole.replace(archive)
     assert hashlib.sha256(archive.read_bytes()).hexdigest() == DIGEST
     folder = tmp_path_factory.mktemp("pyspice")
     with tarfile.open(archive) as packed:

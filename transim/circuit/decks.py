@@ -386,7 +386,7 @@ def carrier_deck(
         + _command(control, timeline)
         + sources
         + option_cards(numerics, origin.temperature, "trap")
-        + ".options vntol=1e-8 abstol=1e-13 chgtol=1e-17\n"
+        + ".options vntol=1e-7 abstol=1e-10 chgtol=1e-17\n"
         + f".save {' '.join(_carrier_vectors(netlist))}"
         + f"\n.tran {deck_number(step)} {deck_number(timeline.stop)} 0 {deck_number(step)}\n.end\n"
     )

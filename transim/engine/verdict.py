@@ -158,9 +158,9 @@ def check_plots(attempt: Attempt, plots: tuple[Plot, ...]) -> None:
             raise RawFileError(
                 f"'{plot.name}' of {deck} was not written to its end; is the disk full?", **attempt.context
             )
-        lost = np.argwhere(~np.isfinite(plot.data))
-        if lost.size:
-            row, column = (int(k) for k in lost[0])
+        finite = np.isfinite(plot.data)
+        if not finite.all():
+            row, column = (int(k) for k in np.argwhere(~finite)[0])
             at = float(plot.data[row, 0].real)
             where = f" from {plot.names[0]} = {at:.6g} on" if math.isfinite(at) else ""
             raise ConvergenceError(

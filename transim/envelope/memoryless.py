@@ -36,21 +36,22 @@ def without_memoryless(network: Network, right: Complex, wanted: Iterable[str]) 
         k unknowns: the Schur complement of G (G. H. Golub, C. F. Van Loan, Matrix Computations), and C as it was.
     ndarray of complex, shape (k, p)
     """
-    rows, columns = (network.constant_c.any(axis=axis) for axis in (1, 0))
-    rows[network.rows] = columns[network.columns] = True
-    for entry in network.delays:
-        rows[entry.row] = columns[entry.column] = True
-    columns[[network.unknowns[name] for name in wanted]] = True
-    free_rows, free_columns = np.flatnonzero(~rows), np.flatnonzero(~columns)
-    chosen = complete_pivots(scaled_to_one(network.constant_g.astype(complex))[np.ix_(free_rows, free_columns)])
+    stored, places = network.constant_c != 0.0, np.arange(network.size)
+    held_rows = [*network.rows, *(entry.row for entry in network.delays)]
+    held_columns = [*network.columns, *(entry.column for entry in network.delays)]
+    held_columns += [network.unknowns[name] for name in wanted]
+    free_rows = np.setdiff1d(places[~stored.any(axis=1)], held_rows)
+    free_columns = np.setdiff1d(places[~stored.any(axis=0)], held_columns)
+    conductance = network.constant_g.astype(complex)
+    chosen = complete_pivots(scaled_to_one(conductance)[np.ix_(free_rows, free_columns)])
     gone_rows, gone = free_rows[chosen[0]], free_columns[chosen[1]]
     if not gone.size:
         return network, right
-    equations, kept = (np.setdiff1d(np.arange(network.size), some) for some in (gone_rows, gone))
-    outer = np.concatenate([network.constant_g[np.ix_(gone_rows, kept)], right[gone_rows]], axis=1)
-    inner = solve_linear(network.constant_g[np.ix_(gone_rows, gone)], outer)
+    equations, kept = np.setdiff1d(places, gone_rows), np.setdiff1d(places, gone)
+    outer = np.concatenate([conductance[np.ix_(gone_rows, kept)], right[gone_rows]], axis=1)
+    inner = solve_linear(conductance[np.ix_(gone_rows, gone)], outer)
     crossing = network.constant_g[np.ix_(equations, gone)]
-    row, column = (np.searchsorted(some, np.arange(network.size)) for some in (equations, kept))
+    row, column = np.searchsorted(equations, places), np.searchsorted(kept, places)
     names = {place: name for name, place in network.unknowns.items()}
     smaller = replace(
         network,

@@ -122,9 +122,12 @@ class Waveform:
         self._inside(start, stop)
         value = self._finite()
         cut = self._instants.between(start, stop)
-        ends = np.interp(cut.instants.time[[0, -1]], self.time, value)
-        inner = value[cut.first : cut.first + cut.instants.time.size - 2]
-        joined = cast("Samples", np.concatenate((ends[:1], inner, ends[1:])))
+        ends = cut.instants.time[[0, -1]]
+        after = cut.first + cut.instants.time.size - 2
+        # each end between its two neighbours alone: the same value, without a look at all samples
+        begin = np.interp(ends[:1], self.time[cut.first - 1 : cut.first + 1], value[cut.first - 1 : cut.first + 1])
+        end = np.interp(ends[1:], self.time[after - 1 : after + 1], value[after - 1 : after + 1])
+        joined = cast("Samples", np.concatenate((begin, value[cut.first : after], end)))
         found = Waveform(cut.instants.time, joined, self.unit)
         self._found[start, stop] = found
         return found

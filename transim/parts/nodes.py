@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 
-__all__ = ["GROUND", "model_place", "nodes_of", "reads_as_element"]
+__all__ = ["GROUND", "least_nodes", "model_place", "nodes_of", "reads_as_element"]
 
 #: Names of the reference node.
 GROUND = ("0", "gnd")
@@ -30,9 +30,9 @@ def nodes_of(text: str, models: frozenset[str] = frozenset()) -> tuple[str, ...]
         In lower case, in the card's order; none for a dot card. Nodes that only an expression names are left out.
     """
     letter = text[:1].lower()
-    if not letter.isalpha():
+    words = _words(text) if letter.isalpha() else []
+    if not words:
         return ()
-    words = _words(text)
     if letter == "x":
         return tuple(words[1:-1])
     if letter in "eg":
@@ -41,6 +41,12 @@ def nodes_of(text: str, models: frozenset[str] = frozenset()) -> tuple[str, ...]
     if letter in "qmjz":
         return tuple(words[1 : model_place(words, models)])
     return tuple(words[1 : 1 + _NODES.get(letter, 2)])
+
+
+def least_nodes(letter: str) -> int:
+    """Return the least number of nodes that an element has, by its letter."""
+    lower = letter.lower()
+    return {"q": 3, "m": 3, "j": 3, "z": 3, "x": 1, "e": 2, "g": 2}.get(lower, _NODES.get(lower, 2))
 
 
 def model_place(words: list[str], models: frozenset[str]) -> int:

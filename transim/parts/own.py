@@ -14,7 +14,7 @@ from transim.parts.nearest import nearest_name
 from transim.parts.nodes import GROUND, nodes_of
 from transim.parts.part import Parameter, Part, Throw
 from transim.parts.plain import PlainFile, read_plain
-from transim.parts.scope import Scope, scope_of
+from transim.parts.scope import Scope, check_names, scope_of
 
 __all__ = ["OWN_PATH", "OwnDriver", "OwnPath", "read_own_driver", "read_own_path"]
 
@@ -85,6 +85,7 @@ class _Wrapped:
         self.plain: PlainFile = read_plain(file)
         self.roles = {node.lower(): role for node, role in roles.items()}
         self._top = scope_of(self.plain.cards, file)
+        check_names(self._top, file)
         self._inner = self._chosen(subcircuit)
         self._check_nodes()
         self.terminals = self._terminals(roles)

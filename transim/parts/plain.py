@@ -10,7 +10,7 @@ from pathlib import Path
 from transim.errors import NetlistError
 from transim.parts.cards import Card, joined_cards, read_netlist_text
 from transim.parts.guard import check_card, check_lines
-from transim.parts.nodes import GROUND, nodes_of, reads_as_element
+from transim.parts.nodes import GROUND, least_nodes, nodes_of, reads_as_element
 
 __all__ = ["PlainFile", "read_plain"]
 
@@ -33,6 +33,7 @@ _HARMLESS = frozenset(
         "quit", "exit", "rusage", "spec", "version",
     )
 )
+_NAME = re.compile(r"[^\s=(){},'\"]+")
 _REDIRECTION = re.compile(r"[<>|`;&$]")
 _EXCITATION = re.compile(r"(?i)\s+ac(?:\s+[-+.\d][\w.+-]*){0,2}(?=\s|$)")
 
@@ -90,12 +91,26 @@ def read_plain(path: Path) -> PlainFile:
             if _LEFT_OUT[keyword]:
                 left.setdefault(keyword, _LEFT_OUT[keyword])
             continue
+        _check_element(card, path)
         check_card(card.text, file=path, line=card.line)
         cards.append(_quiet(card, notes))
     notes += [f"the card {keyword} is left out: {reason}" for keyword, reason in left.items()]
     if not cards:
         raise NetlistError("the file has no circuit", file=path, line=1)
     return PlainFile(path, tuple(cards), tuple(dict.fromkeys(notes)))
+
+
+def _check_element(card: Card, path: Path) -> None:
+    """Refuse an element whose card ends before its nodes do, or that has no name."""
+    name = card.text.split()[0]
+    if name.startswith("."):
+        return
+    if name[0].isalpha() and (not _NAME.fullmatch(name) or len(nodes_of(card.text)) < least_nodes(name[0])):
+        raise NetlistError(
+            f'this is no whole card of an element: "{card.text[:40]}"; name, nodes and value are wanted',
+            file=path,
+            line=card.line,
+        )
 
 
 def _without_control(lines: Sequence[str], path: Path, notes: list[str]) -> list[str]:

@@ -10,7 +10,7 @@ from transim.errors import NetlistError
 from transim.parts.cards import Card, joined_cards
 from transim.parts.nodes import GROUND, nodes_of
 
-__all__ = ["Call", "Scope", "calls_of", "scope_of"]
+__all__ = ["Call", "Scope", "calls_of", "check_names", "scope_of"]
 
 _DEEPEST = 20
 
@@ -80,6 +80,35 @@ class Scope:
         """Every node that an element of it touches, in lower case, without ground."""
         names = frozenset(self.models)
         return frozenset(node for card in self.elements for node in nodes_of(card.text, names)) - frozenset(GROUND)
+
+
+def check_names(top: Scope, file: Path) -> None:
+    """Refuse calls of subcircuits, and devices with models, that the file does not have.
+
+    Parameters
+    ----------
+    top : Scope
+        The file.
+    file : Path
+        For errors.
+
+    Raises
+    ------
+    NetlistError
+        With the line, at the first of them.
+    """
+    for scope in top.all():
+        # a model for a range of sizes has a number behind its name
+        models = {name.partition(".")[0] for name in scope.models} | set(scope.models)
+        for card in scope.elements:
+            words = card.text.lower().split()
+            letter, missing = words[0][0], None
+            if letter == "x" and scope.find(_called(card.text)) is None:
+                missing = f"calls {_called(card.text)}, which is no subcircuit of the file"
+            elif letter in "dqmjzsw" and not models.intersection(words[3:]):
+                missing = f"has no model of the file; it has {', '.join(sorted(scope.models)[:20]) or 'none'}"
+            if missing is not None:
+                raise NetlistError(f"{card.text.split()[0]} {missing}", file=file, line=card.line)
 
 
 @dataclass(frozen=True)

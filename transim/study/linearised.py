@@ -6,6 +6,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+import numpy.typing as npt
 
 from transim.circuit.elements import Circuit, Opaque
 from transim.envelope.admittance import Admittance, admittance_deck, biased_instants, read_admittances
@@ -76,82 +77,115 @@ def linearised_case(case: Case, circuit: Circuit, vectors: Mapping[str, Array]) 
     LinearisationError
         Naming an element that matters and by how much.
     """
-    bias = Bias(vectors, vectors["time"])
-    sources = [port.source for port in case.netlist.ports]
     elements = opaque_elements(circuit, case.temperature)
-    if not elements:
-        return Linearised(linearise(circuit, bias, case.temperature, sources), ())
     for element in elements:
         if element.name[0] not in _KINDS:
             # it may carry RF from anywhere, so that nothing can be said of what it does
             raise element.reason
-    quiet = supply_nodes(circuit, sources)
-    stands: dict[str, Admittance | None] = {element.name: None for element in elements}
-    network = linearise(circuit, bias, case.temperature, sources, stands)
-    instants = biased_instants(elements, bias)
-    points = doubt_points(np.union1d(instants, changing_points(network, _COARSE)))
-    doubt = Doubt(network.at(points), case.netlist.ports, case.design.carrier.frequency, elements, quiet)
-    whatever = {element.name: doubt.whatever(element.name, _TOLERATED) for element in elements}
-    notes = [
-        f"{name.upper()}: {_kind(element)} left out; whatever it does moves S by at most "
-        f"{format_quantity(whatever[name], 'dB', 2)}"
-        for element in elements
-        if whatever[(name := element.name)] <= _TOLERATED
-    ]
-    serious = [element for element in elements if not whatever[element.name] <= _TOLERATED]
-    if not serious:
-        return Linearised(network, tuple(notes))
-    for element in serious:
-        if element.rest is None:
-            largest = format_quantity(doubt.between(element.name), "dB", 3)
-            raise _refusal(element, f"between open and all terminals tied together it moves S by up to {largest}")
-    found = _admittances(case, circuit, bias, serious, quiet)
-    middle = len(found) // 2
-    stands |= found[middle]
-    network = linearise(circuit, bias, case.temperature, sources, stands)
-    points = doubt_points(np.union1d(instants, changing_points(network, _COARSE)))
-    wide = doubt
-    doubt = Doubt(network.at(points), case.netlist.ports, case.design.carrier.frequency, serious, quiet)
-    pairs = [throw.through for throw in case.netlist.throws]
-    at_points = [{name: one.at(points) for name, one in carrier.items()} for carrier in found]
-    for name, share in doubt.by_share(at_points, middle, _SHARE, pairs).items():
-        element = next(one for one in serious if one.name == name)
-        moved = format_quantity(share, "dB", 2)
-        if not share <= _TOLERATED:
-            raise _refusal(
-                element,
-                f"{_SHARE:.0%} of its admittance at rest move the transmission by up to {moved}, and "
-                f"between open and all terminals tied together it moves S by up to "
-                f"{format_quantity(wide.between(name), 'dB', 3)}",
+    decision = _Decision(case, circuit, Bias(vectors, vectors["time"]), elements)
+    if not elements:
+        return Linearised(decision.network, ())
+    known: list[Opaque] = []
+    while unknown := decision.moving([element for element in elements if element not in known]):
+        known += unknown
+        decision.ask(known)
+    return Linearised(decision.network, (*decision.left_out(), *decision.taken(known)))
+
+
+class _Decision:
+    """What stands for each element without a small-signal form, as it is decided."""
+
+    def __init__(self, case: Case, circuit: Circuit, bias: Bias, elements: Sequence[Opaque]) -> None:
+        self._case, self._circuit, self._bias, self._elements = case, circuit, bias, elements
+        self._sources = [port.source for port in case.netlist.ports]
+        self._quiet = supply_nodes(circuit, self._sources) if elements else frozenset()
+        self._instants = biased_instants(elements, bias) if elements else np.zeros(0, dtype=np.intp)
+        self._stands: dict[str, Admittance | None] = {element.name: None for element in elements}
+        self._found: list[dict[str, Admittance]] = []
+        self._whatever: dict[str, float] = {}
+        self._widest: dict[str, Doubt] = {}
+        self.network = self._linearised()
+
+    def _linearised(self) -> Network:
+        case = self._case
+        return linearise(self._circuit, self._bias, case.temperature, self._sources, self._stands)
+
+    def _points(self) -> npt.NDArray[np.intp]:
+        return doubt_points(np.union1d(self._instants, changing_points(self.network, _COARSE)))
+
+    def _doubt(self, points: npt.NDArray[np.intp], elements: Sequence[Opaque]) -> Doubt:
+        case = self._case
+        frequency = case.design.carrier.frequency
+        return Doubt(self.network.at(points), case.netlist.ports, frequency, elements, self._quiet)
+
+    def moving(self, open_elements: Sequence[Opaque]) -> list[Opaque]:
+        """Return those of the elements that nothing stands for which may move S by more than is tolerated."""
+        if not open_elements:
+            return []
+        doubt = self._doubt(self._points(), open_elements)
+        self._whatever = {element.name: doubt.whatever(element.name, _TOLERATED) for element in open_elements}
+        found = [element for element in open_elements if not self._whatever[element.name] <= _TOLERATED]
+        self._widest |= {element.name: doubt for element in found}
+        for element in found:
+            del self._whatever[element.name]
+            if element.rest is None:
+                raise self._refusal(element)
+        return found
+
+    def ask(self, elements: Sequence[Opaque]) -> None:
+        """Put what ngspice finds in the place of elements."""
+        few = self._bias.at(self._instants)
+        self._found = []
+        # of two questions the later one holds all of the earlier
+        self._case.decks[:] = [deck for deck in self._case.decks if not deck.name.startswith("admittance_")]
+        for number, frequency in enumerate(self._case.design.carrier.frequency, start=1):
+            name = f"admittance_{number}"
+            deck = admittance_deck(name, elements, self._quiet, self._circuit, few, frequency, self._case.origin)
+            plot = self._case.run(deck).plots[0]
+            read = read_admittances(plot, elements, self._quiet, few.points, frequency)
+            self._found.append({key: one.along(few.time, self._bias.time) for key, one in read.items()})
+        self._stands |= self._found[self._middle]
+        self.network = self._linearised()
+
+    @property
+    def _middle(self) -> int:
+        """Place of the carrier whose admittances stand at all carriers."""
+        return len(self._found) // 2
+
+    def left_out(self) -> list[str]:
+        """Say of the elements that nothing stands for what they may do."""
+        return [
+            f"{element.name.upper()}: {_KINDS[element.name[0]]} left out; whatever it does moves S by at most "
+            f"{format_quantity(self._whatever[element.name], 'dB', 2)}"
+            for element in self._elements
+            if element.name in self._whatever
+        ]
+
+    def taken(self, elements: Sequence[Opaque]) -> list[str]:
+        """Say of the other elements how sure they are; refuse one that is not."""
+        if not elements:
+            return []
+        points = self._points()
+        found = [{name: one.at(points) for name, one in carrier.items()} for carrier in self._found]
+        pairs = [throw.through for throw in self._case.netlist.throws]
+        shares = self._doubt(points, elements).by_share(found, self._middle, _SHARE, pairs)
+        notes = []
+        for element in elements:
+            share = shares[element.name]
+            moved = f"{_SHARE:.0%} of its admittance at rest move the transmission by"
+            if not share <= _TOLERATED:
+                raise self._refusal(element, f"{moved} up to {format_quantity(share, 'dB', 2)}, and ")
+            notes.append(
+                f"{element.name.upper()}: {_KINDS[element.name[0]]} taken with the admittance that ngspice finds at "
+                f"the voltages of each instant; {moved} at most {format_quantity(share, 'dB', 2)}"
             )
-        notes.append(
-            f"{name.upper()}: {_kind(element)} taken with the admittance that ngspice finds at the voltages of each "
-            f"instant; {_SHARE:.0%} of it move the transmission by at most {moved}"
+        return notes
+
+    def _refusal(self, element: Opaque, before: str = "") -> LinearisationError:
+        what = element.reason.reason.partition(";")[0]
+        largest = format_quantity(self._widest[element.name].between(element.name), "dB", 3)
+        return LinearisationError(
+            element.name.upper(),
+            f"{what}: {before}between open and all terminals tied together it moves S by up to {largest}; use the "
+            "carrier analysis",
         )
-    return Linearised(network, tuple(notes))
-
-
-def _admittances(
-    case: Case, circuit: Circuit, bias: Bias, elements: Sequence[Opaque], quiet: frozenset[str]
-) -> list[dict[str, Admittance]]:
-    """Return the admittances along the run, one mapping a carrier."""
-    instants = biased_instants(elements, bias)
-    few = bias.at(instants)
-    found = []
-    for number, frequency in enumerate(case.design.carrier.frequency, start=1):
-        deck = admittance_deck(f"admittance_{number}", elements, quiet, circuit, few, frequency, case.origin)
-        plot = case.run(deck).plots[0]
-        read = read_admittances(plot, elements, quiet, instants.size, frequency)
-        found.append({name: one.along(few.time, bias.time) for name, one in read.items()})
-    return found
-
-
-def _kind(element: Opaque) -> str:
-    """Return what an element is in words."""
-    return _KINDS[element.name[0]]
-
-
-def _refusal(element: Opaque, why: str) -> LinearisationError:
-    return LinearisationError(
-        element.name.upper(), f"{element.reason.reason.partition(';')[0]}: {why}; use the carrier analysis"
-    )

@@ -80,7 +80,12 @@ def _part(component: Junction | Driver) -> dict[str, Any]:
 
 
 def _component(part: Part, values: Mapping[str, float], model: str | None, ratings: str) -> dict[str, Any]:
-    return {"body": part.body, "probes": repr(part.probes), "values": dict(values), "model": model, "ratings": ratings}
+    # what RF and command do at which terminal stands in a header or a design file, not in the body
+    roles = repr((part.ports, part.bias, part.throws, part.inverted))
+    return {
+        "body": part.body, "roles": roles, "probes": repr(part.probes), "values": dict(values), "model": model,
+        "ratings": ratings,
+    }  # fmt: skip
 
 
 def write_whole(path: Path, text: str) -> None:
