@@ -171,7 +171,9 @@ def test_recorded_train_is_judged_at_its_last_complete_pulse(tmp_path, engine):
     short, judged = ((0, 0), (0.995, 0), (1.005, 5), (1.3, 5), (1.31, 0)), ((5, 0), (5.01, 5), (8, 5), (8.01, 0))
     points = (*short, *judged, (13, 0), (13.01, 5))
     (tmp_path / "command.csv").write_text("".join(f"{time}e-6,{volts}\n" for time, volts in points))
-    design = design_of(tmp_path, control='record = "command.csv"\nperiod = "8 us"')
+    # the longest step is a share of the judged pulse, ten times as long as the first one: as fine for both
+    fine = "[numerics]\nsteps = 4000\n"
+    design = design_of(tmp_path, control='record = "command.csv"\nperiod = "8 us"', tail=fine)
     (found,) = run_design(design, engine).results
     (other,) = run_design(design_of(tmp_path), engine).results
     assert found.figures["off_time"].value == pytest.approx(other.figures["off_time"].value, rel=5e-3)

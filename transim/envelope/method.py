@@ -56,6 +56,8 @@ class Envelope:
         The frozen solution, which is what an AC analysis at the bias of each instant has to give.
     methods, reasons : tuple of str
         ``frozen`` or ``ringing`` for each carrier, and the ground for it.
+    reduction : Reduction
+        How the network was solved; serves further solutions of it.
     """
 
     time: Array
@@ -63,6 +65,7 @@ class Envelope:
     frozen: npt.NDArray[np.complex128]
     methods: tuple[str, ...]
     reasons: tuple[str, ...]
+    reduction: Reduction
 
 
 def solve_envelope(
@@ -116,7 +119,7 @@ def solve_envelope(
         ringing: Scattering = solve_ringing(network, ports, [frequency[k] for k in slow], frozen.s[slow])
         s = s.copy()
         s[slow] = ringing.s
-    return Envelope(network.time, s, frozen.s, tuple(methods), tuple(reasons))
+    return Envelope(network.time, s, frozen.s, tuple(methods), tuple(reasons), reduction)
 
 
 @dataclass(frozen=True)

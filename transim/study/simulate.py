@@ -329,7 +329,8 @@ def _envelope(
             envelopes.small[frequency] = waveform
             first, second = throw.through
             through = solution.frozen[k, :, second, first]
-            stress = StressSolution(case, throw, network, vectors, (through, points["check_end"]), frequency)
+            ends = (through, points["check_end"])
+            stress = StressSolution(case, throw, network, vectors, ends, frequency, solution.reduction)
             probe: TurnOnProbe | None = None
             for level in design.carrier.level:
                 at_level = stress.at(level)
@@ -350,9 +351,10 @@ def _envelope(
 def _check_points(case: Case, solution: Envelope) -> dict[str, int]:
     """Return the points of the video run at which ngspice linearises too: half way on both edges, end of the pulse."""
     timeline, time = case.timeline, solution.time
-    first, second = case.netlist.throws[0].through
-    level = np.abs(solution.frozen[0, :, second, first])
-    halves = np.flatnonzero(np.diff(level > 0.5 * level.max()))
+    levels = [np.abs(solution.frozen[0, :, second, first]) for first, second in (t.through for t in case.netlist.throws)]
+    found = [np.flatnonzero(np.diff(level > 0.5 * level.max())) for level in levels]
+    # of several throws the first that moves that far
+    halves = next((some for some in found if some.size), found[0])
     points = {}
     for name, start, stop in (
         ("check_rise", timeline.rising, timeline.falling),

@@ -63,6 +63,8 @@ class StressSolution:
         S of the through pair, each instant frozen; the point of the video run at the end of the pulse.
     carrier : float
         [Hz].
+    reduction : Reduction
+        Of the network.
     """
 
     def __init__(
@@ -73,6 +75,7 @@ class StressSolution:
         vectors: Mapping[str, Array],
         states: tuple[Complex, int],
         carrier: float,
+        reduction: Reduction,
     ) -> None:
         through, end = states
         self._case = case
@@ -80,7 +83,6 @@ class StressSolution:
         self._vectors = vectors
         port = case.netlist.ports[throw.through[0]]
         self._settled = np.array([0, end], dtype=np.intp)
-        reduction = Reduction(network, 2j * np.pi * carrier)
         self._solution: RfSolution = solve_internal(network.at(self._settled), port, carrier, reduction)
         instants = _transition_points(np.abs(through))
         self._modulation = 0.0 if instants.size else None
