@@ -351,18 +351,19 @@ def _envelope(
 def _check_points(case: Case, solution: Envelope) -> dict[str, int]:
     """Return the points of the video run at which ngspice linearises too: half way on both edges, end of the pulse."""
     timeline, time = case.timeline, solution.time
-    levels = [np.abs(solution.frozen[0, :, second, first]) for first, second in (t.through for t in case.netlist.throws)]
-    found = [np.flatnonzero(np.diff(level > 0.5 * level.max())) for level in levels]
-    # of several throws the first that moves that far
-    halves = next((some for some in found if some.size), found[0])
+    pairs = [throw.through for throw in case.netlist.throws]
+    levels = [np.abs(s[:, second, first]) for s in solution.frozen for first, second in pairs]
+    halves = [np.flatnonzero(np.diff(level > 0.5 * level.max())) for level in levels]
     points = {}
     for name, start, stop in (
         ("check_rise", timeline.rising, timeline.falling),
         ("check_fall", timeline.falling, timeline.stop),
     ):
-        inside = halves[(time[halves] > start) & (time[halves] < stop)]
-        if inside.size:
-            points[name] = int(inside[0])
+        # of the carriers and throws the first that goes half way in this interval
+        inside = (some[(time[some] > start) & (time[some] < stop)] for some in halves)
+        found = next((some for some in inside if some.size), None)
+        if found is not None:
+            points[name] = int(found[0])
     # the command begins to fall half an edge before its 50 % point
     points["check_end"] = int(np.searchsorted(time, timeline.falling - timeline.edge / 2.0, side="right")) - 1
     return points
