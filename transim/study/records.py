@@ -11,10 +11,11 @@ from transim.circuit.assemble import ThrowPlace
 from transim.design.model import Design
 from transim.envelope.junction import Array
 from transim.envelope.stationary import Complex
-from transim.measure.definitions import Definitions
+from transim.measure.definitions import Definitions, Timing
 from transim.measure.record import Record
 from transim.measure.rf import LargeSignal, RfStress
 from transim.measure.waveform import Waveform
+from transim.parts.own import OWN_PATH
 from transim.study.case import Case
 from transim.study.charges import fed_junctions, other_charges, reached_nodes
 from transim.study.ratings import ratings_of
@@ -90,12 +91,14 @@ def record_of(
         reached = reached_nodes(case.circuit, throw.feed)
         fed = fed_junctions(case, reached)
         other = other_charges(case.circuit, throw.feed, reached, vectors)
+    timing = case.timeline.timing(throw.passes_high)
+    drive = Waveform(time, vectors[f"i({throw.feed.ammeter})"], "A")
     record = Record(
-        timing=case.timeline.timing(throw.passes_high),
+        timing=timing,
         definitions=_definitions(design),
         carrier=frequency,
         impedance=design.carrier.impedance,
-        biased_passes=throw.forward,
+        biased_passes=_biased_passes(case, throw, timing, drive),
         envelope=envelopes[netlist.throws.index(throw)],
         other_throws=_others(case, throw, envelopes, states),
         static_on=complex(on[second, first]),
@@ -103,7 +106,7 @@ def record_of(
         match_on=complex(on[first, first]),
         match_off=complex(off[first, first]),
         video={port.node: Waveform(time, vectors[f"v({port.node})"], "V") for port in netlist.ports},
-        drive_current=Waveform(time, vectors[f"i({throw.feed.ammeter})"], "A"),
+        drive_current=drive,
         driver_voltage=Waveform(time, vectors[f"v({throw.feed.node})"], "V"),
         supply_power=power,
         junction_charge=probes["charge"],
@@ -120,6 +123,14 @@ def record_of(
         large=rf if isinstance(rf, LargeSignal) else None,
     )
     return replace(record, ratings=ratings_of(case, record))
+
+
+def _biased_passes(case: Case, throw: ThrowPlace, timing: Timing, drive: Waveform) -> bool:
+    """Tell whether the RF passes under forward bias: of a path that has no header, where more current flows in."""
+    if case.design.switch.path.name != OWN_PATH:
+        return throw.forward
+    on, off = (drive.at(window[1]).real for window in (timing.on_window(), timing.off_window()))
+    return bool(on > off)
 
 
 def _others(
