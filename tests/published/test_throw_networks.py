@@ -282,6 +282,7 @@ def switched(resistance, current=CURRENT):
 def found(engine, tmp_path, path, junction):
     """Return loss and isolation [dB] of the first throw at 0.9, 1 and 1.1 GHz, lines a quarter wave at 1 GHz."""
     settings = BARE | (BARE_RETURN if path in RETURNED else {})
+    settings |= {"line_frequency": 1e9} if path in LINED else {}
     case = case_of(engine, tmp_path, path, settings, junction)
     _, states = case.static()
     throw = case.netlist.throws[0]

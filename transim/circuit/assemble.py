@@ -11,6 +11,7 @@ from dataclasses import dataclass
 
 from PySpice.Spice.Netlist import Circuit as SpiceCircuit
 
+from transim.circuit.lossless import without_breakpoints
 from transim.design.model import Design, Driver, Junction
 from transim.errors import TopologyError
 from transim.parts.part import Part, Slot
@@ -207,7 +208,7 @@ def assemble(design: Design, driver: Driver | None) -> Netlist:
     supplies = () if driver is None else tuple(f"vsupply_{supply.name}".lower() for supply in driver.part.supplies)
     places = _junctions(design)
     probes = tuple(probe for place in places for probe in _probes(design, place))
-    return Netlist(body + "\n", tuple(ports), feeds, throws, places, probes, supplies)
+    return Netlist(without_breakpoints(body) + "\n", tuple(ports), feeds, throws, places, probes, supplies)
 
 
 def _numbered(name: str, place: int) -> str:

@@ -170,7 +170,8 @@ def small_signal_warnings(stress: RfStress, carrier: float) -> tuple[str, ...]:
     """
     level = format_quantity(stress.level, "dBm")
     found = []
-    on = [j for j in stress.junctions if not j.off and j.charge is not None and j.current > 0.0]
+    # a junction that blocks holds no stored charge, but the negative one of its depletion
+    on = [j for j in stress.junctions if not j.off and (j.charge or 0.0) > 0.0 and j.current > 0.0]
     for junction in on:
         margin = 2.0 * math.pi * carrier * (junction.charge or 0.0) / junction.current
         if margin < _CHARGE:
