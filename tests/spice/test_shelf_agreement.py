@@ -19,7 +19,10 @@ from transim.envelope.bias import Bias
 from transim.envelope.linearise import linearise, saved_vectors
 from transim.envelope.memoryless import without_memoryless
 from transim.envelope.scatter import excitation
+from transim.measure.pulse import off_time, on_time
+from transim.measure.record import Record
 from transim.parts.catalogue import load_catalogue
+from transim.study.averaging import averaged_envelope
 from transim.study.case import Case
 from transim.study.simulate import simulate
 
@@ -72,6 +75,14 @@ CASES = [
     ("spdt_quarter_wave", "pin_lumped", "push_pull_speedup", "1 GHz"),
     ("spdt_quarter_wave", "junction_diode", "half_bridge", "1 GHz"),
     ("spdt_shunt", "pin_lumped", "resistor_feed", "1 GHz"),
+]
+
+
+#: Fast edges, of which 1 % is less than half a carrier period: there the same quantity has to be compared.
+AVERAGED = [
+    ("series_shunt", "pin_lumped", "push_pull_speedup", "500 MHz"),
+    ("spdt_series", "pin_lumped", "push_pull_speedup", "1 GHz"),
+    ("spdt_quarter_wave", "pin_lumped", "resistor_feed", "500 MHz"),
 ]
 
 
@@ -130,6 +141,27 @@ def test_analyses_agree(tmp_path, engine, path, junction, driver, carrier):
             static = envelope.figures[figure].value
             for wave in waves.values():
                 assert -20.0 * math.log10(abs(wave.at(settled))) == pytest.approx(static, abs=tolerance)
+
+
+@pytest.mark.parametrize(("path", "junction", "driver", "carrier"), AVERAGED)
+def test_analyses_agree_on_the_mean_over_the_carrier_period(tmp_path, engine, path, junction, driver, carrier):
+    design = design_of(tmp_path, path, junction, driver, carrier)
+    run = simulate(design, design.drivers[0], 25.0, engine, ["envelope", "carrier"], checks="start")
+    (frequency,) = design.carrier.frequency
+    for throw, place in zip(run.throws, design.switch.path.throws, strict=True):
+        envelope, resolved = (r for r in run.results if r.throw == throw.name)
+        times = 1 if envelope.method.startswith("ringing") else 2
+        record = Record(
+            timing=timeline_of(design).timing(place.passes_high),
+            definitions=design.definitions,
+            carrier=frequency,
+            impedance=50.0,
+            biased_passes=True,
+            envelope=averaged_envelope(throw.envelopes["envelope", frequency], frequency, times),
+            static_on=10.0 ** (-envelope.figures["insertion_loss"].value / 20.0),
+        )
+        for name, measure in (("on_time", on_time), ("off_time", off_time)):
+            assert measure(record) == pytest.approx(resolved.figures[name].value, rel=0.005)
 
 
 #: Lengths of the line between the junctions: well below a step of the run without RF, about one, and many.

@@ -13,6 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from transim.circuit.assemble import RfPort
+from transim.envelope.average import period_average
 from transim.envelope.junction import Array
 from transim.envelope.memoryless import without_memoryless
 from transim.envelope.network import Network
@@ -66,7 +67,7 @@ def solve_ringing(
     nodes = [network.unknowns[f"v:{port.node}"] for port in ports]
     points, voltages = _integrate(network, right, omega, nodes, _Stretch(network.time, moved))
     instants, s = network.time[points], scatter_at_ports(ports, np.stack(voltages, axis=1))
-    averaged = np.stack([_average(instants, s[k], 1.0 / carrier, samples) for k, carrier in enumerate(frequency)])
+    averaged = np.stack([period_average(instants, s[k], 1.0 / carrier, samples) for k, carrier in enumerate(frequency)])
     return Scattering(samples, np.asarray(frequency, dtype=float), averaged, "ringing")
 
 
@@ -195,28 +196,3 @@ class _Past:
             else:
                 known[:, entry.row] += share * factor[:, None] * self._x[after][:, column]
         return matrix, known
-
-
-def _average(time: Array, s: Complex, width: float, samples: Array) -> Complex:
-    """Return the mean of S, shape (n, p, p), over a width [s] around each sample.
-
-    What moves within one carrier period is no envelope: where a junction lets go in less, the exact solution is a
-    spike (RF shifts the instant of the step), which a carrier-resolved extraction averages in the same way.
-    """
-    area = np.zeros_like(s)
-    area[1:] = np.cumsum(0.5 * (s[1:] + s[:-1]) * np.diff(time)[:, None, None], axis=0)
-    first, last = np.maximum(samples - width / 2.0, time[0]), np.minimum(samples + width / 2.0, time[-1])
-    mean = np.empty((samples.size, *s.shape[1:]), dtype=complex)
-    for row in range(s.shape[1]):
-        for column in range(s.shape[2]):
-            sums = [_integral(time, s[:, row, column], area[:, row, column], end) for end in (first, last)]
-            mean[:, row, column] = (sums[1] - sums[0]) / (last - first)
-    return mean
-
-
-def _integral(time: Array, value: Complex, area: Complex, end: Array) -> Complex:
-    """Return the integral of a piecewise-linear waveform from its start to each end [s]."""
-    place = np.clip(np.searchsorted(time, end, side="right") - 1, 0, time.size - 2)
-    inside = end - time[place]
-    slope = (value[place + 1] - value[place]) / (time[place + 1] - time[place])
-    return np.asarray(area[place] + inside * (value[place] + 0.5 * slope * inside))

@@ -31,6 +31,7 @@ from transim.measure.sweep import StaticSweep
 from transim.measure.usable import Shortest
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
+from transim.study.averaging import averaging_notes
 from transim.study.carrier import run_carrier
 from transim.study.case import Case
 from transim.study.holdoff import HoldOffProbe
@@ -426,11 +427,16 @@ def _result(
 def _with_accounts(case: Case, throw: ThrowPlace, record: Record, result: Result) -> Result:
     """Add what only the report of a single run shows."""
     budgets, accounts = _edges(record)
+    # the ringing solution is averaged once
+    averaged = 1 if result.method.startswith("ringing") else 0
     first = case.timeline.first_timing(throw.passes_high)
     return replace(
         result,
         rates=rate_study(record),
-        notes=numerical_notes(record, result.figures, case.vectors["time"], case.design.numerics.steps),
+        notes=(
+            *numerical_notes(record, result.figures, case.vectors["time"], case.design.numerics.steps),
+            *(averaging_notes(record, result.figures, averaged) if result.analysis == "envelope" else ()),
+        ),
         budget=budgets,
         charge=accounts,
         first_pulse=None if first is None else extract(replace(record, timing=first)),
