@@ -82,7 +82,7 @@ def starting_design(
         *_table(Control, _CONTROL),
         "",
         "[carrier]",
-        *_table(Carrier, {"frequency": ["30 MHz", "150 MHz"]}),
+        *_table(Carrier, {"frequency": _carriers(path)}),
         "",
         f"[switch]  # {path.summary}",
         _entry("path", f'"{path.name}"', "a part, or a part file of your own (*.cir)"),
@@ -100,6 +100,12 @@ def starting_design(
     lines += ["", "# [static]  # settled states against frequency, and against the holding current"]
     lines += [f"# {entry}" for entry in _table(Static, _STATIC)]
     return "\n".join(lines) + "\n"
+
+
+def _carriers(path: Part) -> list[str]:
+    """Return carriers at which the path does what it is for: its lines are as long as they should be at one of them."""
+    lines = path.settings.get("line_frequency")
+    return ["30 MHz", "150 MHz"] if lines is None else [format_quantity(lines.default, "Hz", 12)]
 
 
 def _fitting_junction(slot: Slot, catalogue: Catalogue) -> Part:
