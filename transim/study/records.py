@@ -7,7 +7,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from transim.circuit.assemble import ThrowPlace
+from transim.circuit.assemble import Netlist, RfPort, ThrowPlace
 from transim.design.model import Design
 from transim.envelope.junction import Array
 from transim.envelope.stationary import Complex
@@ -105,7 +105,7 @@ def record_of(
         static_off=complex(off[second, first]),
         match_on=complex(on[first, first]),
         match_off=complex(off[first, first]),
-        video={port.node: Waveform(time, vectors[f"v({port.node})"], "V") for port in netlist.ports},
+        video={port.node: Waveform(time, vectors[f"v({port.node})"], "V") for port in _leaking(netlist, throw)},
         drive_current=drive,
         driver_voltage=Waveform(time, vectors[f"v({throw.feed.node})"], "V"),
         supply_power=power,
@@ -123,6 +123,11 @@ def record_of(
         large=rf if isinstance(rf, LargeSignal) else None,
     )
     return replace(record, ratings=ratings_of(case, record))
+
+
+def _leaking(netlist: Netlist, throw: ThrowPlace) -> Sequence[RfPort]:
+    """Return the ports whose leakage is a throw's: where there are several, its own two."""
+    return [netlist.ports[place] for place in sorted(throw.through)] if throw.name else netlist.ports
 
 
 def _biased_passes(case: Case, throw: ThrowPlace, timing: Timing, drive: Waveform) -> bool:
