@@ -17,7 +17,8 @@ from transim.design.model import Design, Driver
 from transim.design.toml import read_design
 from transim.engine.ngspice import Engine, find_engine
 from transim.quantities import format_quantity
-from transim.study.simulate import CaseRun, Result, simulate
+from transim.study.result import CaseRun, Result
+from transim.study.simulate import simulate
 
 LEVELS = (-20.0, -10.0, *(2.5 * step for step in range(13)))
 TIME, LOSS = 0.05, 0.1

@@ -20,7 +20,7 @@ from transim.measure.metrics import Figure
 from transim.measure.record import Record
 from transim.measure.waveform import Waveform
 from transim.study.certify import SAFETY, certified, finer_designs
-from transim.study.simulate import Result
+from transim.study.result import Result
 from transim.study.soundness import numerical_notes, unbounded
 
 LIMIT = Limit("on_time", max=100e-9)

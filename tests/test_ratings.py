@@ -20,8 +20,8 @@ from transim.report.document import json_text, run_document
 from transim.report.layout import WIDTH
 from transim.report.ratings import rating_tables
 from transim.report.verdicts import verdict_lines
+from transim.study.result import CaseRun, Result, ThrowRun
 from transim.study.run import Outcome
-from transim.study.simulate import CaseRun, Result, ThrowRun
 
 DESIGN = """\
 title = "Reed, arm 2"

@@ -21,8 +21,8 @@ from transim.quantities import format_quantity, parse_quantity
 from transim.report.layout import WIDTH, Column, align, wrap
 from transim.report.tables import limit_text, metric_tables
 from transim.report.verdicts import definition_lines, head_lines, verdict_lines
+from transim.study.result import CaseRun, Result, ThrowRun
 from transim.study.run import Outcome
-from transim.study.simulate import CaseRun, Result, ThrowRun
 
 DESIGN = """\
 title = "Reed, arm 2"

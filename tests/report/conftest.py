@@ -14,8 +14,8 @@ from transim.design.toml import read_design
 from transim.engine.rawfile import Plot
 from transim.measure import Record, Waveform, extract, judge
 from transim.report.page import page_text
+from transim.study.result import CaseRun, Result, ThrowRun
 from transim.study.run import Outcome
-from transim.study.simulate import CaseRun, Result, ThrowRun
 
 DESIGN = """\
 title = TITLE

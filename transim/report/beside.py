@@ -19,8 +19,8 @@ from transim.quantities import format_quantity
 from transim.report.layout import Column, align, wrap
 from transim.report.style import axis_scale, draw_series, drawn, label_lines, name_axis, new_figure, save_figure
 from transim.report.waveforms import carrier_name
+from transim.study.result import Result
 from transim.study.run import Outcome
-from transim.study.simulate import Result
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure

@@ -10,8 +10,8 @@ from transim.measure.budget import Budget
 from transim.measure.limits import Judgement
 from transim.quantities import format_quantity
 from transim.report.layout import wrap
+from transim.study.result import Result
 from transim.study.run import Outcome
-from transim.study.simulate import Result
 
 __all__ = ["budget_document", "budget_lines", "charge_document", "edge_sentences"]
 

@@ -7,8 +7,8 @@ from collections.abc import Iterable, Sequence
 from transim.design.model import Design, Driver
 from transim.quantities import format_quantity
 from transim.report.layout import wrap
+from transim.study.result import Result
 from transim.study.run import Outcome
-from transim.study.simulate import Result
 
 __all__ = ["caution_lines", "cautions", "highest_bias", "highest_level"]
 

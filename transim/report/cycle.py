@@ -17,8 +17,8 @@ from transim.measure.sweep import StaticSweep
 from transim.quantities import format_quantity
 from transim.report.trace import Trace
 from transim.report.waveforms import drive_name, video_waveforms
+from transim.study.result import CaseRun, Result, ThrowRun
 from transim.study.run import Outcome
-from transim.study.simulate import CaseRun, Result, ThrowRun
 
 __all__ = ["Cycle", "cycles_of", "edge_span", "lead_in"]
 

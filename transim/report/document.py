@@ -19,8 +19,8 @@ if TYPE_CHECKING:
     from transim.measure.limits import Judgement, Limit
     from transim.measure.usable import Shortest
     from transim.parts.part import Parameter, Part
+    from transim.study.result import Result
     from transim.study.run import Outcome
-    from transim.study.simulate import Result
 
 __all__ = [
     "FORMAT",

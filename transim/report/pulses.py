@@ -10,8 +10,8 @@ from typing import Any
 from transim.measure.metrics import METRICS, Figure
 from transim.quantities import format_quantity
 from transim.report.layout import GAP, WIDTH, Column, align, wrap
+from transim.study.result import Result
 from transim.study.run import Outcome
-from transim.study.simulate import Result
 
 __all__ = ["first_document", "pulse_lines"]
 

@@ -11,8 +11,8 @@ from transim.measure.rate import CHARGE, RateStudy
 from transim.quantities import format_quantity
 from transim.report.layout import Column, wrap
 from transim.report.tables import limit_text, side_by_side, verdict_word
+from transim.study.result import Result
 from transim.study.run import Outcome
-from transim.study.simulate import Result
 
 __all__ = ["first_results", "rate_rows", "rates_document", "rating_tables"]
 

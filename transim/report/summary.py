@@ -14,8 +14,8 @@ from transim.quantities import format_quantity
 from transim.report.cautions import cautions
 from transim.report.tables import limit_text, verdict_word
 from transim.report.verdicts import closest_sentence, counts_sentence, joined_verdict
+from transim.study.result import Result
 from transim.study.run import Outcome
-from transim.study.simulate import Result
 
 __all__ = [
     "caution_rows",

@@ -10,8 +10,8 @@ from transim.measure.limits import Judgement, Limit
 from transim.measure.metrics import METRICS
 from transim.quantities import format_quantity
 from transim.report.layout import GAP, WIDTH, Column, align, wrap
+from transim.study.result import Result
 from transim.study.run import Outcome
-from transim.study.simulate import Result
 
 __all__ = ["limit_text", "metric_tables", "side_by_side", "verdict_word"]
 

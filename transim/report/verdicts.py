@@ -13,8 +13,8 @@ from transim.quantities import format_quantity
 from transim.report.layout import wrap
 from transim.report.ratings import first_results
 from transim.report.tables import limit_text, verdict_word
+from transim.study.result import Result
 from transim.study.run import Outcome
-from transim.study.simulate import Result
 
 __all__ = [
     "closest_sentence",

@@ -12,7 +12,7 @@ import numpy.typing as npt
 from transim.circuit.assemble import Feed, Netlist, ThrowPlace
 from transim.engine.rawfile import Plot
 from transim.quantities import format_quantity
-from transim.study.simulate import CaseRun
+from transim.study.result import CaseRun
 
 __all__ = ["carrier_name", "csv_text", "envelope_name", "video_waveforms", "write_waveforms"]
 

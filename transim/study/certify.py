@@ -16,7 +16,7 @@ from dataclasses import replace
 from transim.design.model import Design, Numerics
 from transim.measure.limits import Judgement, judge
 from transim.measure.metrics import Figure
-from transim.study.simulate import Result
+from transim.study.result import Result
 
 __all__ = ["SAFETY", "certified", "finer_designs", "settings_text"]
 

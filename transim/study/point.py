@@ -17,8 +17,9 @@ from transim.design.parameters import changed_design
 from transim.engine.ngspice import Engine, find_engine
 from transim.errors import EngineError, EngineNotFound, OutputError, TransimError
 from transim.measure.limits import Judgement
+from transim.study.result import Result
 from transim.study.run import ANALYSES, choose_drivers
-from transim.study.simulate import Result, simulate
+from transim.study.simulate import simulate
 
 __all__ = ["CaseFigures", "Point", "Setup", "failed_point", "simulate_point"]
 

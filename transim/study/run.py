@@ -12,8 +12,9 @@ from transim.measure.limits import Verdict
 from transim.measure.sweep import BiasSweep
 from transim.parts.nearest import nearest_name
 from transim.study.certify import certified, finer_designs, settings_text
+from transim.study.result import CaseRun, Result
 from transim.study.settled import run_bias_sweeps
-from transim.study.simulate import CaseRun, Result, simulate
+from transim.study.simulate import simulate
 
 __all__ = ["ANALYSES", "Outcome", "Progress", "choose_drivers", "run_design"]
 
