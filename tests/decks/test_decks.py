@@ -5,9 +5,12 @@ person. ``pytest tests/decks --snapshot-update`` stores them anew after a wanted
 is kept.
 """
 
+import re
 import shutil
 from pathlib import Path
 
+from hypothesis import given, settings
+from hypothesis import strategies as st
 from syrupy.extensions.single_file import SingleFileSnapshotExtension, WriteMode
 
 from transim.design.toml import read_design
@@ -49,6 +52,20 @@ def test_all_decks_are_stored():
 def test_where_the_design_lies_does_not_matter(tmp_path):
     copy = shutil.copy(DESIGN, tmp_path / DESIGN.name)
     assert written(Path(copy)) == written(DESIGN)
+
+
+@settings(deadline=None)
+@given(st.floats(1e-8, 1e-4), st.floats(1.5, 15.0), st.floats(1e-12, 1e-9), st.integers(1, 5))
+def test_no_run_reaches_the_begin_of_the_next_pulse(on_for, ratio, edge, pulses):
+    """As ngspice reads the numbers: a step of rounding's length between that and the end finds no solution."""
+    design = read_design(DESIGN)
+    times = {"on_for": on_for, "period": ratio * on_for, "edge": edge, "pulses": pulses}
+    design = design.model_copy(update={"control": design.control.model_copy(update=times)})
+    text = case_decks(design, design.drivers[0], 25.0)[1].text
+    (pulse,) = re.findall(r"^Vcontrol .* PULSE\((.*)\)$", text, re.MULTILINE)
+    delay, period = float(pulse.split()[2]), float(pulse.split()[6])
+    (stop,) = re.findall(r"^\.tran \S+ (\S+) ", text, re.MULTILINE)
+    assert float(stop) < delay + pulses * period - 1e-10 * on_for
 
 
 def test_decks_are_plain_lines():

@@ -12,6 +12,8 @@ __all__ = ["Timeline", "timeline_of"]
 
 #: Longest stretch that is simulated after a single pulse, in multiples of its length; later nothing moves any more.
 _LONGEST = 20.0
+#: Share of its duration by which a run ends early.
+_EARLY = 1e-9
 
 
 @dataclass(frozen=True)
@@ -124,7 +126,12 @@ def timeline_of(design: Design, *, settle: float = 0.0, overrun: float = 0.0) ->
     lead = max(control.on_for / 50.0 + control.edge, settle)
     last = min(control.period, _LONGEST * control.on_for)
     stop = lead + (control.pulses - 1) * control.period + last - control.edge / 2.0
-    return Timeline(lead, control.edge, control.on_for, control.period, control.pulses, stop + overrun)
+    return Timeline(lead, control.edge, control.on_for, control.period, control.pulses, _ended(stop + overrun))
+
+
+def _ended(stop: float) -> float:
+    """Return the end of a run, a little early: rounding must not leave the begin of the next edge in it."""
+    return stop * (1.0 - _EARLY)
 
 
 def _recorded(control: Control, record: Command, settle: float, overrun: float) -> Timeline:
@@ -142,7 +149,7 @@ def _recorded(control: Control, record: Command, settle: float, overrun: float) 
         on_for=control.on_for,
         period=control.period,
         pulses=control.pulses,
-        stop=rise + last - control.edge / 2.0 + overrun,
+        stop=_ended(rise + last - control.edge / 2.0 + overrun),
         command=tuple((time + shift, volts) for time, volts in zip(record.time, record.volts, strict=True)),
         marks=tuple((start + shift, end + shift) for start, end in record.pulses),
     )
