@@ -147,9 +147,8 @@ def case_place(case: CaseFigures | CaseLabel) -> str:
         parts.append(format_quantity(case.carrier, "Hz", 12))
     if not math.isnan(case.temperature):
         parts.append(format_quantity(case.temperature, "degC", 12))
-    if case.throw:
-        parts.append(f"throw {case.throw}")
-    return " and ".join(parts) or "its own carrier and temperature"
+    place = " and ".join(parts) or "its own carrier and temperature"
+    return f"{place} on {case.throw}" if case.throw else place
 
 
 def limit_figures(

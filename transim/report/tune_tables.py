@@ -87,7 +87,18 @@ def _values(outcome: TuneOutcome) -> list[str]:
 
 def _limits(outcome: TuneOutcome) -> list[str]:
     assert outcome.best is not None
-    rows = point_margins(outcome.best)
+    rows = []
+    told = set()
+    for case, judgement, margin in point_margins(outcome.best):
+        # a rating is that of the run without RF, whatever the carrier and the throw
+        rated = judgement.metric not in METRICS
+        if (judgement.metric, case.temperature) in told:
+            continue
+        if rated:
+            told.add((judgement.metric, case.temperature))
+        degrees = format_quantity(case.temperature, "degC", 12)
+        rows.append((f"{degrees}, without RF" if rated else case_place(case), judgement, margin))
+    rows.sort(key=lambda row: row[1].metric not in METRICS)
     values = [
         "-" if judgement.value is None else format_quantity(judgement.value, judgement_unit(judgement))
         for _, judgement, _ in rows
@@ -95,7 +106,7 @@ def _limits(outcome: TuneOutcome) -> list[str]:
     return align(
         [
             Column("limit", tuple(judgement.metric for _, judgement, _ in rows)),
-            Column("at", tuple(case_place(case) for case, _, _ in rows)),
+            Column("at", tuple(place for place, _, _ in rows)),
             Column("value", tuple(values), right=True),
             Column("bound", tuple(_bound(judgement) for _, judgement, _ in rows)),
             Column("margin", tuple(percent(margin) for _, _, margin in rows), right=True),
