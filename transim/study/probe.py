@@ -52,7 +52,7 @@ class TurnOnProbe:
     level_90 : float
         |S| at 90 % of the on level.
     on_time : float
-        By the envelope analysis [s].
+        By the envelope analysis, of the mean over the carrier period [s].
     """
 
     def __init__(self, case: Case, throw: ThrowPlace, frequency: float, level_90: float, on_time: float) -> None:

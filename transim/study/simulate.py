@@ -23,11 +23,12 @@ from transim.measure.budget import Budget, time_budget
 from transim.measure.levels import full_on, voltage_share
 from transim.measure.limits import judge, judge_ratings
 from transim.measure.metrics import extract
+from transim.measure.pulse import on_time
 from transim.measure.rate import rate_study
 from transim.measure.record import Record
 from transim.measure.waveform import Waveform
 from transim.quantities import format_quantity
-from transim.study.averaging import averaging_notes
+from transim.study.averaging import averaged_time, averaging_notes
 from transim.study.carrier import run_carrier
 from transim.study.case import Case
 from transim.study.holdoff import HoldOffProbe
@@ -196,7 +197,9 @@ def _envelope(
                     warnings = (*warnings, *HoldOffProbe(case, throw, frequency, record).warnings(at_level))
                 if checks == "all" and time is not None and record.static_on is not None:
                     level_90 = voltage_share(record, 90) * full_on(record)
-                    probe = probe or TurnOnProbe(case, throw, frequency, level_90, time)
+                    # a resolved carrier shows the mean over its period: like is compared with like
+                    seen = averaged_time(record, on_time, _averaged(method)) or time
+                    probe = probe or TurnOnProbe(case, throw, frequency, level_90, seen)
                     warnings = (*probe.warnings(at_level), *warnings)
                 results.append(replace(result, warnings=warnings, notes=(*result.notes, *linearised.notes)))
 
@@ -279,20 +282,23 @@ def _result(
 def _with_accounts(case: Case, throw: ThrowPlace, record: Record, result: Result) -> Result:
     """Add what only the report of a single run shows."""
     budgets, accounts = _edges(record)
-    # the ringing solution is averaged once
-    averaged = 1 if result.method.startswith("ringing") else 0
     first = case.timeline.first_timing(throw.passes_high)
+    notes = numerical_notes(record, result.figures, case.vectors["time"], case.design.numerics.steps)
+    if result.analysis == "envelope":
+        notes += averaging_notes(record, result.figures, _averaged(result.method))
     return replace(
         result,
         rates=rate_study(record),
-        notes=(
-            *numerical_notes(record, result.figures, case.vectors["time"], case.design.numerics.steps),
-            *(averaging_notes(record, result.figures, averaged) if result.analysis == "envelope" else ()),
-        ),
+        notes=notes,
         budget=budgets,
         charge=accounts,
         first_pulse=None if first is None else extract(replace(record, timing=first)),
     )
+
+
+def _averaged(method: str) -> int:
+    """Return how often a method has averaged the envelope over one carrier period."""
+    return 1 if method.startswith("ringing") else 0
 
 
 def _edges(record: Record) -> tuple[dict[str, Budget], dict[str, ChargeAccount]]:
