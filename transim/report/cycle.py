@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from transim.circuit.assemble import ThrowPlace, assemble
+from transim.circuit.assemble import Netlist, ThrowPlace, assemble
 from transim.circuit.timeline import timeline_of
 from transim.design.model import Design
 from transim.measure.definitions import Definitions, Timing
@@ -17,7 +17,7 @@ from transim.measure.sweep import StaticSweep
 from transim.quantities import format_quantity
 from transim.report.trace import Trace
 from transim.report.waveforms import drive_name, video_waveforms
-from transim.study.result import CaseRun, Result, ThrowRun
+from transim.study.result import CaseRun, Result
 from transim.study.run import Outcome
 
 __all__ = ["Cycle", "cycles_of", "edge_span", "lead_in"]
@@ -56,6 +56,8 @@ class Cycle:
         Of the junctions [C], [A], [V].
     ports : tuple of Trace
         Voltage at each RF port without RF [V].
+    pair : tuple of str
+        Names of the two ports whose transmission is judged.
     envelopes : mapping
         Complex S21 by (analysis, carrier).
     results : tuple of Result
@@ -79,9 +81,15 @@ class Cycle:
     currents: tuple[Trace, ...]
     reverses: tuple[Trace, ...]
     ports: tuple[Trace, ...]
+    pair: tuple[str, ...]
     envelopes: Mapping[tuple[str, float], Trace]
     results: tuple[Result, ...]
     static: StaticSweep | None = None
+
+    @property
+    def leaking(self) -> tuple[Trace, ...]:
+        """The ports whose leakage is judged: all, or of several throws the own two."""
+        return tuple(port for port in self.ports if port.name in self.pair) if self.throw else self.ports
 
     @property
     def label(self) -> str:
@@ -234,13 +242,14 @@ def _cycles(outcome: Outcome, case: CaseRun) -> Iterator[Cycle]:
     driver = next(driver for driver in design.drivers if driver.name == case.driver)
     netlist = assemble(design, driver)
     waves = video_waveforms(case.video, netlist)
-    for throw, run in zip(netlist.throws, case.throws, strict=True):
-        yield _cycle(design, case, throw, run, waves)
+    for throw in netlist.throws:
+        yield _cycle(design, case, netlist, throw, waves)
 
 
 def _cycle(
-    design: Design, case: CaseRun, throw: ThrowPlace, run: ThrowRun, waves: Mapping[str, tuple[Array, str]]
+    design: Design, case: CaseRun, netlist: Netlist, throw: ThrowPlace, waves: Mapping[str, tuple[Array, str]]
 ) -> Cycle:
+    run = case.throw(throw.name)
     timeline = timeline_of(design)
     timing = timeline.timing(throw.passes_high)
     zero = timeline.rising
@@ -279,6 +288,7 @@ def _cycle(
         currents=group("current_"),
         reverses=group("reverse_"),
         ports=group("port_"),
+        pair=tuple(netlist.ports[place].node for place in sorted(throw.through)),
         envelopes=envelopes,
         results=tuple(result for result in case.results if result.throw == run.name),
         static=run.static,

@@ -47,7 +47,7 @@ def leakage_figure(cycle: Cycle) -> Figure:
     """
     bandwidth = cycle.definitions.video_bandwidth
     seen = "" if bandwidth is None else f", through one pole at {format_quantity(bandwidth, 'Hz')}"
-    ports = [_filtered(port, bandwidth) for port in cycle.ports]
+    ports = [_filtered(port, bandwidth) for port in cycle.leaking]
     figure, panels = new_figure(
         cycle.title,
         f"driver {cycle.name}: video leakage at the RF ports, without RF{seen}",
@@ -129,14 +129,14 @@ def spectrum_figure(cycle: Cycle) -> Figure:
     )
     axes = panels[0, 0]
     lines, highest = [], -math.inf
-    for place, port in enumerate(cycle.ports):
+    for place, port in enumerate(cycle.leaking):
         frequency, power = _band_power(cycle, port, low, high)
         lines.append(draw_series(axes, place, frequency, power, port.name))
         highest = max(highest, float(power.max()))
     log_axis(axes, "x", "Hz")
     axes.set_xlim(low, high)
-    axes.set_ylim(highest - _DEPTH, highest + 6.0)
-    _mark_carriers(axes, cycle, carriers)
+    lowest = _mark_carriers(axes, cycle, carriers)
+    axes.set_ylim(min(highest - _DEPTH, lowest - 4.0), highest + 6.0)
     name_axis(axes, "x", "frequency", "Hz")
     name_axis(axes, "y", f"power in {format_quantity(band, 'Hz')}", "dBm")
     label_lines(axes, lines)
@@ -156,13 +156,16 @@ def _band_power(cycle: Cycle, port: Trace, low: float, high: float) -> tuple[Arr
     return frequency, 10.0 * np.log10(np.mean(10.0 ** (level / 10.0), axis=1))
 
 
-def _mark_carriers(axes: Axes, cycle: Cycle, carriers: list[float]) -> None:
+def _mark_carriers(axes: Axes, cycle: Cycle, carriers: list[float]) -> float:
+    """Mark the leakage at each carrier; return the lowest of them [dBm]."""
+    lowest = math.inf
     for number, carrier in enumerate(carriers):
         axes.axvline(carrier, color="black", linewidth=0.8, linestyle=(0, (1, 2)), label="_carrier")
         found = [result for result in cycle.results if result.carrier == carrier]
         value = found[0].figures["video_inband"].value if found else None
         text = format_quantity(carrier, "Hz", 12)
         if value is not None:
+            lowest = min(lowest, value)
             axes.plot([carrier], [value], "o", color="black", markerfacecolor="white", label="_inband")
             text += f"\n{format_quantity(value, 'dBm')}"
         axes.annotate(
@@ -175,3 +178,4 @@ def _mark_carriers(axes: Axes, cycle: Cycle, carriers: list[float]) -> None:
             va="top",
             bbox={"boxstyle": "round,pad=0.1", "facecolor": "white", "edgecolor": "none", "alpha": 0.8},
         )
+    return lowest
