@@ -7,8 +7,8 @@ S21 = 2 Z0 / (2 Z0 + Z) (D. M. Pozar, Microwave Engineering, table 4.1; from mem
 import numpy as np
 import pytest
 
-from transim.circuit.assemble import RfPort
 from transim.circuit.elements import read_listing
+from transim.circuit.netlist import RfPort
 from transim.envelope.admittance import Admittance, biased_instants
 from transim.envelope.bias import Bias
 from transim.envelope.doubt import Doubt, doubt_points

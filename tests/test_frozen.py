@@ -12,8 +12,8 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from transim.circuit.assemble import RfPort
 from transim.circuit.elements import read_listing
+from transim.circuit.netlist import RfPort
 from transim.envelope.bias import Bias
 from transim.envelope.frozen import changing_points, solve_frozen
 from transim.envelope.linearise import linearise, saved_vectors

@@ -8,8 +8,8 @@ import math
 import numpy as np
 import pytest
 
-from transim.circuit.assemble import RfPort
 from transim.circuit.elements import read_listing
+from transim.circuit.netlist import RfPort
 from transim.envelope.bias import Bias
 from transim.envelope.frozen import solve_frozen
 from transim.envelope.linearise import linearise

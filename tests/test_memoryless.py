@@ -5,8 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from transim.circuit.assemble import RfPort
 from transim.circuit.elements import read_listing
+from transim.circuit.netlist import RfPort
 from transim.envelope import ringing
 from transim.envelope.bias import Bias
 from transim.envelope.frozen import solve_frozen

@@ -9,8 +9,8 @@ import re
 import numpy as np
 import pytest
 
-from transim.circuit.assemble import RfPort
 from transim.circuit.elements import read_listing
+from transim.circuit.netlist import RfPort
 from transim.envelope.bias import Bias
 from transim.envelope.linearise import linearise
 from transim.envelope.method import Transition, solve_envelope

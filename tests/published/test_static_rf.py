@@ -10,8 +10,9 @@ import dataclasses
 import numpy as np
 import pytest
 
-from transim.circuit.assemble import RfPort, assemble
+from transim.circuit.assemble import assemble
 from transim.circuit.decks import Origin, static_deck
+from transim.circuit.netlist import RfPort
 from transim.design.toml import read_design
 from transim.envelope.stationary import read_scattering
 

@@ -14,8 +14,8 @@ from scipy.constants import elementary_charge, k
 from scipy.optimize import brentq
 from scipy.special import iv, lambertw
 
-from transim.circuit.assemble import RfPort
 from transim.circuit.elements import read_listing
+from transim.circuit.netlist import RfPort
 from transim.design.toml import read_design
 from transim.envelope.bias import Bias
 from transim.envelope.internal import solve_internal

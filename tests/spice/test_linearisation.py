@@ -7,8 +7,8 @@ of an S-parameter: ngspice's reltol of 1e-9 leaves less. The networks are drawn 
 import numpy as np
 import pytest
 
-from transim.circuit.assemble import RfPort
 from transim.circuit.elements import read_listing
+from transim.circuit.netlist import RfPort
 from transim.envelope.bias import Bias
 from transim.envelope.frozen import solve_frozen
 from transim.envelope.linearise import linearise, saved_vectors

@@ -11,6 +11,10 @@ import numpy as np
 import pytest
 
 from transim.cli import main
+from transim.design.toml import read_design
+from transim.report.cycle import cycles_of
+from transim.report.leakage_figures import leakage_figure, spectrum_figure
+from transim.study.run import run_design
 
 EXAMPLE = Path(__file__).parents[2] / "examples" / "commutator_two.toml"
 
@@ -72,6 +76,22 @@ def test_overlap_is_that_of_the_envelopes(outcome):
         both = np.mean((shares[0] > 0.1) & (shares[1] > 0.1)) * (stop - start)
         assert at(document, throw)["throw_overlap"] == pytest.approx(both, rel=0.005)
         assert at(document, throw)["throw_gap"] == 0.0
+
+
+def test_figures_of_leakage_show_the_ports_that_are_judged(engine):
+    cycles = cycles_of(run_design(read_design(EXAMPLE), engine, drivers=["rails"]))
+    assert [(cycle.throw, [port.name for port in cycle.leaking]) for cycle in cycles] == [
+        ("p2", ["p1", "p2"]),
+        ("p3", ["p1", "p3"]),
+    ]
+    for cycle in cycles:
+        assert len(leakage_figure(cycle).axes) == 4
+        # the leakage in band of both carriers is marked inside the axes
+        (axes,) = spectrum_figure(cycle).axes
+        low, high = axes.get_ylim()
+        marks = [line.get_ydata()[0] for line in axes.lines if line.get_label() == "_inband"]
+        assert len(marks) == 2
+        assert all(low < mark < high for mark in marks)
 
 
 def test_equal_arms_do_the_same_half_a_period_apart(tmp_path):

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from transim.circuit.assemble import Netlist, RfPort
+from transim.circuit.netlist import Netlist, RfPort
 from transim.circuit.timeline import Timeline
 from transim.design.model import Control, Numerics
 from transim.quantities import deck_number, format_quantity

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from transim.circuit.assemble import Netlist, ThrowPlace
 from transim.circuit.decks import Deck, Origin, control_block, deck_head, option_cards, quiet_ports
+from transim.circuit.netlist import Netlist, ThrowPlace
 from transim.design.model import Control, Numerics, Static
 from transim.quantities import deck_number, format_quantity
 

@@ -14,9 +14,9 @@ from collections.abc import Mapping, Sequence
 
 import numpy as np
 
-from transim.circuit.assemble import RfPort
 from transim.circuit.decks import Deck, Origin, control_block, deck_head
 from transim.circuit.elements import Behavioural, Circuit, Device, Opaque
+from transim.circuit.netlist import RfPort
 from transim.envelope.bias import Bias
 from transim.envelope.diode import DiodeLaw
 from transim.envelope.linearise import opaque_elements

@@ -13,8 +13,8 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from transim.circuit.assemble import RfPort
 from transim.circuit.elements import Opaque
+from transim.circuit.netlist import RfPort
 from transim.envelope.admittance import Admittance
 from transim.envelope.network import Network
 from transim.envelope.scatter import Complex, excitation, scatter, solve_linear

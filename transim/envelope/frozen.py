@@ -10,7 +10,7 @@ from collections.abc import Sequence
 import numpy as np
 import numpy.typing as npt
 
-from transim.circuit.assemble import RfPort
+from transim.circuit.netlist import RfPort
 from transim.envelope.network import Network
 from transim.envelope.reduction import Reduction
 from transim.envelope.scatter import Scattering, excitation, scatter_at_ports

@@ -7,7 +7,7 @@ from collections.abc import Mapping
 import numpy as np
 import numpy.typing as npt
 
-from transim.circuit.assemble import RfPort
+from transim.circuit.netlist import RfPort
 from transim.envelope.junction import Array
 from transim.envelope.network import Network
 from transim.envelope.reduction import Reduction

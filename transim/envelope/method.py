@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from transim.circuit.assemble import RfPort
+from transim.circuit.netlist import RfPort
 from transim.envelope.frozen import solve_frozen
 from transim.envelope.junction import Array
 from transim.envelope.network import Network

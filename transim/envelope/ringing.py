@@ -12,7 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from transim.circuit.assemble import RfPort
+from transim.circuit.netlist import RfPort
 from transim.envelope.average import period_average
 from transim.envelope.junction import Array
 from transim.envelope.memoryless import without_memoryless

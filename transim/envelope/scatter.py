@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from transim.circuit.assemble import RfPort
+from transim.circuit.netlist import RfPort
 from transim.envelope.network import Network
 from transim.errors import LinearisationError
 

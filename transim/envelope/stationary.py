@@ -7,7 +7,7 @@ from collections.abc import Sequence
 import numpy as np
 import numpy.typing as npt
 
-from transim.circuit.assemble import RfPort
+from transim.circuit.netlist import RfPort
 from transim.engine.rawfile import Plot
 from transim.errors import RawFileError
 

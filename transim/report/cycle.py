@@ -8,7 +8,8 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from transim.circuit.assemble import Netlist, ThrowPlace, assemble
+from transim.circuit.assemble import assemble
+from transim.circuit.netlist import Netlist, ThrowPlace
 from transim.circuit.timeline import timeline_of
 from transim.design.model import Design
 from transim.measure.definitions import Definitions, Timing

@@ -9,7 +9,7 @@ from pathlib import Path
 import numpy as np
 import numpy.typing as npt
 
-from transim.circuit.assemble import Feed, Netlist, ThrowPlace
+from transim.circuit.netlist import Feed, Netlist, ThrowPlace
 from transim.engine.rawfile import Plot
 from transim.quantities import format_quantity
 from transim.study.result import CaseRun

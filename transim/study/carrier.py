@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from transim.circuit.assemble import JunctionPlace, ThrowPlace
+from transim.circuit.netlist import JunctionPlace, ThrowPlace
 from transim.circuit.timeline import Timeline
 from transim.engine.rawfile import Plot
 from transim.envelope.carrier import extract_envelope

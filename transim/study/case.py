@@ -8,9 +8,10 @@ from pathlib import Path
 
 import numpy as np
 
-from transim.circuit.assemble import Netlist, assemble
+from transim.circuit.assemble import assemble
 from transim.circuit.decks import Deck, Origin, entered_ports, point_deck, static_deck, video_deck
 from transim.circuit.elements import Circuit, read_listing
+from transim.circuit.netlist import Netlist
 from transim.circuit.timeline import Timeline, timeline_of
 from transim.design.model import Design, Driver
 from transim.engine.ngspice import Engine, EngineRun

@@ -11,8 +11,8 @@ from collections.abc import Mapping
 
 import numpy as np
 
-from transim.circuit.assemble import Feed, JunctionPlace
 from transim.circuit.elements import Circuit
+from transim.circuit.netlist import Feed, JunctionPlace
 from transim.envelope.bias import Bias
 from transim.envelope.junction import Array
 from transim.errors import RawFileError

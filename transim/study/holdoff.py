@@ -12,8 +12,8 @@ from dataclasses import replace
 
 import numpy as np
 
-from transim.circuit.assemble import ThrowPlace
 from transim.circuit.decks import Tone, carrier_deck
+from transim.circuit.netlist import ThrowPlace
 from transim.envelope.carrier import extract_envelope
 from transim.errors import EngineError
 from transim.measure.record import Record

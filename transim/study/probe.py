@@ -11,8 +11,8 @@ from dataclasses import replace
 
 import numpy as np
 
-from transim.circuit.assemble import ThrowPlace
 from transim.circuit.decks import Tone, carrier_deck
+from transim.circuit.netlist import ThrowPlace
 from transim.engine.ngspice import discard_kept
 from transim.engine.rawfile import Plot
 from transim.envelope.carrier import extract_envelope

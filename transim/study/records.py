@@ -7,7 +7,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from transim.circuit.assemble import Netlist, RfPort, ThrowPlace
+from transim.circuit.netlist import Netlist, RfPort, ThrowPlace
 from transim.design.model import Design
 from transim.envelope.junction import Array
 from transim.envelope.stationary import Complex

@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 
-from transim.circuit.assemble import Netlist, ThrowPlace, assemble
+from transim.circuit.assemble import assemble
 from transim.circuit.decks import Deck
+from transim.circuit.netlist import Netlist, ThrowPlace
 from transim.circuit.settled import shared_throws, sweep_deck
 from transim.design.model import Design
 from transim.engine.ngspice import Engine

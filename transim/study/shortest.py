@@ -8,8 +8,8 @@ from dataclasses import replace
 
 import numpy as np
 
-from transim.circuit.assemble import ThrowPlace
 from transim.circuit.elements import Circuit
+from transim.circuit.netlist import ThrowPlace
 from transim.envelope.linearise import saved_vectors
 from transim.envelope.method import solve_envelope
 from transim.envelope.stationary import Complex

@@ -9,8 +9,8 @@ from typing import Literal
 
 import numpy as np
 
-from transim.circuit.assemble import ThrowPlace
 from transim.circuit.elements import Circuit
+from transim.circuit.netlist import ThrowPlace
 from transim.design.model import Design, Driver
 from transim.engine.ngspice import Engine
 from transim.envelope.junction import Array

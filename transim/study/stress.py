@@ -7,7 +7,7 @@ from collections.abc import Mapping
 
 import numpy as np
 
-from transim.circuit.assemble import ThrowPlace
+from transim.circuit.netlist import ThrowPlace
 from transim.envelope.internal import RfSolution, solve_internal
 from transim.envelope.junction import Array
 from transim.envelope.network import Network

@@ -7,7 +7,7 @@ from collections.abc import Mapping
 
 import numpy as np
 
-from transim.circuit.assemble import JunctionPlace
+from transim.circuit.netlist import JunctionPlace
 from transim.design.model import Design, Junction
 from transim.envelope.junction import Array
 from transim.measure.waveform import Waveform
